@@ -1,0 +1,1 @@
+"""Judging rooms: pure functions from values to findings."""

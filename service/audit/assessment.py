@@ -1,0 +1,109 @@
+"""What an audit answers: one assessment a room, of plain values."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from datetime import datetime
+from typing import Any, Final
+
+from service.audit.inputs import Reference
+
+# Goes up with every change that can alter a number, a severity or a statement.
+METHOD_VERSION: Final = "1"
+
+SEVERITIES: Final = ("observation", "minor", "major", "critical")
+STANDINGS: Final = ("in-order", "attention", "action", "stop")
+
+
+@dataclass(frozen=True, slots=True)
+class Assumed:
+    """A missing input, what was taken instead, and why."""
+
+    record: Reference
+    field: str  # JSON name of the record's field
+    value: float | str | bool  # in the unit of the field's name
+    reason: str
+    source: str
+    matters: bool  # raises an observation
+
+
+@dataclass(frozen=True, slots=True)
+class Case:
+    """One release of one room under one airflow, for one hazard. None: never, or no such number."""
+
+    release: str
+    airflow: str
+    hazard: str  # oxygen-low, oxygen-high
+    counts: bool  # towards the standing
+    fluids: tuple[str, ...]
+    vessels: tuple[Reference, ...]
+    oxygen_pct: float  # lowest, or highest for oxygen-high
+    oxygen_kpa: float
+    at_s: float
+    to_deficient_s: float | None  # seconds to the first mark
+    to_danger_s: float | None
+    to_critical_s: float | None
+    recovered_s: float | None
+    gas_m3: float  # released at room conditions over the case
+    required_m3_h: float | None
+    required_reason: str | None  # why there is no such flow
+    restore_m3_h: float | None
+    alarm_s: float | None
+    margin_s: float | None
+    mark: int  # 0 none, 1 first, 2 second, 3 third
+    without_margins: Mapping[str, float | None]
+    method: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Judgement:
+    """A rule broken by a subject in a room, before it is matched with earlier findings."""
+
+    rule: str  # slug
+    family: str
+    subject: Reference
+    gas: str | None  # the gas judged: oxygen, carbon-dioxide, …
+    severity: str
+    measure: float | None
+    limit: float | None
+    worse_is: str  # lower, higher
+    statement: str
+    evidence: Mapping[str, Any]  # numbers, cases, records and revisions
+    remedy: str
+    method: str
+    source: str
+
+
+@dataclass(frozen=True, slots=True)
+class Ventilation:
+    """The air of a room, as a fan moves it and as it counts."""
+
+    outdoor_air_m3_h: float
+    credited_m3_h: float
+    air_changes_per_h: float
+    sustained_release_m3_h: float
+    required_m3_h: float | None
+    shortfall_m3_h: float | None
+    restore_m3_h: float | None
+    deciding_case: str | None
+
+
+@dataclass(frozen=True, slots=True)
+class Assessment:
+    """Everything one room's records say at a moment."""
+
+    room: Reference
+    site: Reference
+    basis: Reference
+    at: datetime
+    method_version: str
+    failed: str | None  # the sentence that says why it cannot be computed
+    read: tuple[Reference, ...]  # records and revisions that it rests on
+    assumed: tuple[Assumed, ...]
+    cases: tuple[Case, ...]
+    deciding: int | None  # index in cases of the worst, by judging.md 5
+    ventilation: Ventilation | None
+    figures: Mapping[str, float | str | None]  # pressure_kpa_abs, net_volume_m3, marks, contents read both ways, …
+    judgements: tuple[Judgement, ...]
+    turns_at: datetime | None

@@ -1,0 +1,133 @@
+"""What an audit reads: frozen values in SI units, free of rows, sessions and clocks."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from datetime import datetime
+from typing import Any
+
+
+@dataclass(frozen=True, slots=True, order=True)
+class Reference:
+    """Which record, in which revision, a number came from."""
+
+    kind: str
+    id: str
+    tag: str
+    revision: int
+
+
+@dataclass(frozen=True, slots=True)
+class BasisValues:
+    """The values a room is judged by, each with where it comes from (judging.md 7)."""
+
+    record: Reference
+    values: Mapping[str, Any]
+    sources: Mapping[str, str]
+
+
+@dataclass(frozen=True, slots=True)
+class FluidValues:
+    """A fluid as the assessment needs it."""
+
+    record: Reference
+    name: str
+    molar_mass: float  # [kg/mol]
+    boiling_point: float  # [K]; sublimation for a solid
+    condensed_density: float  # [kg/m3]; liquid at its boiling point, or the solid
+    oxygen_fraction: float  # [1]
+    solid: bool
+    hazards: frozenset[str]  # of asphyxiant, oxidiser, toxic, flammable
+    settles: str  # low, high or methane (judging.md 6)
+
+
+@dataclass(frozen=True, slots=True)
+class VesselValues:
+    """A vessel in a room; amounts are liquid volume, or mass for ice and cylinders."""
+
+    record: Reference
+    fluid: FluidValues
+    kind: str
+    state: str  # in-service, empty, withdrawn
+    capacity_volume: float | None = None  # [m3] net liquid
+    capacity_mass: float | None = None  # [kg]
+    contents_volume: float | None = None  # [m3]
+    contents_mass: float | None = None  # [kg]
+    count_due: datetime | None = None  # when the count of the contents is overdue; None: never counted
+    rated_evaporation: float | None = None  # [m3/s] of liquid
+    measured_evaporation: float | None = None  # [m3/s] of liquid
+    measured_loss: float | None = None  # [kg/s] for ice
+    use: float | None = None  # [m3/s] of liquid used in the room
+    insulation: str | None = None
+    vent_to: str | None = None  # room, outdoors; None: unknown
+    filled_by: str | None = None  # automatic, attended, exchanged; None: unknown
+    manifold: str | None = None
+    mobile: bool | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class UnitValues:
+    """A ventilation unit as far as it serves one room."""
+
+    record: Reference
+    arrangement: str | None  # supply, exhaust, balanced; None: unknown
+    share: float  # [1] of its flow that serves this room
+    design_flow: float | None = None  # [m3/s]
+    measured_flow: float | None = None  # [m3/s]
+    measurement_due: datetime | None = None  # None: never measured or no date
+    outdoor_air_fraction: float | None = None  # [1]
+    mixing_factor: float | None = None  # [1], only where a tracer test is recorded
+    state: str = "running"  # running, stopped, failed
+    standby_power: bool | None = None
+    flow_proved: bool | None = None
+    fail_alarm: bool | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class DetectorValues:
+    """A gas detector in a room."""
+
+    record: Reference
+    gas: str  # oxygen, or the tag of a fluid
+    height: float | None = None  # [m] above the floor
+    placed: str | None = None  # inside, entrance
+    t90: float | None = None  # [s]
+    delay: float | None = None  # [s]
+    alarms: tuple[float, ...] = ()  # [%]
+    calibration_due: datetime | None = None  # None: never calibrated
+    state: str = "in-service"  # in-service, fault, off
+    silenced_since: datetime | None = None
+    heard_outside: bool | None = None
+    display_outside: bool | None = None
+    power_backed: bool | None = None
+    monitored: bool | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class RoomValues:
+    """A room with everything that stands in it, and what it is judged by."""
+
+    record: Reference
+    site: Reference
+    basis: BasisValues
+    name: str
+    kind: str  # room, corridor, walk-in, pit, lift, vehicle
+    state: str  # planned, in-service, out-of-service
+    gross_volume: float  # [m3]
+    elevation: float | None = None  # [m]
+    station_pressure: float | None = None  # [Pa] absolute; wins over the elevation
+    floor_area: float | None = None  # [m2]
+    height: float | None = None  # [m]
+    occupied_fraction: float | None = None  # [1] of the gross volume
+    temperature: float | None = None  # [K]
+    below_ground: bool | None = None
+    purge_flow: float | None = None  # [m3/s]
+    purge_fluid: FluidValues | None = None
+    attended: bool | None = None
+    most_people: int | None = None
+    unaccompanied: bool | None = None
+    way_out: float | None = None  # [m]
+    vessels: tuple[VesselValues, ...] = ()
+    units: tuple[UnitValues, ...] = ()
+    detectors: tuple[DetectorValues, ...] = ()
