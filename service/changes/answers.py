@@ -1,0 +1,256 @@
+"""The stored answers: assessments -> the bytes that polls, auditors and as-of questions get.
+
+A status is rendered once, in the transaction of its change. Its ``currency`` is left empty there
+and spliced in when it is answered, since it changes without the assessment changing.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import asdict
+from datetime import datetime
+from typing import Any, Final
+
+import orjson
+
+from service.audit.assessment import METHOD_VERSION, Assessment, Case, Judgement
+from service.audit.findings import counts
+from service.changes.assess import Assessed
+from service.changes.cautions import CAUTIONS
+from service.changes.room_values import plain
+from service.clock import text_of
+from service.store.history import StoredAssessment
+from service.store.memory import StoredStatus
+from service.store.records import canonical
+
+CURRENT: Final = "current"
+RECALCULATING: Final = "recalculating"
+BEHIND: Final = "behind"
+FAILED: Final = "failed"
+
+_CURRENCY: Final = b'"currency":"'
+_JUDGES: Final = "records, not the air"
+_WORST_FIELDS: Final = (
+    "release",
+    "airflow",
+    "hazard",
+    "oxygen_pct",
+    "oxygen_kpa",
+    "at_s",
+    "to_deficient_s",
+    "to_danger_s",
+    "to_critical_s",
+    "recovered_s",
+)
+
+
+def rendered(value: Any) -> bytes:
+    """Write an answer as JSON; a number that is not finite is a fault, never a silent null."""
+    refuse_not_finite(value)
+    return orjson.dumps(value)
+
+
+def refuse_not_finite(value: Any) -> None:
+    """Raise ValueError where a value holds a number that JSON cannot carry."""
+    if isinstance(value, float):
+        if not math.isfinite(value):
+            raise ValueError("An answer holds a number that is not finite.")
+    elif isinstance(value, Mapping):
+        for inner in value.values():
+            refuse_not_finite(inner)
+    elif isinstance(value, (list, tuple)):
+        for inner in value:
+            refuse_not_finite(inner)
+
+
+def status_bytes(assessed: Assessed, position: int) -> bytes:
+    """Render a room's status, its currency left empty."""
+    assessment = assessed.assessment
+    document = {
+        "room_id": assessment.room.id,
+        "tag": assessment.room.tag,
+        "name": assessed.values.name,
+        "site_id": assessment.site.id,
+        "position": position,
+        "assessed_at": text_of(assessment.at),
+        "currency": "",
+        "basis": assessment.basis.tag,
+        "judges": _JUDGES,
+        "state": assessed.values.state,
+        "standing": assessed.standing,
+        "worst": _worst(assessment),
+        "highest_oxygen": _highest_oxygen(assessment),
+        "ventilation": None
+        if assessment.ventilation is None
+        else asdict(assessment.ventilation),
+        "findings": counts(assessed.findings),
+        "turns_at": None if assessment.turns_at is None else text_of(assessment.turns_at),
+        "method_version": assessment.method_version,
+        "failed": assessment.failed,
+    }
+    return rendered(document)
+
+
+def _worst(assessment: Assessment) -> dict[str, Any] | None:
+    if assessment.deciding is None:
+        return None
+    return _brief(assessment.cases[assessment.deciding])
+
+
+def _brief(case: Case) -> dict[str, Any]:
+    brief: dict[str, Any] = {name: getattr(case, name) for name in _WORST_FIELDS}
+    brief["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
+    brief["fluids"] = list(case.fluids)
+    brief["vessel_ids"] = [vessel.id for vessel in case.vessels]
+    return brief
+
+
+def _highest_oxygen(assessment: Assessment) -> dict[str, Any] | None:
+    rich = [case for case in assessment.cases if case.hazard == "oxygen-high" and case.counts]
+    return _brief(max(rich, key=lambda case: case.oxygen_pct)) if rich else None
+
+
+def with_currency(body: bytes, currency: str) -> bytes:
+    """Splice the currency into a stored status.
+
+    Tags and names before it cannot hold the key: a quotation mark in them is escaped.
+    """
+    at = body.index(_CURRENCY) + len(_CURRENCY)
+    return body[:at] + currency.encode() + body[at:]
+
+
+def currency_of(
+    *,
+    position: int,
+    wanted: int,
+    turns_at: datetime | None,
+    method_version: str,
+    failed: bool,
+    now: datetime,
+    running_method: str = METHOD_VERSION,
+) -> str:
+    """Say how far a stored answer is from what would be computed now."""
+    if failed:
+        return FAILED
+    if position < wanted or method_version != running_method:
+        return RECALCULATING
+    if turns_at is not None and turns_at <= now:
+        return BEHIND
+    return CURRENT
+
+
+def status_etag(position: int, currency: str) -> str:
+    """Give the strong entity tag of a status."""
+    return f'"{position}-{currency[0]}"'
+
+
+def stored_status(stored: StoredAssessment) -> StoredStatus:
+    """Give what memory keeps of an assessment."""
+    return StoredStatus(
+        room_id=stored.room_id,
+        site_id=stored.site_id,
+        position=stored.from_position,
+        body=stored.status,
+        turns_at=stored.turns_at,
+        method_version=stored.method_version,
+        failed=stored.failed,
+    )
+
+
+def inputs_document(assessment: Assessment) -> bytes:
+    """Write down what an assessment rests on: records in their revisions, and what was assumed."""
+    return canonical(
+        {
+            "read": [plain(reference) for reference in assessment.read],
+            "assumed": [
+                {
+                    "record": plain(assumed.record),
+                    "field": assumed.field,
+                    "value": assumed.value,
+                    "assumed": True,
+                    "reason": assumed.reason,
+                    "source": assumed.source,
+                    "matters": assumed.matters,
+                }
+                for assumed in assessment.assumed
+            ],
+        }
+    )
+
+
+def results_document(assessment: Assessment) -> bytes:
+    """Write down what an assessment found, before it is matched with earlier findings."""
+    return canonical(
+        {
+            "figures": dict(assessment.figures),
+            "cases": [_case_document(case) for case in assessment.cases],
+            "judgements": [_judgement_document(judged) for judged in assessment.judgements],
+            "deciding": assessment.deciding,
+            "failed": assessment.failed,
+            "methods": sorted({slug for case in assessment.cases for slug in case.method}),
+        }
+    )
+
+
+def _case_document(case: Case) -> dict[str, Any]:
+    document = asdict(case)
+    document["vessels"] = [plain(vessel) for vessel in case.vessels]
+    document["vessel_ids"] = [vessel.id for vessel in case.vessels]
+    document["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
+    document["without_margins"] = dict(case.without_margins)
+    return document
+
+
+def _judgement_document(judged: Judgement) -> dict[str, Any]:
+    document = asdict(judged)
+    document["subject"] = plain(judged.subject)
+    return document
+
+
+def assessment_answer(
+    stored: StoredAssessment, findings: Iterable[Mapping[str, Any]], currency: str
+) -> bytes:
+    """Render everything that is known of a room: its status, and what it rests on.
+
+    Made from stored bytes alone, so that the same position is answered alike for ever.
+    """
+    status = orjson.loads(with_currency(stored.status, currency))
+    inputs, results = orjson.loads(stored.inputs), orjson.loads(stored.results)
+    status["finding_counts"] = status.pop("findings")
+    return rendered(
+        {
+            **status,
+            "basis_id": stored.basis_id,
+            "basis_revision": stored.basis_revision,
+            "method_version": stored.method_version,
+            "cause": stored.cause,
+            "inputs": inputs["read"],
+            "assumed": inputs["assumed"],
+            "figures": results["figures"],
+            "cases": results["cases"],
+            "methods": results["methods"],
+            "findings": [finding_answer(finding) for finding in findings],
+            "cautions": CAUTIONS,
+        }
+    )
+
+
+def finding_answer(row: Mapping[str, Any]) -> dict[str, Any]:
+    """Render one finding."""
+    answer = {
+        name: text_of(value) if isinstance(value, datetime) else value
+        for name, value in row.items()
+        if name not in ("subject_kind", "subject_id", "subject_tag")
+    }
+    answer["subject"] = {
+        "kind": row["subject_kind"],
+        "id": row["subject_id"],
+        "tag": row["subject_tag"],
+    }
+    return answer
+
+
+def findings_answer(rows: Sequence[Mapping[str, Any]]) -> list[dict[str, Any]]:
+    """Render a list of findings."""
+    return [finding_answer(row) for row in rows]

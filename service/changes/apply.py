@@ -1,0 +1,334 @@
+"""Record changes applied to values, with every rule that spans fields or records: pure."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+from service.changes.kinds import KINDS, Link, blank_fields, reaches_far, rooms_reached
+from service.changes.merge import merge_patch
+from service.changes.neighbourhood import OXYGEN, Neighbourhood, TagKey
+from service.changes.record_rules import derived_fields, record_problems
+from service.changes.requested import CREATE, REMOVE, Placed, pointing
+from service.errors import (
+    DuplicateExternalId,
+    DuplicateTag,
+    FieldError,
+    FieldsRefused,
+    ReadOnlyRecord,
+    RecordNotFound,
+    RevisionMoved,
+    StillReferred,
+)
+from service.store.records import Record, folded_tag
+
+
+@dataclass(frozen=True, slots=True)
+class Pair:
+    """A record before and after; before null: new, after null: removed, both alike: no change."""
+
+    before: Record | None
+    after: Record | None
+
+    @property
+    def changed(self) -> bool:
+        """Tell whether anything is to be stored."""
+        return self.before is not self.after
+
+    @property
+    def record(self) -> Record:
+        """Give the newest form there is."""
+        record = self.after or self.before
+        if record is None:
+            raise ValueError("A pair without a record.")
+        return record
+
+
+@dataclass(frozen=True, slots=True)
+class Applied:
+    """The records after the changes, the pairs in the order asked, and the rooms to compute."""
+
+    pairs: tuple[Pair, ...]
+    records: Mapping[str, Record]
+    rooms: frozenset[str]
+
+
+def applied(before: Neighbourhood, places: Sequence[Placed]) -> Applied:
+    """Apply changes to a neighbourhood; refuse the whole where one cannot be."""
+    records = dict(before.records)
+    names = _Names(before, places)
+    pairs: list[Pair] = []
+    for place in places:
+        with pointing(place.pointer):
+            pair = _applied_one(before, records, names, place)
+        pairs.append(pair)
+        if pair.after is None:
+            records.pop(place.record_id, None)
+        else:
+            records[place.record_id] = pair.after
+    for place, pair in zip(places, pairs, strict=True):
+        with pointing(place.pointer):
+            _check_whole(records, place, pair)
+    return Applied(tuple(pairs), records, _rooms_to_compute(before, records, places, pairs))
+
+
+class _Names:
+    """Tags and external ids as they stand once all changes are made."""
+
+    def __init__(self, before: Neighbourhood, places: Sequence[Placed]) -> None:
+        self._by_tag = dict(before.by_tag)
+        self._tags = dict(before.tags_taken)
+        self._external_ids = dict(before.external_ids_taken)
+        gone = {place.record_id for place in places if place.change.operation == REMOVE}
+        for taken in (self._by_tag, self._tags, self._external_ids):
+            for key in [key for key, holder in taken.items() if holder in gone]:
+                del taken[key]
+        for place in places:
+            tag = place.change.fields.get("tag")
+            if place.change.operation == CREATE and isinstance(tag, str):
+                self._by_tag.setdefault(_tag_key(place, tag), place.record_id)
+
+    def find(self, kind: str, site_id: str | None, tag: str) -> str | None:
+        """Name the record that a tag stands for."""
+        return self._by_tag.get((kind, site_id, folded_tag(tag)))
+
+    def take(self, place: Placed, record: Record) -> None:
+        """Give a record its tag and external id, or refuse what another has."""
+        tag, external_id = record.fields["tag"], record.fields["external_id"]
+        if self._tags.setdefault(_tag_key(place, tag), record.id) != record.id:
+            raise DuplicateTag(record.kind)
+        if external_id is None:
+            return
+        key = (record.kind, _owner(place), external_id)
+        if self._external_ids.setdefault(key, record.id) != record.id:
+            raise DuplicateExternalId(record.kind)
+
+
+def _owner(place: Placed) -> str | None:
+    return None if place.change.kind == "site" else place.site_id
+
+
+def _tag_key(place: Placed, tag: str) -> TagKey:
+    return place.change.kind, _owner(place), folded_tag(tag)
+
+
+def _applied_one(
+    before: Neighbourhood, records: Mapping[str, Record], names: _Names, place: Placed
+) -> Pair:
+    change = place.change
+    present = records.get(place.record_id)
+    if present is None and change.operation != CREATE:
+        # It went between the moment it was found and the moment the heads were locked.
+        raise RecordNotFound.of(change.kind)
+    if present is not None:
+        if present.site_id is None:
+            raise ReadOnlyRecord("It comes with the service. Make a copy for a site and change it.")
+        if change.if_revision is not None and change.if_revision != present.revision:
+            raise RevisionMoved(present.revision)
+    if change.operation == REMOVE:
+        return Pair(present, None)
+    fields = _fields_after(records, names, place, present)
+    if present is not None:
+        _refuse_fixed(present, fields)
+        if fields == dict(present.fields):
+            return Pair(present, present)
+    after = (
+        Record(
+            kind=change.kind,
+            id=place.record_id,
+            site_id=place.site_id,
+            revision=1,
+            created_at=before.moment,
+            updated_at=before.moment,
+            fields=fields,
+        )
+        if present is None
+        else replace(
+            present, revision=present.revision + 1, updated_at=before.moment, fields=fields
+        )
+    )
+    names.take(place, after)
+    return Pair(present, after)
+
+
+def _fields_after(
+    records: Mapping[str, Record], names: _Names, place: Placed, present: Record | None
+) -> dict[str, Any]:
+    """Merge what was sent into what is there, with references resolved to ids."""
+    kind, sent = place.change.kind, dict(place.change.fields)
+    for name in ("site", "site_id"):
+        _check_site(records, names, place, name, sent.pop(name, None))
+    base = blank_fields(kind) if present is None else dict(present.fields)
+    for link in KINDS[kind].links:
+        _resolve(records, names, place, link, sent, base)
+    if sent.get("serves") is not None:
+        sent["serves"] = list(_served_rooms(records, names, place, sent["serves"]))
+    if kind == "detector" and sent.get("gas") not in (None, OXYGEN):
+        sent["gas"] = _gas_tag(records, names, place, sent["gas"])
+    unknown = sorted(sent.keys() - base.keys())
+    if unknown:
+        raise FieldsRefused(
+            errors=[FieldError(f"/{name}", "unknown-field", "No such field.") for name in unknown]
+        )
+    merged = merge_patch(base, sent)
+    # RFC 7396 removes a member that is null; a record keeps the field and says that it is unknown.
+    fields = {name: merged.get(name) for name in base}
+    if fields["labels"] is None:
+        fields["labels"] = {}
+    return derived_fields(kind, fields, sent)
+
+
+def _check_site(
+    records: Mapping[str, Record], names: _Names, place: Placed, name: str, said: str | None
+) -> None:
+    if said is None or place.change.kind == "site":
+        return
+    meant = names.find("site", None, said) if name == "site" else said
+    site = records.get(place.site_id or "")
+    if name == "site" and meant is None and site is not None:
+        meant = site.id if folded_tag(site.fields["tag"]) == folded_tag(said) else None
+    if meant != place.site_id:
+        raise FieldsRefused.at(f"/{name}", "site-fixed", "A record never changes its site.")
+
+
+def _resolve(
+    records: Mapping[str, Record],
+    names: _Names,
+    place: Placed,
+    link: Link,
+    sent: dict[str, Any],
+    base: dict[str, Any],
+) -> None:
+    """Replace a reference as sent, by id or tag, with the id (and the tag where it is kept)."""
+    by_id, by_tag = sent.get(link.field), sent.get(link.said_as)
+    if by_id is not None and by_tag is not None:
+        raise FieldsRefused.at(
+            f"/{link.field}", "said-twice", f"Send '{link.field}' or '{link.said_as}', not both."
+        )
+    said = link.field in sent or link.said_as in sent
+    if not said and base.get(link.said_as) is not None and base[link.field] is None:
+        by_tag, said = base[link.said_as], True  # the default of a new record
+    if not said:
+        return
+    sent.pop(link.said_as, None)
+    if by_id is None and by_tag is None:
+        found = None
+    elif by_tag is not None:
+        target = names.find(link.kind, place.site_id, by_tag) or (
+            by_tag if link.keeps_tag and by_tag in records else None
+        )
+        found = _target(records, place, link.kind, target, f"/{link.said_as}")
+    else:
+        found = _target(records, place, link.kind, by_id, f"/{link.field}")
+    sent[link.field] = None if found is None else found[0]
+    if link.keeps_tag:
+        sent[link.said_as] = None if found is None else found[1]
+
+
+def _target(
+    records: Mapping[str, Record], place: Placed, kind: str, record_id: str | None, pointer: str
+) -> tuple[str, str | None]:
+    """Give id and tag of what is referred to; of this site, or shared."""
+    target = None if record_id is None else records.get(record_id)
+    if record_id is not None and target is None and record_id == place.record_id:
+        return record_id, None
+    if target is None or target.kind != kind or target.site_id not in (place.site_id, None):
+        raise FieldsRefused.at(pointer, "not-found", f"There is no such {kind} in this site.")
+    return target.id, target.fields["tag"]
+
+
+def _served_rooms(
+    records: Mapping[str, Record], names: _Names, place: Placed, serves: Sequence[Mapping[str, Any]]
+) -> Iterator[dict[str, Any]]:
+    for number, served in enumerate(serves):
+        pointer = f"/serves/{number}"
+        by_id, by_tag = served.get("room_id"), served.get("room")
+        if (by_id is None) == (by_tag is None):
+            raise FieldsRefused.at(pointer, "missing", "Send 'room_id' or 'room', one of them.")
+        room_id = by_id if by_tag is None else names.find("room", place.site_id, by_tag)
+        pointer += "/room_id" if by_tag is None else "/room"
+        found = _target(records, place, "room", room_id, pointer)
+        yield {"room_id": found[0], "share": served["share"]}
+
+
+def _gas_tag(records: Mapping[str, Record], names: _Names, place: Placed, gas: str) -> str:
+    fluid_id = names.find("fluid", place.site_id, gas)
+    if fluid_id is None:
+        raise FieldsRefused.at(
+            "/gas", "not-found", "Say 'oxygen' or the tag of a fluid that this site knows."
+        )
+    return str(records[fluid_id].fields["tag"])
+
+
+def _refuse_fixed(present: Record, fields: Mapping[str, Any]) -> None:
+    moved = sorted(
+        name for name in KINDS[present.kind].fixed if fields[name] != present.fields[name]
+    )
+    if moved:
+        raise FieldsRefused(
+            errors=[
+                FieldError(f"/{name}", "never-changes", "This field never changes; make a new one.")
+                for name in moved
+            ]
+        )
+
+
+def _check_whole(records: Mapping[str, Record], place: Placed, pair: Pair) -> None:
+    """Check a record against the others, all changes made."""
+    if pair.after is None:
+        return
+    if not pair.changed:
+        return
+    problems = tuple(record_problems(pair.after, records))
+    if problems:
+        raise FieldsRefused(errors=problems)
+
+
+def _rooms_to_compute(
+    before: Neighbourhood,
+    records: Mapping[str, Record],
+    places: Sequence[Placed],
+    pairs: Sequence[Pair],
+) -> frozenset[str]:
+    rooms: set[str] = set()
+    for place, pair in zip(places, pairs, strict=True):
+        if not pair.changed:
+            continue
+        rooms |= rooms_reached(pair.before) | rooms_reached(pair.after)
+        if reaches_far(pair.before, pair.after):
+            rooms |= before.far_rooms.get(place.record_id, frozenset())
+        if pair.after is None:
+            _refuse_referred(before, places, pairs, place)
+    return frozenset(rooms)
+
+
+def _refuse_referred(
+    before: Neighbourhood, places: Sequence[Placed], pairs: Sequence[Pair], place: Placed
+) -> None:
+    moved = {
+        pair.record.id
+        for pair in pairs
+        if pair.after is None or not _refers(pair.after, place.record_id)
+    }
+    left = [
+        f"{kind} {tag}"
+        for kind, record_id, tag in before.referrers.get(place.record_id, ())
+        if record_id not in moved
+    ]
+    newly = [
+        f"{pair.after.kind} {pair.after.fields['tag']}"
+        for pair in pairs
+        if pair.after is not None and pair.changed and _refers(pair.after, place.record_id)
+    ]
+    if left or newly:
+        with pointing(place.pointer):
+            raise StillReferred.by(left + newly)
+
+
+def _refers(record: Record, record_id: str) -> bool:
+    if record.site_id == record_id and record.kind != "site":
+        return True
+    if any(record.fields[link.field] == record_id for link in KINDS[record.kind].links):
+        return True
+    return record.kind != "room" and record_id in rooms_reached(record)

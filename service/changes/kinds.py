@@ -1,0 +1,151 @@
+"""What the change line must know of each kind of record; all else about kinds is generic.
+
+A later record is a row here, beside its table, its three schemas and its line of routes.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from typing import Any, Final
+
+from service.store.records import Record, fields_of
+
+Fields = Mapping[str, Any]
+
+
+@dataclass(frozen=True, slots=True)
+class Link:
+    """A reference from one record to another, by id in ``field`` or by tag in ``said_as``."""
+
+    field: str
+    said_as: str
+    kind: str
+    #: Read by people: the tag is kept beside the id, and the tag's field takes an id too.
+    keeps_tag: bool = False
+
+
+def _no_rooms(_fields: Fields) -> frozenset[str]:
+    return frozenset()
+
+
+@dataclass(frozen=True, slots=True)
+class Kind:
+    """One kind of record."""
+
+    name: str
+    links: tuple[Link, ...] = ()
+    defaults: Fields = field(default_factory=dict)
+    #: Fields that say what a record is: other records and old assessments are read by them.
+    fixed: frozenset[str] = frozenset()
+    #: The rooms that a record's fields reach directly.
+    rooms: Callable[[Fields], frozenset[str]] = _no_rooms
+    #: Fields by which a record reaches every room of its site, of its sites, or of its vessels.
+    reaches_far: frozenset[str] = frozenset()
+    #: Where the site comes from when it is not said.
+    site_from: str | None = None
+    #: May belong to no site: those come with the service and only it writes them.
+    shared: bool = False
+
+
+def _room_of(fields: Fields) -> frozenset[str]:
+    room_id = fields.get("room_id")
+    return frozenset() if room_id is None else frozenset({room_id})
+
+
+def _rooms_served(fields: Fields) -> frozenset[str]:
+    return frozenset(served["room_id"] for served in fields.get("serves") or ())
+
+
+_ALL_FLUID_FIELDS: Final = frozenset(
+    {
+        "molar_mass_g_mol",
+        "boiling_k",
+        "condensed_density_kg_m3",
+        "oxygen_fraction",
+        "solid",
+        "hazards",
+        "settles",
+        "name",
+    }
+)
+
+KINDS: Final[Mapping[str, Kind]] = {
+    kind.name: kind
+    for kind in (
+        Kind(
+            "site",
+            links=(Link("basis_id", "basis", "basis", keeps_tag=True),),
+            defaults={"basis": "baseline", "time_zone": "UTC", "demo": False},
+            reaches_far=frozenset(
+                {"elevation_m", "station_pressure_kpa_abs", "basis_id", "time_zone"}
+            ),
+        ),
+        Kind(
+            "room",
+            links=(Link("purge_fluid_id", "purge_fluid", "fluid", keeps_tag=True),),
+            defaults={"kind": "room", "state": "in-service"},
+        ),
+        Kind(
+            "ventilation-unit",
+            defaults={"state": "running", "serves": []},
+            rooms=_rooms_served,
+            site_from="serves",
+        ),
+        Kind(
+            "vessel",
+            links=(
+                Link("room_id", "room", "room"),
+                Link("fluid_id", "fluid", "fluid", keeps_tag=True),
+            ),
+            defaults={"state": "in-service"},
+            rooms=_room_of,
+            site_from="room",
+        ),
+        Kind(
+            "detector",
+            links=(Link("room_id", "room", "room"),),
+            defaults={"state": "in-service", "alarms_pct": []},
+            rooms=_room_of,
+            site_from="room",
+        ),
+        Kind(
+            "basis",
+            links=(Link("derived_from_id", "derived_from", "basis", keeps_tag=True),),
+            defaults={"values": {}, "sources": {}},
+            fixed=frozenset({"tag", "derived_from_id"}),
+            reaches_far=frozenset({"values"}),
+            shared=True,
+        ),
+        Kind(
+            "fluid",
+            defaults={"sources": {}},
+            fixed=frozenset({"tag"}),
+            reaches_far=_ALL_FLUID_FIELDS,
+            shared=True,
+        ),
+    )
+}
+
+
+def rooms_reached(record: Record | None) -> frozenset[str]:
+    """Name the rooms a record reaches directly: itself, the one it stands in, those it serves."""
+    if record is None:
+        return frozenset()
+    if record.kind == "room":
+        return frozenset({record.id})
+    return KINDS[record.kind].rooms(record.fields)
+
+
+def reaches_far(before: Record | None, after: Record | None) -> bool:
+    """Tell whether a change reaches rooms that only a search can name."""
+    if before is None or after is None:
+        # A new or removed site, basis or fluid is used by no room: what is used cannot go.
+        return False
+    names = KINDS[after.kind].reaches_far
+    return any(before.fields[name] != after.fields[name] for name in names)
+
+
+def blank_fields(kind: str) -> dict[str, Any]:
+    """Give every field of a kind, null where it has no default."""
+    return {name: None for name in fields_of(kind)} | {"labels": {}} | dict(KINDS[kind].defaults)

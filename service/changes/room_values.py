@@ -1,0 +1,217 @@
+"""Records -> the values an audit reads: litres to m3 and hours to seconds happen here, once."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from datetime import date, datetime, timedelta
+from typing import Any, Final
+
+from service.audit.bases import effective
+from service.audit.inputs import (
+    BasisValues,
+    DetectorValues,
+    FluidValues,
+    Reference,
+    RoomValues,
+    UnitValues,
+    VesselValues,
+)
+from service.clock import end_of_day, moment_of
+from service.store.records import Record
+
+LITRE: Final = 1e-3  # [m3]
+DAY: Final = 86_400.0  # [s]
+HOUR: Final = 3_600.0  # [s]
+KILOPASCAL: Final = 1e3  # [Pa]
+ZERO_CELSIUS: Final = 273.15  # [K]
+
+
+@dataclass(frozen=True, slots=True)
+class _Placed:
+    """What stands in each room, found once for all rooms; in record order, that is by id."""
+
+    vessels: Mapping[str, list[Record]]
+    units: Mapping[str, list[Record]]
+    detectors: Mapping[str, list[Record]]
+
+
+def values_of_rooms(records: Mapping[str, Record], room_ids: Iterable[str]) -> list[RoomValues]:
+    """Give the values of rooms that are there, from a neighbourhood that holds all they need."""
+    standing = _placed(records.values())
+    return [
+        _room_values(records, standing, records[room_id])
+        for room_id in sorted(room_ids)
+        if room_id in records
+    ]
+
+
+def _placed(records: Iterable[Record]) -> _Placed:
+    placed = _Placed({}, {}, {})
+    for record in sorted(records, key=lambda record: record.id):
+        if record.kind == "vessel" and record.fields["room_id"] is not None:
+            placed.vessels.setdefault(record.fields["room_id"], []).append(record)
+        elif record.kind == "detector":
+            placed.detectors.setdefault(record.fields["room_id"], []).append(record)
+        elif record.kind == "ventilation-unit":
+            for served in record.fields["serves"]:
+                placed.units.setdefault(served["room_id"], []).append(record)
+    return placed
+
+
+def _room_values(records: Mapping[str, Record], placed: _Placed, room: Record) -> RoomValues:
+    site = records[room.site_id or ""]
+    fields, zone = room.fields, site.fields["time_zone"]
+    basis = basis_values(records, records[site.fields["basis_id"]])
+    people = fields["people"] or {}
+    purge_fluid = records.get(fields["purge_fluid_id"] or "")
+    count_every = timedelta(days=basis.values["count_every_days"])
+    return RoomValues(
+        record=reference(room),
+        site=reference(site),
+        basis=basis,
+        name=fields["name"] or fields["tag"],
+        kind=fields["kind"],
+        state=fields["state"],
+        gross_volume=fields["volume_m3"],
+        elevation=site.fields["elevation_m"],
+        station_pressure=_scaled(site.fields["station_pressure_kpa_abs"], KILOPASCAL),
+        floor_area=fields["floor_area_m2"],
+        height=fields["height_m"],
+        occupied_fraction=fields["occupied_fraction"],
+        temperature=_kelvin(fields["temperature_c"]),
+        below_ground=fields["below_ground"],
+        purge_flow=_scaled(fields["purge_flow_m3_h"], 1.0 / HOUR),
+        purge_fluid=None if purge_fluid is None else fluid_values(purge_fluid),
+        attended=people.get("attended"),
+        most_people=people.get("most"),
+        unaccompanied=fields["unaccompanied"],
+        way_out=fields["egress_m"],
+        vessels=tuple(
+            _vessel_values(vessel, records[vessel.fields["fluid_id"]], count_every)
+            for vessel in placed.vessels.get(room.id, ())
+        ),
+        units=tuple(
+            _unit_values(unit, room.id, zone) for unit in placed.units.get(room.id, ())
+        ),
+        detectors=tuple(
+            _detector_values(detector, zone) for detector in placed.detectors.get(room.id, ())
+        ),
+    )
+
+
+def reference(record: Record) -> Reference:
+    """Name a record in its revision, as evidence."""
+    return Reference(record.kind, record.id, record.fields["tag"], record.revision)
+
+
+def basis_values(records: Mapping[str, Record], basis: Record) -> BasisValues:
+    """Give every value of a basis, its own before those of the one it was copied from."""
+    origin = records.get(basis.fields["derived_from_id"] or "")
+    values, sources = basis.fields["values"] or {}, basis.fields["sources"] or {}
+    if origin is not None:
+        values = effective(origin.fields["values"], values)
+        sources = {**origin.fields["sources"], **sources}
+    return BasisValues(reference(basis), values, sources)
+
+
+def fluid_values(fluid: Record) -> FluidValues:
+    """Give a fluid as the assessment needs it."""
+    fields = fluid.fields
+    return FluidValues(
+        record=reference(fluid),
+        name=fields["name"] or fields["tag"],
+        molar_mass=fields["molar_mass_g_mol"] / 1e3,
+        boiling_point=fields["boiling_k"],
+        condensed_density=fields["condensed_density_kg_m3"],
+        oxygen_fraction=fields["oxygen_fraction"],
+        solid=fields["solid"],
+        hazards=frozenset(fields["hazards"]),
+        settles=fields["settles"],
+    )
+
+
+def _vessel_values(vessel: Record, fluid: Record, count_every: timedelta) -> VesselValues:
+    fields = vessel.fields
+    counted_at = fields["counted_at"]
+    return VesselValues(
+        record=reference(vessel),
+        fluid=fluid_values(fluid),
+        kind=fields["kind"],
+        state=fields["state"],
+        capacity_volume=_scaled(fields["capacity_l"], LITRE),
+        capacity_mass=fields["capacity_kg"],
+        contents_volume=_scaled(fields["contents_l"], LITRE),
+        contents_mass=fields["contents_kg"],
+        count_due=None if counted_at is None else moment_of(counted_at) + count_every,
+        rated_evaporation=_scaled(fields["rated_evaporation_l_day"], LITRE / DAY),
+        measured_evaporation=_scaled(fields["measured_evaporation_l_day"], LITRE / DAY),
+        measured_loss=_scaled(fields["measured_loss_kg_day"], 1.0 / DAY),
+        use=_scaled(fields["use_l_day"], LITRE / DAY),
+        insulation=fields["insulation"],
+        vent_to=fields["vent_to"],
+        filled_by=(fields["filling"] or {}).get("by"),
+        manifold=fields["manifold"],
+        mobile=fields["mobile"],
+    )
+
+
+def _unit_values(unit: Record, room_id: str, zone: str) -> UnitValues:
+    fields = unit.fields
+    share = next(s["share"] for s in fields["serves"] if s["room_id"] == room_id)
+    return UnitValues(
+        record=reference(unit),
+        arrangement=fields["arrangement"],
+        share=share,
+        design_flow=_scaled(fields["design_flow_m3_h"], 1.0 / HOUR),
+        measured_flow=_scaled(fields["measured_flow_m3_h"], 1.0 / HOUR),
+        measurement_due=_due(fields["measured_on"], fields["measure_every_days"], zone),
+        outdoor_air_fraction=fields["outdoor_air_fraction"],
+        # A mixing factor counts only where somebody has tested it.
+        mixing_factor=None if fields["mixing_tested_on"] is None else fields["mixing_factor"],
+        state=fields["state"],
+        standby_power=fields["standby_power"],
+        flow_proved=fields["flow_proved"],
+        fail_alarm=fields["fail_alarm"],
+    )
+
+
+def _detector_values(detector: Record, zone: str) -> DetectorValues:
+    fields = detector.fields
+    silenced = fields["silenced_since"]
+    return DetectorValues(
+        record=reference(detector),
+        gas=fields["gas"],
+        height=fields["height_m"],
+        placed=fields["placed"],
+        t90=fields["t90_s"],
+        delay=fields["delay_s"],
+        alarms=tuple(fields["alarms_pct"] or ()),
+        calibration_due=_due(fields["calibrated_on"], fields["calibrate_every_days"], zone),
+        state=fields["state"],
+        silenced_since=None if silenced is None else moment_of(silenced),
+        heard_outside=fields["heard_outside"],
+        display_outside=fields["display_outside"],
+        power_backed=fields["power_backed"],
+        monitored=fields["monitored"],
+    )
+
+
+def _due(done_on: str | None, every_days: float | None, zone: str) -> datetime | None:
+    """Give the moment from which something is overdue: the end of its last good day."""
+    if done_on is None or every_days is None:
+        return None
+    return end_of_day(date.fromisoformat(done_on) + timedelta(days=int(every_days)), zone)
+
+
+def _scaled(value: float | None, factor: float) -> float | None:
+    return None if value is None else value * factor
+
+
+def _kelvin(celsius: float | None) -> float | None:
+    return None if celsius is None else celsius + ZERO_CELSIUS
+
+
+def plain(value: Reference) -> dict[str, Any]:
+    """Write a reference as an answer shows it."""
+    return {"kind": value.kind, "id": value.id, "tag": value.tag, "revision": value.revision}
