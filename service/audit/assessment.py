@@ -104,6 +104,8 @@ class Assessment:
     cases: tuple[Case, ...]
     deciding: int | None  # index in cases of the worst, by judging.md 5
     ventilation: Ventilation | None
-    figures: Mapping[str, float | str | None]  # pressure_kpa_abs, net_volume_m3, marks, contents read both ways, …
+    figures: Mapping[
+        str, float | str | None
+    ]  # pressure_kpa_abs, net_volume_m3, marks, contents read both ways, …
     judgements: tuple[Judgement, ...]
     turns_at: datetime | None

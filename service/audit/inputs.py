@@ -54,7 +54,9 @@ class VesselValues:
     capacity_mass: float | None = None  # [kg]
     contents_volume: float | None = None  # [m3]
     contents_mass: float | None = None  # [kg]
-    count_due: datetime | None = None  # when the count of the contents is overdue; None: never counted
+    count_due: datetime | None = (
+        None  # when the count of the contents is overdue; None: never counted
+    )
     rated_evaporation: float | None = None  # [m3/s] of liquid
     measured_evaporation: float | None = None  # [m3/s] of liquid
     measured_loss: float | None = None  # [kg/s] for ice

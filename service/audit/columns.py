@@ -1,0 +1,470 @@
+"""Records of many rooms as a structure of arrays, flattened once."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping, Sequence, Sized
+from dataclasses import dataclass, field, fields, replace
+from datetime import UTC, datetime
+from typing import Any, Final, Generic, TypeAlias, TypeVar
+
+import numpy as np
+import numpy.typing as npt
+
+from service.audit.assessment import SEVERITIES
+from service.audit.inputs import FluidValues, RoomValues
+from service.physics.arrays import Floats, Integers, Mask
+from service.physics.constants import SECONDS_PER_DAY, SECONDS_PER_HOUR
+
+Moments: TypeAlias = npt.NDArray[np.datetime64]
+
+PERCENT: Final = 0.01
+KILOPASCAL: Final = 1000.0  # [Pa]
+UNKNOWN: Final = -1
+OXYGEN: Final = "oxygen"  # the gas of an oxygen detector; row 0 of the gases
+
+ROOM_KINDS: Final = ("room", "corridor", "walk-in", "pit", "lift", "vehicle")
+VESSEL_KINDS: Final = (
+    "open-dewar",
+    "pressurised-dewar",
+    "freezer",
+    "tank",
+    "cryostat",
+    "magnet",
+    "dry-ice-box",
+    "cylinder",
+)
+VESSEL_STATES: Final = ("in-service", "empty", "withdrawn")
+FILLED_BY: Final = ("automatic", "attended", "exchanged")
+VENTS: Final = ("room", "outdoors")
+ARRANGEMENTS: Final = ("supply", "exhaust", "balanced")
+UNIT_STATES: Final = ("running", "stopped", "failed")
+DETECTOR_STATES: Final = ("in-service", "fault", "off")
+PLACES: Final = ("inside", "entrance")
+SETTLES: Final = ("low", "high", "methane")
+
+
+@dataclass(frozen=True, slots=True)
+class Bases:
+    """The numbers of each room's basis; one row a room."""
+
+    deficient: Floats  # oxygen fractions
+    danger: Floats
+    danger_pressure: Floats  # [Pa]
+    critical: Floats
+    critical_pressure: Floats  # [Pa]
+    enriched: Floats
+    rich_second: Floats
+    rich_third: Floats
+    mixing_factor: Floats
+    air_changes_above_ground: Floats  # [1/s]
+    air_changes_below_ground: Floats
+    air_changes_enclosed: Floats
+    by_displacement: Mask  # C1; else C2
+    as_recorded: Mask  # contents as recorded; else capacity
+    fill_loss: Floats
+    evaporation_factor: Floats
+    evaporation_by_kind: Floats  # share of capacity a second, (rooms, kinds of vessel)
+    sustained: Floats  # [s]
+    restore: Floats  # [s]
+    react: Floats  # [s]
+    walk: Floats  # [m/s]
+    net_volume_share: Floats
+    never_measured_share: Floats
+    ice_share: Floats  # [1/h]
+    severity: Integers  # (rooms, 3 marks, 3 columns), index in SEVERITIES
+
+
+@dataclass(frozen=True, slots=True)
+class Rooms:
+    """One row a room; not-a-number and -1 where unknown, else 0 for no and 1 for yes."""
+
+    source: Integers  # which of the rooms given, by position
+    kind: Integers
+    gross_volume: Floats
+    elevation: Floats
+    station_pressure: Floats
+    floor_area: Floats
+    height: Floats
+    occupied_fraction: Floats
+    temperature: Floats
+    below_ground: Integers
+    purge_flow: Floats
+    purge_fluid: Integers  # row of the fluids
+    unaccompanied: Integers
+    way_out: Floats
+
+
+@dataclass(frozen=True, slots=True)
+class Vessels:
+    """One row a vessel, in record order within its room."""
+
+    room: Integers
+    source: Integers
+    fluid: Integers
+    kind: Integers
+    state: Integers
+    capacity_volume: Floats
+    capacity_mass: Floats
+    contents_volume: Floats
+    contents_mass: Floats
+    count_due: Moments
+    rated_evaporation: Floats
+    measured_evaporation: Floats
+    measured_loss: Floats
+    use: Floats
+    vent_to: Integers
+    filled_by: Integers
+    group: Integers  # vessels of one manifold share one; unique to its room
+
+
+@dataclass(frozen=True, slots=True)
+class Units:
+    """One row a ventilation unit and room that it serves."""
+
+    room: Integers
+    source: Integers
+    arrangement: Integers
+    share: Floats
+    design_flow: Floats
+    measured_flow: Floats
+    measurement_due: Moments
+    outdoor_air_fraction: Floats
+    mixing_factor: Floats
+    state: Integers
+    standby_power: Integers
+    fail_alarm: Integers
+
+
+@dataclass(frozen=True, slots=True)
+class Detectors:
+    """One row a detector; its alarms lie in a padded table."""
+
+    room: Integers
+    source: Integers
+    gas: Integers  # row of the names of gases
+    height: Floats
+    placed: Integers
+    t90: Floats
+    delay: Floats
+    alarms: Floats  # (detectors, most alarms) as fractions; not-a-number where there is none
+    calibration_due: Moments
+    state: Integers
+    silenced_since: Moments
+    heard_outside: Integers
+    display_outside: Integers
+    power_backed: Integers
+
+
+@dataclass(frozen=True, slots=True)
+class Fluids:
+    """One row a fluid that is met."""
+
+    molar_mass: Floats
+    condensed_density: Floats
+    oxygen_fraction: Floats
+    settles: Integers
+    toxic: Mask
+    flammable: Mask
+    gas: Integers  # row of the names of gases
+
+
+@dataclass(frozen=True, slots=True)
+class Columns:
+    """Everything that many rooms hold."""
+
+    rooms: Rooms
+    bases: Bases
+    vessels: Vessels
+    units: Units
+    detectors: Detectors
+    fluids: Fluids
+    gases: tuple[str, ...]  # names that detectors and fluids point at
+
+    @property
+    def count(self) -> int:
+        """How many rooms."""
+        return int(self.rooms.kind.size)
+
+
+_Item = TypeVar("_Item")
+
+
+@dataclass(frozen=True, slots=True)
+class _Distinct(Generic[_Item]):
+    """Things met, each once, in the order they were met."""
+
+    rows: dict[_Item, int] = field(default_factory=dict)
+    # Hashing a whole record a hundred thousand times is slow, and most are the same object.
+    by_identity: dict[int, int] = field(default_factory=dict)
+
+    def row(self, item: _Item) -> int:
+        row = self.by_identity.get(id(item))
+        if row is None:
+            row = self.rows.setdefault(item, len(self.rows))
+            self.by_identity[id(item)] = row
+        return row
+
+
+def columns(rooms: Sequence[RoomValues]) -> Columns:
+    """Flatten rooms with everything in them."""
+    fluids = _Distinct[FluidValues]()
+    gases = _Distinct[str]()
+    gases.row(OXYGEN)
+    vessels = _vessels(rooms, fluids)
+    table = _rooms(rooms, fluids)
+    detectors = _detectors(rooms, gases)
+    fluid_table = _fluids(tuple(fluids.rows), gases)
+    return Columns(
+        table, _bases(rooms), vessels, _units(rooms), detectors, fluid_table, tuple(gases.rows)
+    )
+
+
+def taken(given: Columns, index: Integers) -> Columns:
+    """Return the columns of some rooms, in the order asked for; a room may be taken twice."""
+    vessels, vessel_room = members(given.vessels.room, index, given.count)
+    units, unit_room = members(given.units.room, index, given.count)
+    detectors, detector_room = members(given.detectors.room, index, given.count)
+    return replace(
+        given,
+        rooms=_picked(given.rooms, index),
+        bases=_picked(given.bases, index),
+        vessels=_regrouped(replace(_picked(given.vessels, vessels), room=vessel_room)),
+        units=replace(_picked(given.units, units), room=unit_room),
+        detectors=replace(_picked(given.detectors, detectors), room=detector_room),
+    )
+
+
+def members(room: Integers, index: Integers, count: int) -> tuple[Integers, Integers]:
+    """Rows of a table in room order that belong to the rooms asked for, and which asked each."""
+    sizes = np.bincount(room, minlength=count)
+    starts = np.cumsum(sizes) - sizes
+    wanted = sizes[index]
+    asked = np.repeat(np.arange(index.size), wanted)
+    within = np.arange(asked.size) - np.repeat(np.cumsum(wanted) - wanted, wanted)
+    return within + np.repeat(starts[index], wanted), asked
+
+
+_Table = TypeVar("_Table", Rooms, Bases, Vessels, Units, Detectors)
+
+
+def _picked(table: _Table, rows: Integers) -> _Table:
+    return replace(table, **{each.name: getattr(table, each.name)[rows] for each in fields(table)})
+
+
+def _regrouped(vessels: Vessels) -> Vessels:
+    """Give each room its own groups again where a room was taken twice."""
+    widest = int(vessels.group.max(initial=0)) + 1
+    _, group = np.unique(vessels.room * widest + vessels.group, return_inverse=True)
+    return replace(vessels, group=group.astype(np.int64))
+
+
+def _rooms(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Rooms:
+    return Rooms(
+        source=np.arange(len(rooms)),
+        kind=_codes((room.kind for room in rooms), ROOM_KINDS),
+        gross_volume=_floats(room.gross_volume for room in rooms),
+        elevation=_floats(room.elevation for room in rooms),
+        station_pressure=_floats(room.station_pressure for room in rooms),
+        floor_area=_floats(room.floor_area for room in rooms),
+        height=_floats(room.height for room in rooms),
+        occupied_fraction=_floats(room.occupied_fraction for room in rooms),
+        temperature=_floats(room.temperature for room in rooms),
+        below_ground=_flags(room.below_ground for room in rooms),
+        purge_flow=_floats(room.purge_flow for room in rooms),
+        purge_fluid=_integers(
+            UNKNOWN if room.purge_fluid is None else fluids.row(room.purge_fluid) for room in rooms
+        ),
+        unaccompanied=_flags(room.unaccompanied for room in rooms),
+        way_out=_floats(room.way_out for room in rooms),
+    )
+
+
+def _vessels(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Vessels:
+    all_of = [vessel for room in rooms for vessel in room.vessels]
+    group = _Distinct[tuple[int, str | int]]()
+    return Vessels(
+        room=_owners([room.vessels for room in rooms]),
+        source=_positions([room.vessels for room in rooms]),
+        fluid=_integers(fluids.row(vessel.fluid) for vessel in all_of),
+        kind=_codes((vessel.kind for vessel in all_of), VESSEL_KINDS),
+        state=_codes((vessel.state for vessel in all_of), VESSEL_STATES),
+        capacity_volume=_floats(vessel.capacity_volume for vessel in all_of),
+        capacity_mass=_floats(vessel.capacity_mass for vessel in all_of),
+        contents_volume=_floats(vessel.contents_volume for vessel in all_of),
+        contents_mass=_floats(vessel.contents_mass for vessel in all_of),
+        count_due=moments(vessel.count_due for vessel in all_of),
+        rated_evaporation=_floats(vessel.rated_evaporation for vessel in all_of),
+        measured_evaporation=_floats(vessel.measured_evaporation for vessel in all_of),
+        measured_loss=_floats(vessel.measured_loss for vessel in all_of),
+        use=_floats(vessel.use for vessel in all_of),
+        vent_to=_codes((vessel.vent_to for vessel in all_of), VENTS),
+        filled_by=_codes((vessel.filled_by for vessel in all_of), FILLED_BY),
+        group=_integers(
+            group.rows.setdefault((row, vessel.manifold or place), len(group.rows))
+            for row, room in enumerate(rooms)
+            for place, vessel in enumerate(room.vessels)
+        ),
+    )
+
+
+def _units(rooms: Sequence[RoomValues]) -> Units:
+    all_of = [unit for room in rooms for unit in room.units]
+    return Units(
+        room=_owners([room.units for room in rooms]),
+        source=_positions([room.units for room in rooms]),
+        arrangement=_codes((unit.arrangement for unit in all_of), ARRANGEMENTS),
+        share=_floats(unit.share for unit in all_of),
+        design_flow=_floats(unit.design_flow for unit in all_of),
+        measured_flow=_floats(unit.measured_flow for unit in all_of),
+        measurement_due=moments(unit.measurement_due for unit in all_of),
+        outdoor_air_fraction=_floats(unit.outdoor_air_fraction for unit in all_of),
+        mixing_factor=_floats(unit.mixing_factor for unit in all_of),
+        state=_codes((unit.state for unit in all_of), UNIT_STATES),
+        standby_power=_flags(unit.standby_power for unit in all_of),
+        fail_alarm=_flags(unit.fail_alarm for unit in all_of),
+    )
+
+
+def _detectors(rooms: Sequence[RoomValues], gases: _Distinct[str]) -> Detectors:
+    all_of = [detector for room in rooms for detector in room.detectors]
+    return Detectors(
+        room=_owners([room.detectors for room in rooms]),
+        source=_positions([room.detectors for room in rooms]),
+        gas=_integers(gases.row(detector.gas) for detector in all_of),
+        height=_floats(detector.height for detector in all_of),
+        placed=_codes((detector.placed for detector in all_of), PLACES),
+        t90=_floats(detector.t90 for detector in all_of),
+        delay=_floats(detector.delay for detector in all_of),
+        alarms=_padded([detector.alarms for detector in all_of]) / 100.0,
+        calibration_due=moments(detector.calibration_due for detector in all_of),
+        state=_codes((detector.state for detector in all_of), DETECTOR_STATES),
+        silenced_since=moments(detector.silenced_since for detector in all_of),
+        heard_outside=_flags(detector.heard_outside for detector in all_of),
+        display_outside=_flags(detector.display_outside for detector in all_of),
+        power_backed=_flags(detector.power_backed for detector in all_of),
+    )
+
+
+def _fluids(fluids: Sequence[FluidValues], gases: _Distinct[str]) -> Fluids:
+    return Fluids(
+        molar_mass=_floats(fluid.molar_mass for fluid in fluids),
+        condensed_density=_floats(fluid.condensed_density for fluid in fluids),
+        oxygen_fraction=_floats(fluid.oxygen_fraction for fluid in fluids),
+        settles=_codes((fluid.settles for fluid in fluids), SETTLES),
+        toxic=_mask("toxic" in fluid.hazards for fluid in fluids),
+        flammable=_mask("flammable" in fluid.hazards for fluid in fluids),
+        gas=_integers(gases.row(fluid.record.tag) for fluid in fluids),
+    )
+
+
+def _bases(rooms: Sequence[RoomValues]) -> Bases:
+    first: dict[int, int] = {}
+    distinct: list[Mapping[str, Any]] = []
+    for room in rooms:
+        if first.setdefault(id(room.basis), len(distinct)) == len(distinct):
+            distinct.append(room.basis.values)
+    which = _integers(first[id(room.basis)] for room in rooms)
+    return _picked(_basis_table(distinct), which)
+
+
+def _basis_table(bases: Sequence[Mapping[str, Any]]) -> Bases:
+    def number(name: str, scale: float = 1.0) -> Floats:
+        return _floats(values[name] for values in bases) * scale
+
+    def air_changes(where: str) -> Floats:
+        changes = _floats(values["natural_air_changes_per_h"][where] for values in bases)
+        return changes / SECONDS_PER_HOUR
+
+    return Bases(
+        deficient=number("oxygen_deficient_pct", PERCENT),
+        danger=number("oxygen_danger_pct", PERCENT),
+        danger_pressure=number("oxygen_danger_kpa", KILOPASCAL),
+        critical=number("oxygen_critical_pct", PERCENT),
+        critical_pressure=number("oxygen_critical_kpa", KILOPASCAL),
+        enriched=number("oxygen_enriched_pct", PERCENT),
+        rich_second=_floats(values["oxygen_rich_marks_pct"][0] for values in bases) * PERCENT,
+        rich_third=_floats(values["oxygen_rich_marks_pct"][1] for values in bases) * PERCENT,
+        mixing_factor=number("mixing_factor"),
+        air_changes_above_ground=air_changes("above_ground"),
+        air_changes_below_ground=air_changes("below_ground"),
+        air_changes_enclosed=air_changes("enclosed"),
+        by_displacement=_mask(values["instant_mixing"] == "displacement" for values in bases),
+        as_recorded=_mask(values["contents"] == "recorded" for values in bases),
+        fill_loss=number("fill_loss_fraction"),
+        evaporation_factor=number("evaporation_factor"),
+        evaporation_by_kind=_by_kind([values["evaporation_pct_day"] for values in bases]),
+        sustained=number("sustained_h", SECONDS_PER_HOUR),
+        restore=number("restore_s"),
+        react=number("react_s"),
+        walk=number("walk_m_s"),
+        net_volume_share=number("net_volume_share"),
+        never_measured_share=number("never_measured_share"),
+        ice_share=number("ice_share_per_h"),
+        severity=_severities([values["severity_table"] for values in bases]),
+    )
+
+
+def _by_kind(shares: Sequence[Mapping[str, float]]) -> Floats:
+    """Share of capacity that evaporates a second; none from ice and cylinders."""
+    rows = [[share.get(kind, 0.0) for kind in VESSEL_KINDS] for share in shares]
+    per_day = np.array(rows, dtype=np.float64).reshape(len(shares), len(VESSEL_KINDS))
+    return per_day * PERCENT / SECONDS_PER_DAY
+
+
+def _severities(tables: Sequence[Mapping[str, Sequence[str]]]) -> Integers:
+    rows = [
+        [[SEVERITIES.index(cell) for cell in table[row]] for row in ("first", "second", "third")]
+        for table in tables
+    ]
+    return np.array(rows, dtype=np.int64).reshape(len(tables), 3, 3)
+
+
+def _owners(groups: Sequence[Sized]) -> Integers:
+    sizes = np.array([len(group) for group in groups], dtype=np.int64)
+    return np.repeat(np.arange(sizes.size), sizes)
+
+
+def _positions(groups: Sequence[Sized]) -> Integers:
+    return _integers(place for group in groups for place in range(len(group)))
+
+
+def _floats(values: Iterable[float | None]) -> Floats:
+    """Numbers in double precision; None becomes not-a-number."""
+    return np.array(list(values), dtype=np.float64)
+
+
+def _integers(values: Iterable[int]) -> Integers:
+    return np.array(list(values), dtype=np.int64)
+
+
+def _mask(values: Iterable[bool]) -> Mask:
+    return np.array(list(values), dtype=np.bool_)
+
+
+def _flags(values: Iterable[bool | None]) -> Integers:
+    return _integers(UNKNOWN if value is None else int(value) for value in values)
+
+
+def _codes(values: Iterable[str | None], names: Sequence[str]) -> Integers:
+    code: dict[str | None, int] = {name: place for place, name in enumerate(names)}
+    code[None] = UNKNOWN
+    return _integers(code[value] for value in values)
+
+
+def moments(values: Iterable[datetime | None]) -> Moments:
+    """Aware times as UTC in microseconds; None becomes not-a-time."""
+    naive = [
+        None if value is None else value.astimezone(UTC).replace(tzinfo=None) for value in values
+    ]
+    return np.array(naive, dtype="datetime64[us]")
+
+
+def _naive(value: datetime | None) -> datetime | None:
+    return None if value is None else value.astimezone(UTC).replace(tzinfo=None)
+
+
+def _padded(lists: Sequence[Sequence[float]]) -> Floats:
+    width = max((len(items) for items in lists), default=0)
+    rows = [[*items, *[math.nan] * (width - len(items))] for items in lists]
+    return np.array(rows, dtype=np.float64).reshape(len(lists), width)
