@@ -1,0 +1,1 @@
+"""The service: records of cryogenic vessels and rooms, and the audit they feed."""

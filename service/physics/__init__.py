@@ -1,0 +1,1 @@
+"""Formulas for gas and air: arrays in, arrays out."""

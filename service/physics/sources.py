@@ -1,0 +1,258 @@
+"""The works that formulas come from, and the methods built of them."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from types import MappingProxyType
+from typing import Final, Literal, TypeAlias
+
+Status: TypeAlias = Literal["seen", "from memory"]
+
+
+@dataclass(frozen=True, slots=True)
+class Source:
+    """A work that a formula, a constant or a value is taken from.
+
+    Attributes
+    ----------
+    key : str
+        Name by which docstrings cite it.
+    title : str
+        The work, in full.
+    status : {"seen", "from memory"}
+        Whether the passage was read for this project.
+    """
+
+    key: str
+    title: str
+    status: Status
+
+
+@dataclass(frozen=True, slots=True)
+class Method:
+    """A method that results name.
+
+    Attributes
+    ----------
+    slug : str
+        Public key, never reused.
+    letter : str
+        Section of the methods paper.
+    words : str
+        What it does, in a sentence.
+    formula : str
+        The formula in plain text.
+    source_keys : tuple of str
+        The works it comes from.
+    range : str
+        Where it holds.
+    bound : bool
+        Whether it is a bound on the safe side and not a best estimate.
+    """
+
+    slug: str
+    letter: str
+    words: str
+    formula: str
+    source_keys: tuple[str, ...]
+    range: str
+    bound: bool
+
+
+_SOURCES: Final = (
+    Source(
+        "gas-industry-guide",
+        "British and European gas-industry guidance on oxygen deficiency and on cryogenic liquids "
+        "in rooms",
+        "from memory",
+    ),
+    Source(
+        "laboratory-odh",
+        "Fermilab, Environment, Safety and Health Manual, chapter on oxygen deficiency hazards "
+        "(formerly 5064, now 4240); adopted by LBNL, Argonne (Physics Division cryogenic manual, "
+        "appendix 3: 135 mmHg) and Jefferson Lab (manual 6540, appendix T4)",
+        "from memory",
+    ),
+    Source(
+        "osha-1910-146",
+        "29 CFR 1910.146, Permit-required confined spaces: oxygen below 19.5 % (its "
+        "upper mark, 23.5 %, from memory)",
+        "seen",
+    ),
+    Source("iso-2533", "ISO 2533:1975, Standard Atmosphere", "from memory"),
+    Source(
+        "us-standard-atmosphere",
+        "U.S. Standard Atmosphere, 1976, NOAA, NASA and USAF, Washington",
+        "from memory",
+    ),
+    Source(
+        "alduchov-eskridge",
+        "O. A. Alduchov and R. E. Eskridge, Improved Magnus form approximation of saturation vapor "
+        "pressure, Journal of Applied Meteorology 35 (1996)",
+        "from memory",
+    ),
+    Source(
+        "ideal-gas",
+        "Equation of state of the ideal gas, and Dalton's law, with the molar gas constant of the "
+        "SI (BIPM, 2019)",
+        "from memory",
+    ),
+    Source(
+        "property-library",
+        "CoolProp 8.0.0, Helmholtz-energy reference equations of the pure fluids",
+        "seen",
+    ),
+    Source(
+        "span-wagner",
+        "R. Span and W. Wagner, A new equation of state for carbon dioxide, Journal of Physical "
+        "and Chemical Reference Data 25 (1996)",
+        "from memory",
+    ),
+    Source(
+        "dry-ice-packages",
+        "FAA Advisory Circular 91-76A, and D. C. Caldwell et al., The sublimation rate of dry ice "
+        "packaged in commonly used quantities by the air cargo industry, DOT/FAA/AM-06/19 (2006)",
+        "from memory",
+    ),
+    Source(
+        "chandrupatla",
+        "T. R. Chandrupatla, A new hybrid quadratic/bisection algorithm for finding the zero of a "
+        "nonlinear function without using derivatives, Advances in Engineering Software 28 (1997)",
+        "from memory",
+    ),
+)
+
+_METHODS: Final = (
+    Method(
+        "gas/ideal-at-site",
+        "A3",
+        "The gas that a liquid becomes, at the pressure of the site and the temperature of the "
+        "room.",
+        "V_g = V_l rho_l R T / (p M)",
+        ("ideal-gas", "property-library"),
+        "0 to 3000 m, 5 to 40 degrees Celsius: within 0.7 %, within 0.1 % for nitrogen, argon, "
+        "oxygen, helium",
+        False,
+    ),
+    Method(
+        "ambient/standard-atmosphere",
+        "B1",
+        "The air pressure of a site from its elevation, where none is measured.",
+        "p = p0 (1 - L h / T0)^(g M / (R* L))",
+        ("iso-2533", "us-standard-atmosphere"),
+        "-5000 to 11 000 m; weather moves it by 3 %",
+        False,
+    ),
+    Method(
+        "ambient/moist-air",
+        "B2",
+        "The oxygen fraction of humid air, shown to explain a meter and never used to judge.",
+        "C = C0 (1 - RH p_ws / p), p_ws = 610.94 exp(17.625 t / (t + 243.04)) Pa",
+        ("alduchov-eskridge", "ideal-gas"),
+        "-40 to 50 degrees Celsius",
+        False,
+    ),
+    Method(
+        "marks/oxygen-by-pressure",
+        "B4",
+        "The oxygen fractions that count as dangerous and as critical at the height of a site.",
+        "C_d = min(deficient, max(danger, danger_pressure / p)); "
+        "C_c = min(C_d, max(critical, critical_pressure / p))",
+        ("laboratory-odh", "osha-1910-146", "gas-industry-guide"),
+        "any pressure",
+        False,
+    ),
+    Method(
+        "mixing/displacement",
+        "C1",
+        "A release at once first pushes out air, then mixes with what is left.",
+        "C = C0 max(0, 1 - V_g / V)",
+        ("gas-industry-guide",),
+        "a closed room; the mean of the room, not its floor",
+        True,
+    ),
+    Method(
+        "mixing/while-displacing",
+        "C2",
+        "A release at once mixes as it comes, and the mixture leaves.",
+        "C = C0 exp(-V_g / V)",
+        ("laboratory-odh",),
+        "a closed room; the mean of the room, not its floor",
+        False,
+    ),
+    Method(
+        "mixing/sealed",
+        "C3",
+        "A release at once mixes and nothing leaves.",
+        "C = C0 / (1 + V_g / V)",
+        ("ideal-gas",),
+        "a sealed enclosure, for comparison only",
+        False,
+    ),
+    Method(
+        "ventilation/piecewise-constant",
+        "D0, D6",
+        "A release over time into a mixed room with supply and exhaust, solved exactly from one "
+        "change of flow to the next.",
+        "V dG/dt = D - W G, W = max(Q_s + R, Q_e), C = C0 (1 - G)",
+        ("laboratory-odh",),
+        "a well-mixed room whose make-up air comes from outdoors",
+        False,
+    ),
+    Method(
+        "ventilation/decaying-source",
+        "D7, D8",
+        "A release that dies away exponentially into a mixed room.",
+        "R = R0 exp(-lambda t) in V dG/dt = R - W G",
+        ("laboratory-odh",),
+        "a well-mixed room with supply, exhaust or neither",
+        False,
+    ),
+    Method(
+        "ventilation/hold",
+        "D",
+        "The smallest flow that keeps the whole course of a release at a mark.",
+        "steady: Q_s = D / G_t - R, Q_e = D / G_t; a finite release by the root of its highest G",
+        ("laboratory-odh", "chandrupatla"),
+        "a well-mixed room; no flow helps a release at once",
+        False,
+    ),
+    Method(
+        "ventilation/restore",
+        "D4",
+        "The flow that brings a room back to a mark within a time, and the time a flow needs.",
+        "Q = V / t ln(G_0 / G_t)",
+        ("laboratory-odh",),
+        "a well-mixed room after the release",
+        False,
+    ),
+    Method(
+        "ventilation/mean",
+        "E2",
+        "The mean of a fraction over a time, exact under steady flows.",
+        "mean G = G_s + (G_0 - G_s) (1 - exp(-n)) / n, n = W t / V",
+        ("laboratory-odh",),
+        "a well-mixed room",
+        False,
+    ),
+    Method(
+        "boil-off/normal-evaporation",
+        "G1",
+        "The gas a vessel gives off by itself.",
+        "R = V_l rho_l / (86 400 s rho_g), V_l the liquid lost in a day",
+        ("gas-industry-guide", "ideal-gas"),
+        "the loss on the data plate, or a measured one",
+        False,
+    ),
+    Method(
+        "boil-off/dry-ice",
+        "G8",
+        "The gas that dry ice gives off.",
+        "R = f m / (3600 s rho_g), f the share that sublimes in an hour",
+        ("dry-ice-packages", "ideal-gas"),
+        "in a box or loose on a floor; not in water",
+        False,
+    ),
+)
+
+SOURCES: Final[Mapping[str, Source]] = MappingProxyType({each.key: each for each in _SOURCES})
+METHODS: Final[Mapping[str, Method]] = MappingProxyType({each.slug: each for each in _METHODS})
