@@ -1,0 +1,103 @@
+"""The demo estate: invented sites that show what the service says."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterator, Mapping
+from importlib import resources
+from pathlib import Path
+from typing import Any, Final
+
+from service.changes.records import carry_out
+from service.changes.requested import CHANGE, CREATE, REMOVE, RecordChange
+from service.store.live import list_records
+from service.store.records import Record
+from service.store.scope import EVERYTHING
+from service.store.session import WriteSession
+
+FILE: Final = "estate.json"
+_PARENTS_FIRST: Final = (
+    "site",
+    "basis",
+    "fluid",
+    "room",
+    "ventilation-unit",
+    "vessel",
+    "detector",
+)
+_AT_ONCE: Final = 500
+
+
+def load_demo(session: WriteSession) -> int:
+    """Create the demo estate, as one change a site; count its records."""
+    estate = json.loads(_text())
+    number = 0
+    for site in estate["sites"]:
+        changes = [
+            RecordChange(CREATE, record["kind"], None, record["fields"])
+            for record in _of_site(site)
+        ]
+        carry_out(session, changes, "demo-load")
+        number += len(changes)
+    return number
+
+
+def remove_demo(session: WriteSession) -> int:
+    """Remove every demo site with all that stands in it; what was said of it stays in the past."""
+    sites = [site for site in _all(session, "site", {}) if site.fields["demo"]]
+    removed = 0
+    for site in sites:
+        # What the site is judged by goes last: it lets go of its own basis first.
+        changes = [
+            RecordChange(REMOVE, kind, record.id, {})
+            for kind in reversed(_PARENTS_FIRST[1:])
+            for record in _all(session, kind, {"site_id": site.id})
+            if kind != "basis"
+        ]
+        bases = [
+            RecordChange(REMOVE, "basis", basis.id, {})
+            for basis in _all(session, "basis", {"site_id": site.id})
+        ]
+        if bases:
+            back = RecordChange(CHANGE, "site", site.id, {"basis": "baseline"})
+            carry_out(session, [back], "demo-remove")
+        last = [*changes, *bases, RecordChange(REMOVE, "site", site.id, {})]
+        carry_out(session, last, "demo-remove")
+        removed += len(last)
+    return removed
+
+
+def _of_site(site: Mapping[str, Any]) -> Iterator[Mapping[str, Any]]:
+    tag = site["fields"]["tag"]
+    yield {"kind": "site", "fields": {**site["fields"], "demo": True}}
+    for record in site["records"]:
+        yield {"kind": record["kind"], "fields": {**record["fields"], "site": tag}}
+
+
+def _all(session: WriteSession, kind: str, filters: Mapping[str, Any]) -> list[Record]:
+    found: list[Record] = []
+    after: tuple[Any, str] | None = None
+    while True:
+        page = list_records(
+            EVERYTHING,
+            session.connection,
+            kind,
+            filters,
+            sort="id",
+            descending=False,
+            after=after,
+            limit=_AT_ONCE,
+        )
+        found.extend(page)
+        if len(page) < _AT_ONCE:
+            return found
+        after = (page[-1].id, page[-1].id)
+
+
+def _text() -> str:
+    # In a checkout the estate lies among the fixtures; in a wheel it goes with the package.
+    packaged = resources.files("service").joinpath("_fixtures", "demo", FILE)
+    if packaged.is_file():
+        return packaged.read_text(encoding="utf-8")
+    beside = Path(__file__).resolve().parents[2] / "fixtures" / "demo" / FILE
+    return beside.read_text(encoding="utf-8")
