@@ -1,0 +1,1 @@
+"""The paths of the API, one module a record or a question."""

@@ -1,0 +1,78 @@
+"""The schemas of detectors."""
+
+from __future__ import annotations
+
+from typing import Annotated, Literal
+
+from pydantic import Field
+
+from service.api.fields import (
+    Day,
+    Instant,
+    Metres,
+    Percent,
+    RecordIdText,
+    Seconds,
+    Tag,
+    patch_of,
+)
+from service.api.schemas.record import (
+    NEVER_NULL,
+    WORDED_ANEW,
+    Consequences,
+    OfSite,
+    RecordPatch,
+    RecordRead,
+    read_of,
+)
+
+Placed = Literal["inside", "entrance"]
+DetectorState = Literal["in-service", "fault", "off"]
+EveryDays = Annotated[int, Field(ge=1, le=36_525)]
+
+
+class DetectorCreate(OfSite):
+    """A new gas detector."""
+
+    room_id: RecordIdText | None = Field(
+        default=None, description="The id of its room; this or 'room' is needed."
+    )
+    room: Tag | None = Field(default=None, description="The tag of the room, in place of its id.")
+    gas: Tag = Field(description="'oxygen', or the tag of the fluid that it measures.")
+    height_m: Metres | None = Field(default=None, description="Above the floor.")
+    placed: Placed | None = None
+    t90_s: Seconds | None = Field(
+        default=None, description="Seconds until it shows nine tenths of a step."
+    )
+    delay_s: Seconds | None = Field(default=None, description="Between the threshold and the alarm.")
+    alarms_pct: Annotated[list[Percent], Field(max_length=8)] | None = Field(
+        default=None, description="Thresholds, by volume."
+    )
+    calibrated_on: Day | None = None
+    calibrate_every_days: EveryDays | None = None
+    state: DetectorState = "in-service"
+    silenced_since: Instant | None = None
+    heard_outside: bool | None = None
+    display_outside: bool | None = None
+    power_backed: bool | None = None
+    monitored: bool | None = None
+
+
+@patch_of(
+    DetectorCreate,
+    never_null=NEVER_NULL | {"room", "room_id"},
+    but=WORDED_ANEW,
+)
+class DetectorPatch(RecordPatch):
+    """A change to a detector."""
+
+
+@read_of(DetectorCreate)
+class DetectorRead(RecordRead):
+    """A gas detector."""
+
+    room_id: RecordIdText
+
+
+class DetectorWritten(DetectorRead, Consequences):
+    """A detector after a write, and what that did."""
