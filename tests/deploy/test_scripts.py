@@ -108,7 +108,7 @@ def start(checkout, path, *arguments, user=None, **environ):
             "HOME": str(place / "home"),
             "PIP_NO_INDEX": "1",
             "PIP_FIND_LINKS": place.as_uri(),
-            "UV_NO_INDEX": "1",
+            "UV_OFFLINE": "1",
             "UV_FIND_LINKS": place.as_uri(),
             **environ,
         },
@@ -202,8 +202,7 @@ def test_a_given_environment_without_python_is_refused(checkout, programs):
 
 
 def path_with(programs, *installers):
-    path = programs()
-    (path / "python3").symlink_to(Path(sys.executable).resolve())
+    path = programs(python3=f'exec {str(Path(sys.executable).resolve())!r} "$@"')
     for name in installers:
         found = shutil.which(name, path=f"{Path(sys.executable).parent}:{os.environ['PATH']}")
         if found is None:
@@ -236,7 +235,8 @@ def test_a_changed_lock_is_installed_and_a_wrong_hash_is_refused(checkout, progr
     again = start(checkout, path)
     assert "Making the environment in" in again.stderr
     assert again.returncode == 0
-    shutil.rmtree(checkout / ".venv")
+    (installed,) = (checkout / ".venv").glob("lib/python*/site-packages/tiny-1.0.dist-info")
+    shutil.rmtree(installed)
     lock.write_text(f"tiny==1.0 --hash=sha256:{'0' * 64}\n")
     refused = start(checkout, path)
     assert sentence(refused).startswith("The locked packages could not be installed.")
