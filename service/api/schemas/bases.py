@@ -14,7 +14,7 @@ from service.api.schemas.record import (
     Consequences,
     OfSite,
     RecordPatch,
-    RecordRead,
+    SharedRecordRead,
     read_of,
 )
 
@@ -61,10 +61,9 @@ class EffectiveValue(Answer):
 
 
 @read_of(BasisCreate)
-class BasisRead(RecordRead):
+class BasisRead(SharedRecordRead):
     """A basis: the values a site is judged by, each with its source."""
 
-    site_id: RecordIdText | None = Field(description="Null: it comes with the service.")
     values: dict[str, Any]
     sources: dict[str, str]
     effective: dict[str, EffectiveValue] = Field(

@@ -20,6 +20,7 @@ from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
     Consequences,
+    EveryDays,
     OfSite,
     RecordPatch,
     RecordRead,
@@ -28,7 +29,6 @@ from service.api.schemas.record import (
 
 Placed = Literal["inside", "entrance"]
 DetectorState = Literal["in-service", "fault", "off"]
-EveryDays = Annotated[int, Field(ge=1, le=36_525)]
 
 
 class DetectorCreate(OfSite):
@@ -44,7 +44,9 @@ class DetectorCreate(OfSite):
     t90_s: Seconds | None = Field(
         default=None, description="Seconds until it shows nine tenths of a step."
     )
-    delay_s: Seconds | None = Field(default=None, description="Between the threshold and the alarm.")
+    delay_s: Seconds | None = Field(
+        default=None, description="Between the threshold and the alarm."
+    )
     alarms_pct: Annotated[list[Percent], Field(max_length=8)] | None = Field(
         default=None, description="Thresholds, by volume."
     )

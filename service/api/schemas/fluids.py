@@ -7,14 +7,14 @@ from typing import Annotated, Literal
 from pydantic import Field, StringConstraints
 
 from service import units
-from service.api.fields import Fraction, Quantity, RecordIdText, ShortText, patch_of
+from service.api.fields import Fraction, Quantity, ShortText, patch_of
 from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
     Consequences,
     OfSite,
     RecordPatch,
-    RecordRead,
+    SharedRecordRead,
     read_of,
 )
 
@@ -57,10 +57,9 @@ class FluidPatch(RecordPatch):
 
 
 @read_of(FluidCreate)
-class FluidRead(RecordRead):
+class FluidRead(SharedRecordRead):
     """A fluid."""
 
-    site_id: RecordIdText | None = Field(description="Null: it comes with the service.")
     sources: dict[str, str]
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from types import NoneType, UnionType
+from types import UnionType
 from typing import Annotated, Any, Final, TypeVar, Union, get_args, get_origin
 
 from pydantic import BaseModel, ConfigDict, Field, create_model
@@ -23,7 +23,8 @@ from service.api.fields import (
     Tag,
 )
 
-Answered = TypeVar("Answered", bound="RecordRead")
+EveryDays = Annotated[int, Field(ge=1, le=36_525)]
+Answered = TypeVar("Answered", bound="AnyRecordRead")
 
 
 class RecordCreate(Edge):
@@ -75,11 +76,10 @@ class Answer(BaseModel):
     )
 
 
-class RecordRead(Answer):
+class AnyRecordRead(Answer):
     """What is answered of a record of any kind; null stands for what is not known."""
 
     id: RecordIdText
-    site_id: RecordIdText
     revision: int = Field(ge=1, description="Goes up by one with each change; also the ETag.")
     created_at: Instant
     updated_at: Instant
@@ -88,6 +88,18 @@ class RecordRead(Answer):
     name: str | None
     notes: str | None
     labels: dict[str, str]
+
+
+class RecordRead(AnyRecordRead):
+    """What is answered of a record that belongs to a site."""
+
+    site_id: RecordIdText
+
+
+class SharedRecordRead(AnyRecordRead):
+    """What is answered of a record that may come with the service."""
+
+    site_id: RecordIdText | None = Field(description="Null: it comes with the service.")
 
 
 _UNIONS: Final = (Union, UnionType)
@@ -207,11 +219,3 @@ class Removed(Consequences):
     """What the removal of a record did."""
 
     id: RecordIdText
-
-
-def is_nullable(annotation: Any) -> bool:
-    """Tell whether a field of this type can be null."""
-    origin = get_origin(annotation)
-    if origin is Annotated:
-        return is_nullable(get_args(annotation)[0])
-    return annotation is NoneType or (origin in _UNIONS and NoneType in get_args(annotation))

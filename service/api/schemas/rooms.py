@@ -77,9 +77,7 @@ class RoomCreate(OfSite):
     contact: ShortText | None = None
 
 
-@patch_of(
-    RoomCreate, never_null=NEVER_NULL, but=WORDED_ANEW
-)
+@patch_of(RoomCreate, never_null=NEVER_NULL, but=WORDED_ANEW)
 class RoomPatch(RecordPatch):
     """A change to a room."""
 

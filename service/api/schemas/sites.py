@@ -22,9 +22,11 @@ from service.api.schemas.record import (
 def _known_zone(text: str) -> str:
     try:
         ZoneInfo(text)
-    except (OSError, ValueError):
-        # A key that is no file, or leads out of the folder of zones.
-        raise refused("no-such-time-zone", "A time zone of the IANA list, such as Europe/Oslo.") from None
+    except (KeyError, OSError, ValueError):
+        # No such zone, a folder of zones, or a path that leads out of them.
+        raise refused(
+            "no-such-time-zone", "A name of the IANA list, such as Europe/Oslo."
+        ) from None
     return text
 
 
@@ -40,7 +42,7 @@ class SiteCreate(RecordCreate):
         default=None, description="The mean air pressure there; wins over the elevation."
     )
     basis_id: RecordIdText | None = Field(default=None, description="What the site is judged by.")
-    basis: Annotated[str, Tag.__metadata__[0]] | None = Field(  # type: ignore[attr-defined]
+    basis: Tag | None = Field(
         default=None, description="The tag of the basis, or its id; 'baseline' where none is sent."
     )
     time_zone: TimeZone = Field(default="UTC", description="In which its days end.")

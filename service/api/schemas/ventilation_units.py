@@ -21,6 +21,7 @@ from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
     Consequences,
+    EveryDays,
     OfSite,
     RecordPatch,
     RecordRead,
@@ -30,7 +31,6 @@ from service.api.schemas.record import (
 Arrangement = Literal["supply", "exhaust", "balanced"]
 UnitState = Literal["running", "stopped", "failed"]
 MixingFactor = Annotated[float, Quantity(units.FRACTION, ge=1.0, le=10.0)]
-EveryDays = Annotated[int, Field(ge=1, le=36_525)]
 
 
 class Served(Edge):
