@@ -13,7 +13,7 @@ from service.changes.replace import entry_of
 from service.errors import FieldsRefused, NotAllowed, RecordNotFound
 from service.store.history import ChangeEntry, append_change, chained
 from service.store.ids import new_record_id
-from service.store.keys import Key, add_key, get_key, replace_key
+from service.store.keys import Key, add_key, get_key, list_keys, replace_key
 from service.store.keys import revoke_key as store_revocation
 from service.store.live import get_records
 from service.store.scope import EVERYTHING
@@ -93,6 +93,11 @@ def revoke_key(session: WriteSession, key_id: str) -> Key:
 
 def ensure_admin_key(session: WriteSession, secret: str) -> bool:
     """Store a key that was set from outside; False where an administrator's key is there."""
+    if any(
+        key.role == ADMINISTRATOR and key.sites is None and key.revoked_at is None
+        for key in list_keys(EVERYTHING, session.connection)
+    ):
+        return False
     create_key(
         session, holder="set-up by environment", role=ADMINISTRATOR, sites=None, secret=secret
     )

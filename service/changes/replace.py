@@ -31,10 +31,10 @@ from service.store.history import (
     append_change,
     append_versions,
     chained,
-    forget_room_state,
 )
 from service.store.ids import new_record_id
 from service.store.live import delete_record, insert_record, revise_record
+from service.store.memory import Published
 from service.store.records import Record, body, canonical, digest
 from service.store.session import INSTALLATION, WriteSession
 
@@ -99,8 +99,6 @@ def _write_records(session: WriteSession, changed: Sequence[Pair]) -> None:
             raise RuntimeError(f"The live {pair.after.kind} is not at the revision that was read.")
     for pair in reversed(ordered):
         if pair.after is None and pair.before is not None:
-            if pair.before.kind == "room":
-                forget_room_state(session, pair.before.id)
             delete_record(session, pair.before)
 
 
@@ -141,12 +139,16 @@ def _append_site(
     )
     append_findings(session, news)
     append_events(session, _events(session, site_id, position, pairs, assessed, outcome.prior))
-    for assessment in stored:
-        session.publish_status(stored_status(assessment))
-    for pair in pairs:
-        if pair.after is None and pair.record.kind == "room":
-            session.publish_removed_room(pair.record.id)
-    session.publish_head(site_id, position, position if wants else head.wanted_position)
+    session.publish(
+        Published(
+            statuses=tuple(stored_status(assessment) for assessment in stored),
+            forgotten=tuple(
+                pair.record.id
+                for pair in pairs
+                if pair.after is None and pair.record.kind == "room"
+            ),
+        )
+    )
 
 
 def _stored_assessment(one: Assessed, position: int, cause: str) -> StoredAssessment:

@@ -17,21 +17,19 @@ from service.changes.replace import assessment_digest, entry_of, finding_digest
 from service.changes.room_values import values_of_rooms
 from service.store.engine import Database
 from service.store.findings import finding_versions_of, list_live_findings
-from service.store.heads import Head, heads_of
+from service.store.heads import INSTALLATION, NO_HASH, Head, heads_of
 from service.store.history import (
     ChangeEntry,
     StoredAssessment,
     assessments_of,
     chained,
     changes_of,
-    first_hash,
     version_of,
     versions_of,
 )
 from service.store.live import list_records
 from service.store.records import Record, body, canonical, digest
 from service.store.scope import EVERYTHING, Scope
-from service.store.session import INSTALLATION
 from service.store.tables.registry import KINDS
 
 #: Assessments are equal when their numbers agree this far, relative.
@@ -92,7 +90,7 @@ class _Walk:
 
     def go(self) -> None:
         """Walk from the first entry to the head, then hold the live tables against the versions."""
-        previous, position = first_hash(), 0
+        previous, position = NO_HASH, 0
         for entry in self._entries():
             position += 1
             if entry.position != position:
