@@ -1,0 +1,1 @@
+"""The records and their history; the one package that speaks SQL."""

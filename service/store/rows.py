@@ -1,0 +1,80 @@
+"""Between records and rows: which column holds which field, and in which form."""
+
+from collections.abc import Callable
+from datetime import datetime
+from functools import cache
+from typing import Any
+
+from sqlalchemy import RowMapping
+
+from service.clock import moment_of, text_of
+from service.store.records import COMMON_FIELDS, Record, folded_tag
+from service.store.tables.registry import TABLES
+from service.store.types import Instant
+
+_NOT_FIELDS = frozenset({"id", "site_id", "revision", "created_at", "updated_at", "tag_folded"})
+
+
+@cache
+def field_names(kind: str) -> tuple[str, ...]:
+    """Return the fields of a kind in the order in which they are answered."""
+    own = [column.name for column in TABLES[kind].columns if column.name not in _NOT_FIELDS]
+    return (*COMMON_FIELDS, *(name for name in own if name not in COMMON_FIELDS))
+
+
+@cache
+def _instants(kind: str) -> frozenset[str]:
+    columns = TABLES[kind].columns
+    return frozenset(name for name in field_names(kind) if isinstance(columns[name].type, Instant))
+
+
+def row_of(record: Record) -> dict[str, Any]:
+    """Return the values of a record's columns.
+
+    Raises
+    ------
+    ValueError
+        The record lacks a field of its kind, or has one that its kind does not have.
+    """
+    names = field_names(record.kind)
+    if record.fields.keys() != set(names):
+        odd = sorted(record.fields.keys() ^ set(names))
+        raise ValueError(f"A {record.kind} has other fields; these differ: {', '.join(odd)}.")
+    row: dict[str, Any] = {
+        "id": record.id,
+        "site_id": record.site_id,
+        "revision": record.revision,
+        "created_at": record.created_at,
+        "updated_at": record.updated_at,
+        **record.fields,
+        "tag_folded": folded_tag(record.fields["tag"]),
+    }
+    for name in _instants(record.kind):
+        row[name] = None if row[name] is None else moment_of(row[name])
+    return row
+
+
+@cache
+def reader_of(kind: str) -> Callable[[RowMapping], Record]:
+    """Return the function that makes records of one kind from rows."""
+    names, instants = field_names(kind), _instants(kind)
+
+    def read(row: RowMapping) -> Record:
+        fields = {name: row[name] for name in names}
+        for name in instants:
+            fields[name] = _text(fields[name])
+        return Record(
+            kind=kind,
+            id=row["id"],
+            site_id=row["site_id"],
+            revision=row["revision"],
+            created_at=row["created_at"],
+            updated_at=row["updated_at"],
+            fields=fields,
+        )
+
+    return read
+
+
+def _text(moment: datetime | None) -> str | None:
+    return None if moment is None else text_of(moment)

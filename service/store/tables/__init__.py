@@ -1,0 +1,1 @@
+"""The table classes, one module a record, and the tables of the history."""
