@@ -7,5 +7,7 @@ set -eu
 . "$(dirname -- "$0")/environment.sh"
 
 environment requirements.lock
+PYTHONPATH=$checkout
+export PYTHONPATH
 # -P keeps a folder `service` in the working directory from being run instead.
-PYTHONPATH=$checkout exec "$venv/bin/python" -P -m service serve "$@"
+exec "$venv/bin/python" -P -m service serve "$@"
