@@ -6,11 +6,12 @@ from collections.abc import Iterator, Mapping
 from dataclasses import replace as altered
 from typing import Any
 
-from service.audit.bases import BASES, BASIS_SOURCES
+from service.audit.bases import SHIPPED_SOURCES, SHIPPED_VALUES
 from service.changes.apply import Pair
 from service.changes.kinds import blank_fields
 from service.changes.replace import Outcome, replace
 from service.physics.fluids import FLUIDS, FluidData
+from service.physics.sources import SOURCES
 from service.store.heads import heads_of
 from service.store.ids import new_record_id
 from service.store.live import record_by_tag
@@ -55,14 +56,14 @@ def _pair(session: WriteSession, kind: str, fields: Mapping[str, Any]) -> Pair |
 
 
 def _shipped() -> Iterator[tuple[str, dict[str, Any]]]:
-    for tag, values in BASES.items():
+    for tag, values in SHIPPED_VALUES.items():
         yield (
             "basis",
             {
                 "tag": tag,
                 "name": f"The {tag} basis",
                 "values": dict(values),
-                "sources": dict(BASIS_SOURCES[tag]),
+                "sources": dict(SHIPPED_SOURCES[tag]),
             },
         )
     for fluid in FLUIDS.values():
@@ -81,5 +82,5 @@ def _fluid_fields(fluid: FluidData) -> dict[str, Any]:
         "solid": fluid.solid,
         "hazards": sorted(fluid.hazards),
         "settles": fluid.settles,
-        "sources": {"properties": fluid.source},
+        "sources": {"properties": SOURCES["property-library"].title},
     }
