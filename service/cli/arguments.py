@@ -46,7 +46,6 @@ COMMANDS: tuple[Command, ...] = (
     Command("verify", "service.cli.verify", "prove the journal and the stored assessments"),
     Command("recalculate", "service.cli.recalculate", "recalculate rooms by the running method"),
     Command("openapi", "service.cli.openapi", "print the description of the API"),
-    Command("doctor", "service.cli.doctor", "say what is wrong with this installation"),
 )
 
 
