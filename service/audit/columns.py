@@ -190,7 +190,7 @@ class Columns:
 _Item = TypeVar("_Item")
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)  # a generic class with slots cannot be asked for by its type in 3.11
 class _Distinct(Generic[_Item]):
     """Things met, each once, in the order they were met."""
 

@@ -1,0 +1,159 @@
+"""Rooms with sound defaults: every record measured, counted and in date."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from datetime import UTC, datetime, timedelta
+from typing import Any
+
+from service.audit.bases import SHIPPED_SOURCES, SHIPPED_VALUES
+from service.audit.inputs import (
+    BasisValues,
+    DetectorValues,
+    FluidValues,
+    Reference,
+    RoomValues,
+    UnitValues,
+    VesselValues,
+)
+
+NOW = datetime(2027, 3, 1, 8, tzinfo=UTC)
+LATER = NOW + timedelta(days=100)
+EARLIER = NOW - timedelta(days=10)
+LITRE = 0.001  # [m3]
+PER_DAY = LITRE / 86_400.0  # [m3/s] of a litre a day
+PER_HOUR = 1.0 / 3600.0  # [m3/s] of a cubic metre an hour
+
+
+def a_reference(kind: str, tag: str, revision: int = 1) -> Reference:
+    return Reference(kind, f"{kind}-{tag}", tag, revision)
+
+
+def a_basis(tag: str = "baseline", **own: Any) -> BasisValues:
+    values = {**SHIPPED_VALUES[tag], **own}
+    return BasisValues(a_reference("basis", tag), values, SHIPPED_SOURCES[tag])
+
+
+BASELINE = a_basis()
+
+
+def a_fluid(tag: str, **fields: Any) -> FluidValues:
+    defaults: dict[str, Any] = {
+        "name": tag.capitalize(),
+        "boiling_point": 77.355,
+        "oxygen_fraction": 0.0,
+        "solid": False,
+        "hazards": frozenset({"asphyxiant"}),
+        "settles": "low",
+    }
+    return FluidValues(record=a_reference("fluid", tag), **{**defaults, **fields})
+
+
+# Molar masses and densities of saturated liquid at 101.325 kPa: CoolProp 8.
+NITROGEN = a_fluid("nitrogen", molar_mass=0.0280135, condensed_density=806.08)
+HELIUM = a_fluid(
+    "helium", molar_mass=0.0040026, condensed_density=124.67, boiling_point=4.224, settles="high"
+)
+ARGON = a_fluid("argon", molar_mass=0.039948, condensed_density=1395.40)
+OXYGEN = a_fluid(
+    "oxygen",
+    molar_mass=0.0319988,
+    condensed_density=1141.17,
+    oxygen_fraction=1.0,
+    hazards=frozenset({"oxidiser"}),
+)
+CARBON_DIOXIDE = a_fluid(
+    "carbon-dioxide",
+    molar_mass=0.0440098,
+    condensed_density=1562.0,
+    solid=True,
+    hazards=frozenset({"asphyxiant", "toxic"}),
+)
+METHANE = a_fluid(
+    "methane",
+    molar_mass=0.0160428,
+    condensed_density=422.36,
+    hazards=frozenset({"asphyxiant", "flammable"}),
+    settles="methane",
+)
+
+
+def a_vessel(litres: float = 50.0, fluid: FluidValues = NITROGEN, **fields: Any) -> VesselValues:
+    defaults: dict[str, Any] = {
+        "kind": "pressurised-dewar",
+        "state": "in-service",
+        "capacity_volume": litres * LITRE,
+        "measured_evaporation": 0.01 * litres * PER_DAY,
+        "vent_to": "room",
+        "filled_by": "exchanged",
+    }
+    tag = fields.pop("tag", f"V-{litres:g}-{fluid.record.tag}")
+    return VesselValues(
+        record=a_reference("vessel", tag), fluid=fluid, **{**defaults, **fields}
+    )
+
+
+def some_ice(kilograms: float = 10.0, **fields: Any) -> VesselValues:
+    vessel = a_vessel(fluid=CARBON_DIOXIDE, kind="dry-ice-box", tag=f"ICE-{kilograms:g}")
+    return replace(
+        vessel,
+        **{
+            "capacity_volume": None,
+            "capacity_mass": kilograms,
+            "measured_evaporation": None,
+            **fields,
+        },
+    )
+
+
+def a_unit(m3_per_hour: float = 600.0, **fields: Any) -> UnitValues:
+    defaults: dict[str, Any] = {
+        "arrangement": "exhaust",
+        "share": 1.0,
+        "design_flow": m3_per_hour * PER_HOUR,
+        "measured_flow": m3_per_hour * PER_HOUR,
+        "measurement_due": LATER,
+        "outdoor_air_fraction": 1.0,
+    }
+    tag = fields.pop("tag", f"F-{m3_per_hour:g}")
+    return UnitValues(record=a_reference("ventilation-unit", tag), **{**defaults, **fields})
+
+
+def a_detector(**fields: Any) -> DetectorValues:
+    defaults: dict[str, Any] = {
+        "gas": "oxygen",
+        "height": 0.5,
+        "placed": "inside",
+        "t90": 30.0,
+        "delay": 0.0,
+        "alarms": (19.5, 18.0, 23.5),
+        "calibration_due": LATER,
+        "heard_outside": True,
+        "power_backed": True,
+    }
+    tag = fields.pop("tag", "D-1")
+    return DetectorValues(record=a_reference("detector", tag), **{**defaults, **fields})
+
+
+def a_room(volume_m3: float = 70.0, **fields: Any) -> RoomValues:
+    """A room at sea level of which nothing is unknown, and nothing is occupied."""
+    defaults: dict[str, Any] = {
+        "name": "Store",
+        "kind": "room",
+        "state": "in-service",
+        "elevation": 0.0,
+        "floor_area": volume_m3 / 2.5,
+        "height": 2.5,
+        "occupied_fraction": 0.0,
+        "temperature": 293.15,
+        "below_ground": False,
+        "way_out": 5.0,
+        "basis": BASELINE,
+    }
+    tag = fields.pop("tag", "B-104")
+    return RoomValues(
+        record=a_reference("room", tag),
+        site=a_reference("site", "north"),
+        gross_volume=volume_m3,
+        **{**defaults, **fields},
+    )
