@@ -5,7 +5,7 @@ from typing import Any
 from alembic import context
 
 
-def _refuse_dangling(ctx: Any, **_: Any) -> None:
+def _refuse_dangling(*, ctx: Any, **_: Any) -> None:
     # Foreign keys are off while SQLite copies tables. What does not fit then fails the migration.
     connection = ctx.connection
     if connection.dialect.name == "sqlite":
@@ -24,7 +24,7 @@ context.configure(
     transaction_per_migration=True,
     # Alembic takes SQLite for a database that cannot roll DDL back. It can, given a BEGIN.
     transactional_ddl=True,
-    on_version_apply=_refuse_dangling,
+    on_version_apply=_refuse_dangling,  # type: ignore[arg-type]  # it is called by keyword
 )
 with context.begin_transaction():
     context.run_migrations()

@@ -3,7 +3,7 @@
 What reads takes a scope and a connection; what writes takes the session of a write.
 """
 
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager
 from functools import cache
 from typing import Any, Final, NamedTuple, TypeVar
@@ -29,6 +29,7 @@ from sqlalchemy.exc import IntegrityError
 
 from service.errors import DuplicateExternalId, DuplicateTag
 from service.store.paging import filtered, paged
+from service.store.parts import in_parts
 from service.store.records import Record, folded_tag
 from service.store.rows import reader_of, row_of
 from service.store.scope import Scope, within
@@ -37,8 +38,6 @@ from service.store.tables.registry import TABLES, VENTILATION_UNIT_ROOM
 
 Changing = TypeVar("Changing", Update, Delete)
 
-# What a statement may have as parameters is bounded on both databases.
-_AT_ONCE: Final = 1000
 _SHARED: Final = frozenset({"basis", "fluid"})
 _UNIT: Final = "ventilation-unit"
 
@@ -299,7 +298,7 @@ def _many(
 ) -> list[Record]:
     table = TABLES[kind]
     found: list[Record] = []
-    for some in _in_parts(sorted(set(values))):
+    for some in in_parts(values):
         query = select(*table.c).select_from(source).where(column.in_(some))
         found += _records(connection, kind, _seen(scope, kind, query))
     return found
@@ -316,11 +315,6 @@ def _ids(connection: Connection, query: Select[str]) -> list[str]:
 
 def _seen(scope: Scope, kind: str, query: Select[*tuple[Any, ...]]) -> Select[*tuple[Any, ...]]:
     return within(scope, query, TABLES[kind].c["site_id"], shared=kind in _SHARED)
-
-
-def _in_parts(values: Sequence[str]) -> Iterator[Sequence[str]]:
-    for first in range(0, len(values), _AT_ONCE):
-        yield values[first : first + _AT_ONCE]
 
 
 def _record_order(record: Record) -> str:

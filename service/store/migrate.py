@@ -49,12 +49,15 @@ def upgrade(database_url: str, to: str = "head") -> None:
         if before is not None and connection.dialect.name == SQLITE:
             copy = _keep_copy(sqlite_file(database_address(database_url)), before)
             _log.info("Before migrating, the database was copied to %s.", copy.name)
+        # Alembic leaves a transaction alone that it finds open, and what was read has opened one.
+        connection.rollback()
         command.upgrade(_config(connection), to)
 
 
 def downgrade(database_url: str, to: str) -> None:
     """Migrate a database down to a revision; ``base`` leaves nothing. Data is lost by it."""
     with _migrating(database_url) as connection:
+        connection.rollback()
         command.downgrade(_config(connection), to)
 
 
@@ -92,8 +95,6 @@ def _migrating(database_url: str) -> Iterator[Connection]:
             raise NewerDatabase(
                 "The database was made by a newer release; run that one, or restore a copy."
             )
-        # What was read so far has opened a transaction, and each migration opens its own.
-        connection.rollback()
         yield connection
 
 

@@ -83,9 +83,13 @@ def has_label(table: Table, name: str, value: str, *, dialect: str) -> ColumnEle
     if dialect == SQLITE:
         # A path into the document could not hold every name that a label can have.
         each = func.json_each(labels).table_valued("key", "value")
-        return exists().select_from(each).where(each.c.key == name, each.c.value == value)
+        found: ColumnElement[bool] = (
+            exists().select_from(each).where(each.c.key == name, each.c.value == value)
+        )
+        return found
     held: ColumnElement[str] = cast(labels, JSON).op("->>", return_type=Text())(name)
-    return held == value
+    equal: ColumnElement[bool] = held == value
+    return equal
 
 
 def _condition(table: Table, name: str, value: Any, dialect: str) -> ColumnElement[bool]:
@@ -97,7 +101,8 @@ def _condition(table: Table, name: str, value: Any, dialect: str) -> ColumnEleme
     read = _reader(column, name)
     if isinstance(value, Collection) and not isinstance(value, str):
         return column.in_([read(one) for one in value])
-    return column == read(value)
+    equal: ColumnElement[bool] = column == read(value)
+    return equal
 
 
 def _beyond(
@@ -135,7 +140,7 @@ def _column(table: Table, name: str, parameter: str) -> Column[Any]:
 def _reader(column: Column[Any], parameter: str) -> Callable[[Any], Any]:
     """Return the function that takes a value, or its text, for one of the column's type."""
     kind: type[Any] = type(column.type)
-    read = _READERS.get(kind, _text)
+    read: Callable[[Any], Any] = _READERS.get(kind, _text)
     folds = column.name in _FOLDED.values()
 
     def checked(value: Any) -> Any:
