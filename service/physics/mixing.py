@@ -6,9 +6,7 @@ from numpy.typing import ArrayLike
 from service.physics.arrays import Floats, finite, fraction, non_negative, positive, quotient
 from service.physics.constants import OXYGEN_IN_AIR
 from service.physics.errors import OutOfRange
-
-# exp(-700) is the last round exponent above the smallest double: less is no gas at all.
-_LONGEST = 700.0
+from service.physics.relaxation import LONGEST
 
 
 def oxygen_after_displacement(
@@ -88,7 +86,7 @@ def oxygen_after_mixing(
     array([0.2095 , 0.18956])
     """
     gas_share = non_negative("gas_volume", gas_volume) / positive("room_volume", room_volume)
-    return fraction("oxygen_before", oxygen_before) * np.exp(-np.minimum(gas_share, _LONGEST))
+    return fraction("oxygen_before", oxygen_before) * np.exp(-np.minimum(gas_share, LONGEST))
 
 
 def oxygen_after_dilution(
@@ -225,7 +223,7 @@ def released_fraction_after_mixing(
     array([0.      , 0.095163])
     """
     volume = non_negative("gas_volume", gas_volume)
-    gas_share = np.minimum(volume / positive("room_volume", room_volume), _LONGEST)
+    gas_share = np.minimum(volume / positive("room_volume", room_volume), LONGEST)
     before = finite("fraction_before", fraction_before)
     return before * np.exp(-gas_share) - np.expm1(-gas_share) * _counted_share(
         volume, dilution_volume
