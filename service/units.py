@@ -47,7 +47,7 @@ class Unit:
     note: str | None = None
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, eq=False)
 class Dimension:
     """A kind of quantity with all its units."""
 
@@ -308,7 +308,7 @@ ABSOLUTE: Final = Dimension(
         _unit("atm", 101325),
         _unit("mmHg", Fraction("133.322387415"), "mm Hg"),
         _unit("torr", Fraction(101325, 760), "Torr"),
-        _unit("inHg", Fraction("3386.389"), "in Hg"),
+        _unit("inHg", Fraction("25.4") * Fraction("133.322387415"), "in Hg"),
     ),
     hints=_other("g", "gauge", NOT_ABSOLUTE),
 )

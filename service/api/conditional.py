@@ -131,7 +131,7 @@ def parse_reason(value: str) -> str | None:
     try:
         marked = _RFC_8187.match(value)
         raw = unquote_to_bytes(value[marked.end() :]) if marked else value.encode("latin-1")
-        text = raw.decode("utf-8").strip()
+        text = raw.decode("utf-8").strip(" ")
     except (UnicodeDecodeError, UnicodeEncodeError):
         detail = "Write it in UTF-8, or as UTF-8''… with percent signs."
         raise HeaderRefused.named("Change-Reason", "not-utf-8", detail) from None

@@ -231,13 +231,16 @@ class Quantity:
         for name, published in names.items():
             if name in number:
                 number[published] = number.pop(name)
+        number["description"] = f"In {self.unit.unit.name}."
+        if handler.mode == "serialization":
+            return number  # Answers are in the unit of the name, always.
         text = {
             "type": "string",
             "maxLength": units.LONGEST_TEXT,
             "description": f"A number with a unit: {', '.join(self.unit.accepted)}.",
             "examples": [self.unit.example],
         }
-        return {"anyOf": [number | {"description": f"In {self.unit.unit.name}."}, text]}
+        return {"anyOf": [number, text]}
 
     def _number(self, sent: Any) -> Any:
         if not isinstance(sent, str):
