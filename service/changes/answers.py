@@ -79,6 +79,7 @@ def status_bytes(assessed: Assessed, position: int) -> bytes:
         "judges": _JUDGES,
         "state": assessed.values.state,
         "standing": assessed.standing,
+        "worst_oxygen_pct": assessed.worst_oxygen_pct,
         "worst": _worst(assessment),
         "highest_oxygen": _highest_oxygen(assessment),
         "ventilation": None

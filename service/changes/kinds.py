@@ -9,7 +9,8 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import Any, Final
 
-from service.store.records import Record, fields_of
+from service.store.records import Record
+from service.store.rows import field_names
 
 Fields = Mapping[str, Any]
 
@@ -148,4 +149,4 @@ def reaches_far(before: Record | None, after: Record | None) -> bool:
 
 def blank_fields(kind: str) -> dict[str, Any]:
     """Give every field of a kind, null where it has no default."""
-    return {name: None for name in fields_of(kind)} | {"labels": {}} | dict(KINDS[kind].defaults)
+    return {name: None for name in field_names(kind)} | {"labels": {}} | dict(KINDS[kind].defaults)

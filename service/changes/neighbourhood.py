@@ -11,7 +11,6 @@ from service.audit.findings import Finding
 from service.changes.kinds import KINDS, blank_fields, rooms_reached
 from service.changes.requested import CHANGE, CREATE, REMOVE, Placed
 from service.store.findings import findings_of_rooms
-from service.store.history import room_states
 from service.store.live import (
     equipment_of,
     get_records,
@@ -25,6 +24,7 @@ from service.store.live import (
 from service.store.records import Record, folded_tag
 from service.store.scope import EVERYTHING
 from service.store.session import WriteSession
+from service.store.states import room_states
 
 OXYGEN: Final = "oxygen"
 

@@ -130,13 +130,8 @@ def _append_site(
             chain_hash=chained(head.chain_hash, entry),
         ),
     )
-    append_versions(session, [_version(pair, site_id, position) for pair in pairs])
-    append_assessments(
-        session,
-        stored,
-        standings={one.assessment.room.id: one.standing for one in assessed},
-        worst_oxygen={one.assessment.room.id: one.worst_oxygen_pct for one in assessed},
-    )
+    append_versions(session, [_version(pair, position) for pair in pairs])
+    append_assessments(session, stored)
     append_findings(session, news)
     append_events(session, _events(session, site_id, position, pairs, assessed, outcome.prior))
     session.publish(
@@ -176,10 +171,10 @@ def _finding_row(finding: Finding, session: WriteSession) -> dict[str, Any]:
     return row
 
 
-def _version(pair: Pair, site_id: str, position: int) -> Version:
+def _version(pair: Pair, position: int) -> Version:
     record = pair.record
     revision = record.revision if pair.after is not None else record.revision + 1
-    return Version(pair.after, record.kind, record.id, site_id, revision, position)
+    return pair.after, record.kind, record.id, record.site_id, revision, position
 
 
 def entry_of(

@@ -16,12 +16,10 @@ from service.changes.answers import inputs_document, results_document
 from service.changes.replace import assessment_digest, entry_of, finding_digest
 from service.changes.room_values import values_of_rooms
 from service.store.engine import Database
-from service.store.findings import finding_versions_of, list_live_findings
 from service.store.heads import INSTALLATION, NO_HASH, Head, heads_of
 from service.store.history import (
     ChangeEntry,
     StoredAssessment,
-    assessments_of,
     chained,
     changes_of,
     version_of,
@@ -30,6 +28,7 @@ from service.store.history import (
 from service.store.live import list_records
 from service.store.records import Record, body, canonical, digest
 from service.store.scope import EVERYTHING, Scope
+from service.store.states import assessments_from, findings_from, live_findings
 from service.store.tables.registry import KINDS
 
 #: Assessments are equal when their numbers agree this far, relative.
@@ -128,7 +127,7 @@ class _Walk:
     def _check_covered(self, entry: ChangeEntry) -> None:
         told = json.loads(entry.entry)
         self._check_versions(entry.position, told["records"])
-        stored = assessments_of(
+        stored = assessments_from(
             self._scope, self._connection, self._head.site_id, entry.position
         )
         self._check_hashes(
@@ -149,19 +148,16 @@ class _Walk:
             "record version",
             {(line["id"], line["revision"]): line["sha256"] for line in told if line["kind"] != "key"},
             {
-                (row.record_id, row.revision): None
-                if row.record is None
-                else digest(canonical(body(row.record)))
+                (row.record_id, row.revision): None if row.body is None else digest(row.body)
                 for row in rows
             },
         )
         for row in rows:
-            self._newest[row.kind, row.record_id] = (
-                None if row.record is None else digest(canonical(body(row.record)))
-            )
+            hashed = None if row.body is None else digest(row.body)
+            self._newest[row.kind, row.record_id] = hashed
 
     def _check_findings(self, position: int, told: Sequence[Mapping[str, Any]]) -> None:
-        rows = finding_versions_of(
+        rows = findings_from(
             self._scope, self._connection, self._head.site_id, position
         )
         self._report.findings += len(rows)
@@ -247,7 +243,7 @@ class _Walk:
         if ("site", self._head.site_id) not in live:
             # The live findings of a site go with it.
             return
-        rows = list_live_findings(self._scope, self._connection, self._head.site_id)
+        rows = live_findings(self._scope, self._connection, self._head.site_id)
         self._check_hashes(
             self._head.position,
             "live finding",

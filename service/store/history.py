@@ -137,7 +137,7 @@ def assessments_now(
     found = []
     for some in in_parts(room_ids):
         query = within(scope, _NOW.where(ROOM_STATE.c.room_id.in_(some)), ROOM_STATE.c.site_id)
-        found += [_assessment(row) for row in connection.execute(query)]
+        found += [assessment_of_row(row) for row in connection.execute(query)]
     return sorted(found, key=lambda assessment: assessment.room_id)
 
 
@@ -156,7 +156,7 @@ def assessments_of(
     table = ASSESSMENT_VERSION
     query = select(table).where(table.c.room_id == room_id, table.c.from_position > after)
     query = within(scope, query, table.c.site_id).order_by(table.c.from_position).limit(limit)
-    return [_assessment(row) for row in connection.execute(query)]
+    return [assessment_of_row(row) for row in connection.execute(query)]
 
 
 def rooms_turning(scope: Scope, connection: Connection, moment: datetime, limit: int) -> list[str]:
@@ -320,7 +320,8 @@ def _assessment_row(assessment: StoredAssessment) -> dict[str, Any]:
     return asdict(assessment) | packed
 
 
-def _assessment(row: Row[Any]) -> StoredAssessment:
+def assessment_of_row(row: Row[Any]) -> StoredAssessment:
+    """Unpack an assessment from its row."""
     values = dict(row._mapping)
     values["inputs"] = zlib.decompress(row.inputs)
     values["results"] = zlib.decompress(row.results)
@@ -328,12 +329,11 @@ def _assessment(row: Row[Any]) -> StoredAssessment:
 
 
 def _assessment_seen(scope: Scope, row: Row[Any] | None) -> StoredAssessment | None:
-    return None if row is None or not scope.sees(row.site_id) else _assessment(row)
+    return None if row is None or not scope.sees(row.site_id) else assessment_of_row(row)
 
 
 def _state_row(assessment: StoredAssessment) -> dict[str, Any]:
     status = orjson.loads(assessment.status)
-    worst = status.get("worst") or {}
     return {
         "room_id": assessment.room_id,
         "site_id": assessment.site_id,
@@ -341,8 +341,8 @@ def _state_row(assessment: StoredAssessment) -> dict[str, Any]:
         "turns_at": assessment.turns_at,
         "method_version": assessment.method_version,
         "failed": assessment.failed,
-        "standing": status.get("standing"),
-        "worst_oxygen_pct": worst.get("oxygen_pct"),
+        "standing": status["standing"],
+        "worst_oxygen_pct": status["worst_oxygen_pct"],
         "basis_id": assessment.basis_id,
         "basis_revision": assessment.basis_revision,
     }
