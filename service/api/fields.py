@@ -5,6 +5,7 @@ Every type here is an ``Annotated`` name, so that a schema reads as a list of wh
 gt=0, le=500)]``. What is refused is refused with a code of our own and never repeated.
 """
 
+import json
 import re
 import unicodedata
 from collections.abc import Callable, Iterable, Iterator, Mapping
@@ -299,12 +300,14 @@ class ReadAs:
     note: str | None
 
 
-def read_as(raw: Any, model: BaseModel, *, at: str = "") -> list[ReadAs]:
+def read_as(raw: Any, model: BaseModel | type[BaseModel], *, at: str = "") -> list[ReadAs]:
     """List each quantity that was sent with a unit and what it was read as, in the order sent.
 
-    ``raw`` is the parsed body that the model was validated from; ``at`` is put before each pointer.
+    ``raw`` is the parsed body, and ``model`` what was made of it, or the class that takes it.
+    ``at`` is put before each pointer.
     """
-    return list(_readings(None, (), raw, model, at))
+    made = model.model_validate_json(json.dumps(raw)) if isinstance(model, type) else model
+    return list(_readings(None, (), raw, made, at))
 
 
 def _readings(

@@ -317,3 +317,4 @@ def test_every_quantity_sent_with_a_unit_is_answered_as_it_was_read():
         assert "US gallon" in found[0].note
         assert found[1].read == 0.9144
         assert found[1].note is None
+        assert read_as(raw, model) == found

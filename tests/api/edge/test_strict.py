@@ -15,12 +15,7 @@ JSON_VALUES = st.recursive(
     | st.integers(-LARGEST_INTEGER, LARGEST_INTEGER)
     | st.floats(allow_nan=False, allow_infinity=False)
     | st.text(st.characters(exclude_categories=["Cs", "Cc"])),
-    lambda inner: (
-        st.lists(inner, max_size=4)
-        | st.dictionaries(
-            st.text(st.characters(exclude_categories=["Cs", "Cc"])), inner, max_size=4
-        )
-    ),
+    lambda inner: st.lists(inner, max_size=4) | st.dictionaries(NAMES, inner, max_size=4),
     max_leaves=20,
 )
 
