@@ -12,8 +12,8 @@ from service.physics.arrays import Floats, Integers
 Excess: TypeAlias = Callable[[Integers, Floats], Floats]
 
 _RELATIVE_WIDTH = 1e-11
-# Some ten steps are usual; bisection alone would need a few hundred for any bracket met here.
-_MOST_STEPS = 1000
+# Some ten steps are usual; bisection alone would need a hundred for any bracket met here.
+_MOST_STEPS = 500
 
 
 def smallest_enough(excess: Excess, upper: Floats) -> Floats:
@@ -36,7 +36,7 @@ def smallest_enough(excess: Excess, upper: Floats) -> Floats:
     Raises
     ------
     ArithmeticError
-        The function does not fall as promised.
+        The function jumps at zero, so that no smallest argument is enough.
 
     Notes
     -----
@@ -50,7 +50,8 @@ def smallest_enough(excess: Excess, upper: Floats) -> Floats:
     """
     answer = np.zeros_like(upper)
     at_zero = excess(np.arange(upper.size), answer)
-    rows = np.flatnonzero(at_zero > 0.0)
+    # Asked for what is enough, so that not-a-number is not.
+    rows = np.flatnonzero(~(at_zero <= 0.0))
     # The latest point, the one across the root from it, and the one before; zero and upper begin.
     # Rounding may leave upper itself a hair short, so it is taken at its word.
     at_upper = np.minimum(excess(rows, upper[rows]), 0.0)
@@ -69,7 +70,7 @@ def smallest_enough(excess: Excess, upper: Floats) -> Floats:
         rows, points, values = rows[going], points[:, going], values[:, going]
         least_share = 0.5 * allowed[going] / width[going]
         share = np.clip(_next_share(points, values), least_share, 1.0 - least_share)
-    raise ArithmeticError("a function that should fall does not")
+    raise ArithmeticError("a function that should be continuous jumps at zero")
 
 
 def _narrowed(
@@ -77,7 +78,7 @@ def _narrowed(
 ) -> tuple[Floats, Floats]:
     latest = points[0] + share * (points[1] - points[0])
     found = excess(rows, latest)
-    same_side = (found > 0.0) == (values[0] > 0.0)
+    same_side = (found <= 0.0) == (values[0] <= 0.0)
     across, before = np.where(same_side, points[[1, 0]], points[:2])
     value_across, value_before = np.where(same_side, values[[1, 0]], values[:2])
     return np.stack([latest, across, before]), np.stack([found, value_across, value_before])
