@@ -863,13 +863,13 @@ def _create_access() -> None:
     op.create_table(
         "installation",
         sa.Column("id", Text, nullable=False),
-        sa.Column("only", Whole, nullable=False),
+        sa.Column("singleton", Whole, nullable=False),
         sa.Column("lineage", Text, nullable=False),
         sa.Column("secret", Bytes, nullable=False),
         sa.Column("method_version", Text, nullable=False),
         sa.Column("created_at", Instant, nullable=False),
         sa.PrimaryKeyConstraint("id", name=op.f("pk_installation")),
-        sa.UniqueConstraint("only", name=op.f("uq_installation_only")),
-        sa.CheckConstraint("only = 1", name=op.f("ck_installation_only_one")),
+        sa.UniqueConstraint("singleton", name=op.f("uq_installation_singleton")),
+        sa.CheckConstraint("singleton = 1", name=op.f("ck_installation_one_row")),
         sqlite_strict=True,
     )

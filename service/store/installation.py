@@ -27,7 +27,7 @@ class Installation:
     created_at: datetime
 
 
-_COLUMNS = [column for column in INSTALLATION.c if column.name != "only"]
+_COLUMNS = [column for column in INSTALLATION.c if column.name != "singleton"]
 
 
 def installation_of(scope: Scope, connection: Connection) -> Installation | None:
@@ -51,7 +51,7 @@ def ensure_installation(session: WriteSession, method_version: str = "") -> Inst
         created_at=session.moment,
     )
     # Two replicas may start at once: one row goes in, and both return that one.
-    insert_missing(session.connection, INSTALLATION, [asdict(new) | {"only": 1}])
+    insert_missing(session.connection, INSTALLATION, [asdict(new) | {"singleton": 1}])
     return installation_of(EVERYTHING, session.connection) or new
 
 

@@ -36,9 +36,7 @@ class RoomState:
 _STATE_COLUMNS = [ROOM_STATE.c[name] for name in RoomState.__slots__]
 
 
-def room_states(
-    scope: Scope, connection: Connection, room_ids: Iterable[str]
-) -> list[RoomState]:
+def room_states(scope: Scope, connection: Connection, room_ids: Iterable[str]) -> list[RoomState]:
     """Return what was last said of rooms; those never judged are left out."""
     found: list[RoomState] = []
     for some in in_parts(room_ids):

@@ -55,13 +55,13 @@ class Installation(Base):
 
     __tablename__ = "installation"
     __table_args__ = (
-        UniqueConstraint("only"),
-        CheckConstraint("only = 1", name="only_one"),
+        UniqueConstraint("singleton"),
+        CheckConstraint("singleton = 1", name="one_row"),
         {"sqlite_strict": True},
     )
 
     id: Mapped[RecordId] = mapped_column(primary_key=True)
-    only: Mapped[int]
+    singleton: Mapped[int]
     lineage: Mapped[str]
     secret: Mapped[bytes]
     method_version: Mapped[str]

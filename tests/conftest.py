@@ -1,0 +1,88 @@
+"""What all tests can ask for: databases of both kinds, a clock that stands still, a writer."""
+
+import shutil
+from datetime import UTC, datetime
+
+import pytest
+
+from service.clock import FixedClock
+from service.store.engine import Database
+from service.store.memory import StatusMemory
+from service.store.migrate import upgrade
+from service.store.writer import Writer
+from tests.databases import TEMPLATE, cluster
+
+MOMENT = datetime(2027, 3, 1, 8, tzinfo=UTC)
+
+
+@pytest.fixture(scope="session")
+def postgresql_cluster():
+    """A server of our own; one a worker, started by the first test that needs it."""
+    with cluster() as running:
+        yield running
+
+
+@pytest.fixture(scope="session")
+def migrated_sqlite_file(tmp_path_factory):
+    """An SQLite file with all tables and nothing in them."""
+    file = tmp_path_factory.mktemp("migrated") / "migrated.sqlite"
+    upgrade(f"sqlite:///{file}")
+    return file
+
+
+@pytest.fixture(params=["sqlite", pytest.param("postgresql", marks=pytest.mark.postgresql)])
+def database_url(request, tmp_path):
+    """The address of a migrated database of its own, one of each kind."""
+    if request.param == "sqlite":
+        file = tmp_path / "rimeward.sqlite"
+        shutil.copy(request.getfixturevalue("migrated_sqlite_file"), file)
+        yield f"sqlite:///{file}"
+    else:
+        running = request.getfixturevalue("postgresql_cluster")
+        with running.copy_of(TEMPLATE) as url:
+            yield url
+
+
+@pytest.fixture(params=["sqlite", pytest.param("postgresql", marks=pytest.mark.postgresql)])
+def empty_database_url(request, tmp_path):
+    """The address of a database without tables, one of each kind."""
+    if request.param == "sqlite":
+        yield f"sqlite:///{tmp_path / 'empty.sqlite'}"
+    else:
+        running = request.getfixturevalue("postgresql_cluster")
+        with running.copy_of("template0") as url:
+            yield url
+
+
+@pytest.fixture
+def sqlite_url(tmp_path, migrated_sqlite_file):
+    """The address of a migrated SQLite file of its own, where one database is enough."""
+    file = tmp_path / "rimeward.sqlite"
+    shutil.copy(migrated_sqlite_file, file)
+    return f"sqlite:///{file}"
+
+
+@pytest.fixture
+def database(database_url):
+    """An open database."""
+    with Database(database_url) as opened:
+        yield opened
+
+
+@pytest.fixture
+def clock():
+    """A clock that stands still."""
+    return FixedClock(MOMENT)
+
+
+@pytest.fixture
+def memory():
+    """The memory of stored answers."""
+    return StatusMemory(1_000_000)
+
+
+@pytest.fixture
+def writer(database, clock, memory):
+    """The writer of the open database."""
+    with Writer(database, clock, memory) as running:
+        yield running
