@@ -31,7 +31,8 @@ class UnitAir:
 
     never_measured: Mask
     measurement_holds: Mask
-    flow: Floats  # of the unit by its records, the room's share of it and outdoor air only [m3/s]
+    whole_flow: Floats  # of the unit by its records [m3/s]
+    flow: Floats  # the room's share of it, outdoor air only [m3/s]
     mixing_factor: Floats
     runs: Mask
 
@@ -75,6 +76,7 @@ def _unit_air(given: Columns, at: np.datetime64) -> UnitAir:
     return UnitAir(
         never_measured=never,
         measurement_holds=holds,
+        whole_flow=flow,
         flow=flow * outdoor * units.share,
         mixing_factor=known(units.mixing_factor, given.bases.mixing_factor[units.room]),
         runs=units.state == _RUNNING,

@@ -245,6 +245,12 @@ def members(room: Integers, index: Integers, count: int) -> tuple[Integers, Inte
     return within + np.repeat(starts[index], wanted), asked
 
 
+def all_of(*conditions: Mask) -> Mask:
+    """Tell where every condition holds."""
+    held: Mask = np.logical_and.reduce(conditions)
+    return held
+
+
 _Table = TypeVar("_Table", Rooms, Bases, Vessels, Units, Detectors)
 
 

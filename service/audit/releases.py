@@ -158,8 +158,8 @@ def largest_vessel(given: Columns, found: Sources, code: int, hazard: Hazard) ->
     order = np.lexsort((first, -diluting, fluid, room))
     leading = np.ones(order.size, dtype=np.bool_)
     leading[1:] = (np.diff(room[order]) != 0) | (np.diff(fluid[order]) != 0)
+    # In an order that no amount can change, so that rooms with other amounts line up.
     chosen = order[leading]
-    chosen = chosen[np.lexsort((first[chosen], -diluting[chosen], room[chosen]))]
     row_of_group = np.full(groups.size, -1)
     row_of_group[chosen] = np.arange(chosen.size)
     kept = np.flatnonzero(row_of_group[group] >= 0)

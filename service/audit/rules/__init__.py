@@ -1,0 +1,1 @@
+"""What is looked for in rooms: one module a family of rules."""

@@ -1,0 +1,153 @@
+"""What a rule is, and the tables that rules look at."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from enum import StrEnum
+from typing import Any, Protocol
+
+import numpy as np
+
+from service.audit.assumptions import ASSUMPTIONS, Assumptions
+from service.audit.columns import Moments
+from service.audit.evaluation import Evaluation
+from service.audit.inputs import Reference, RoomValues
+from service.physics.arrays import Floats, Integers, Mask
+
+
+class Subject(StrEnum):
+    """Which table a rule judges, row by row."""
+
+    CASES = "cases"
+    ROOMS = "rooms"
+    DETECTORS = "detectors"
+    ASSUMED = "assumed"  # a row a field that was assumed
+    GIVEN = "given"  # every room asked for, also those that cannot be computed
+
+
+class Direction(StrEnum):
+    """Which way a measure gets worse."""
+
+    LOWER = "lower"
+    HIGHER = "higher"
+
+
+@dataclass(frozen=True, slots=True)
+class Judged:
+    """Arrays of one length, the rows of the table."""
+
+    broken: Mask  # not-a-number is broken
+    measure: Floats  # the number that getting worse is measured by; not-a-number: none
+    limit: Floats
+    consequence: Integers  # index in SEVERITIES
+    turns_at: Moments  # next moment at which this answer changes by itself; not-a-time: never
+
+
+@dataclass(frozen=True, slots=True)
+class Said:
+    """What is said of a broken rule."""
+
+    statement: str
+    remedy: str
+    evidence: Mapping[str, Any]
+
+
+@dataclass(frozen=True, slots=True)
+class Tables:
+    """Everything that rules look at; ``sound`` are the rooms that are rows of the cases."""
+
+    rooms: Sequence[RoomValues]  # as asked for
+    failed: Sequence[str | None]  # by the rooms as asked for
+    sound: Integers  # position in rooms of each row of the columns
+    cases: Evaluation
+    assumed: Assumptions
+    decides: Mask  # by assumption
+
+    def room(self, row: int) -> RoomValues:
+        """The room of a row of the columns."""
+        return self.rooms[int(self.sound[row])]
+
+
+class Rule(Protocol):
+    """What is looked for in a table, and how bad it is where it is found."""
+
+    @property
+    def slug(self) -> str:
+        """Public name, never reused; the family stands before the stroke."""
+
+    @property
+    def subject(self) -> Subject:
+        """The table judged."""
+
+    @property
+    def gas(self) -> str | None:
+        """The gas judged."""
+
+    @property
+    def worse_is(self) -> Direction:
+        """Which way the measure gets worse."""
+
+    @property
+    def method(self) -> str:
+        """Slug of the method."""
+
+    @property
+    def source(self) -> str:
+        """Where the limit comes from."""
+
+    def judge(self, tables: Tables, at: np.datetime64) -> Judged:
+        """Judge every row of the table."""
+
+    def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
+        """Say what is wrong with one subject; the worst of its rows comes first."""
+
+
+def family(rule: Rule) -> str:
+    """The family of a rule."""
+    return rule.slug.split("/")[0]
+
+
+def rooms_of(tables: Tables, subject: Subject) -> Integers:
+    """Position in the rooms asked for, for each row of a table."""
+    table = tables.cases.table
+    if subject is Subject.GIVEN:
+        return np.arange(len(tables.rooms))
+    rows = {
+        Subject.CASES: table.room,
+        Subject.ROOMS: np.arange(table.given.count),
+        Subject.DETECTORS: table.given.detectors.room,
+        Subject.ASSUMED: tables.assumed.room,
+    }[subject]
+    return tables.sound[rows]
+
+
+def record_of(tables: Tables, subject: Subject, row: int) -> Reference:
+    """The record that a finding on a row is about."""
+    table = tables.cases.table
+    if subject is Subject.GIVEN:
+        return tables.rooms[row].record
+    if subject is Subject.DETECTORS:
+        return detector_record(tables, row)
+    if subject is Subject.ASSUMED:
+        return _assumed_record(tables, row)
+    return tables.room(int(table.room[row]) if subject is Subject.CASES else row).record
+
+
+def detector_record(tables: Tables, row: int) -> Reference:
+    """The record of a row of the detectors."""
+    detectors = tables.cases.table.given.detectors
+    return tables.room(int(detectors.room[row])).detectors[int(detectors.source[row])].record
+
+
+def _assumed_record(tables: Tables, place: int) -> Reference:
+    assumed, given = tables.assumed, tables.cases.table.given
+    room, row = tables.room(int(assumed.room[place])), int(assumed.row[place])
+    kind = ASSUMPTIONS[int(assumed.code[place])].record
+    if kind == "vessel":
+        return room.vessels[int(given.vessels.source[row])].record
+    if kind == "ventilation-unit":
+        return room.units[int(given.units.source[row])].record
+    if kind == "detector":
+        return room.detectors[int(given.detectors.source[row])].record
+    return room.site if kind == "site" else room.record

@@ -1,0 +1,217 @@
+"""Which safeguards hold in each case, and whether people are out in time (judging 4 and 6)."""
+
+from dataclasses import dataclass
+from typing import Final
+
+import numpy as np
+
+from service.audit.air import AIRFLOWS, LOST, PROVEN
+from service.audit.cases import CaseTable
+from service.audit.columns import (
+    DETECTOR_STATES,
+    PLACES,
+    ROOM_KINDS,
+    SETTLES,
+    UNKNOWN,
+    Columns,
+    members,
+)
+from service.audit.conditions import Conditions, known
+from service.audit.hazards import HAZARDS
+from service.audit.solve import Results, proven_to_hold
+from service.physics.arrays import Floats, Integers, Mask, rounded
+from service.physics.constants import OXYGEN_IN_AIR
+from service.physics.detector import alarm_time
+from service.physics.ventilation import flow_to_restore
+
+OXYGEN_GAS: Final = 0  # row of the gases
+
+# Heights at which a detector gives first warning, and where it reads what people breathe. [m]
+# Common practice, no source.
+LOW_BAND: Final = (0.2, 1.0)
+BELOW_CEILING: Final = 0.5
+BREATHING_BAND: Final = (0.9, 1.6)
+
+# Response of a detector of which none is recorded. [s]  Common practice, no source.
+UNKNOWN_T90: Final = 30.0
+
+_IN_SERVICE = DETECTOR_STATES.index("in-service")
+_ENTRANCE = PLACES.index("entrance")
+_LOW, _HIGH, _METHANE = range(len(SETTLES))
+_SEALED = [ROOM_KINDS.index(kind) for kind in ("lift", "vehicle")]
+_PIT = ROOM_KINDS.index("pit")
+
+
+@dataclass(frozen=True, slots=True)
+class Detection:
+    """One row a detector, whatever the case."""
+
+    calibrated: Mask
+    silenced: Mask
+    works: Mask  # in service, in calibration, not silenced, inside
+    warns_outside: Mask
+    is_low: Mask  # hangs where cold heavy gas is met first
+    is_high: Mask  # hangs where light gas is met first
+    at_breathing_height: Mask
+
+
+@dataclass(frozen=True, slots=True)
+class Safeguards:
+    """One row a case."""
+
+    detectors: Detection
+    detection: Mask
+    ventilation: Mask
+    nobody_inside: Mask
+    alone_suffices: Mask  # nobody inside counts as all
+    nobody_counts: Mask  # a kind of room where nobody inside is a safeguard
+    alarm: Floats  # [s] to the first alarm; not-a-number where there is none
+    margin: Floats  # [s] between being out and the second mark
+    late: Mask  # the second mark comes before people are out
+    needs_low: Mask
+    needs_high: Mask
+
+
+def detection(given: Columns, room: Conditions, at: np.datetime64) -> Detection:
+    """Judge each detector by its own records."""
+    detectors = given.detectors
+    calibrated = detectors.calibration_due > at
+    silenced = detectors.silenced_since <= at
+    height = detectors.height
+    ceiling = room.height[detectors.room]
+    return Detection(
+        calibrated=calibrated,
+        silenced=silenced,
+        works=(detectors.state == _IN_SERVICE)
+        & calibrated
+        & ~silenced
+        & (detectors.placed != _ENTRANCE),
+        warns_outside=(detectors.heard_outside == 1) | (detectors.display_outside == 1),
+        is_low=(height >= LOW_BAND[0]) & (height <= LOW_BAND[1]),
+        is_high=np.abs(ceiling - height) <= BELOW_CEILING,
+        at_breathing_height=(height >= BREATHING_BAND[0]) & (height <= BREATHING_BAND[1]),
+    )
+
+
+def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safeguards:
+    """Tell which safeguards hold in each case."""
+    found = detection(table.given, table.conditions, at)
+    needs_low, needs_high = _heights_needed(table)
+    second = _time_to_second(table, results)
+    case, detector, alarm = _alarms(table, results, found, needs_low, needs_high)
+    first = _first(alarm, case, table.size)
+    out_after = table.conditions.out_after_alarm[table.room]
+    kind = table.given.rooms.kind[table.room]
+    alone = table.given.rooms.unaccompanied[table.room] == 1
+    in_time = np.isnan(second[case]) | (alarm + out_after[case] <= second[case])
+    warns = found.warns_outside[detector] & ~np.isnan(alarm) & (table.at_once[case] | in_time)
+    has_low = _any(warns & found.is_low[detector], case, table.size)
+    has_high = _any(warns & found.is_high[detector], case, table.size)
+    # A comparison with not-a-number is false: without an alarm people are not out.
+    out = first + out_after <= second
+    return Safeguards(
+        detectors=found,
+        detection=(has_low | ~needs_low) & (has_high | ~needs_high) & (needs_low | needs_high),
+        ventilation=_ventilation(table, results),
+        nobody_inside=alone & np.isin(kind, [*_SEALED, _PIT]),
+        alone_suffices=alone & np.isin(kind, _SEALED),
+        nobody_counts=np.isin(kind, [*_SEALED, _PIT]),
+        alarm=rounded(first),
+        margin=rounded(second - first - out_after),
+        late=~table.at_once & ~np.isnan(second) & ~out,
+        needs_low=needs_low,
+        needs_high=needs_high,
+    )
+
+
+def gas_heights(given: Columns, fluid: Integers) -> tuple[Mask, Mask]:
+    """Tell whether a gas must be met low, and whether at the ceiling; one unknown is heavy."""
+    settles = np.full(fluid.shape, _LOW)
+    named = fluid != UNKNOWN
+    settles[named] = given.fluids.settles[fluid[named]]
+    return np.isin(settles, (_LOW, _METHANE)), np.isin(settles, (_HIGH, _METHANE))
+
+
+def _heights_needed(table: CaseTable) -> tuple[Mask, Mask]:
+    low, high = gas_heights(table.given, table.sources.fluid[table.member_source])
+    rows = table.member_row
+    return _any(low, rows, table.size), _any(high, rows, table.size)
+
+
+def _time_to_second(table: CaseTable, results: Results) -> Floats:
+    """Time to the mark that people must be out by; on high sites between first and third."""
+    same = table.marks[:, 1] == table.marks[:, 0]
+    level = np.where(same, 0.5 * (table.marks[:, 0] + table.marks[:, 2]), table.marks[:, 1])
+    reached = results.course.first_time_above(level)
+    return np.where(results.level > level, reached, np.nan)
+
+
+def _alarms(
+    table: CaseTable, results: Results, found: Detection, needs_low: Mask, needs_high: Mask
+) -> tuple[Integers, Integers, Floats]:
+    """Time of alarm for each case and detector that works at a height where the gas goes."""
+    given = table.given
+    detector, case = members(given.detectors.room, table.room, given.count)
+    placed = (found.is_low[detector] & needs_low[case]) | (
+        found.is_high[detector] & needs_high[case]
+    )
+    powered = (table.airflow[case] != AIRFLOWS.index(LOST)) | (
+        given.detectors.power_backed[detector] == 1
+    )
+    right = given.detectors.gas[detector] == OXYGEN_GAS
+    # Only a case that passes a mark has anything to be warned of.
+    kept = found.works[detector] & placed & powered & right & (results.mark[case] > 0)
+    case, detector = case[kept], detector[kept]
+    level = _alarm_level(table, case, detector)
+    set_to = ~np.isnan(level)
+    case, detector, level = case[set_to], detector[set_to], level[set_to]
+    alarm = alarm_time(
+        results.course,
+        case,
+        level,
+        t90=known(given.detectors.t90[detector], UNKNOWN_T90),
+        delay=known(given.detectors.delay[detector], 0.0),
+    )
+    return case, detector, alarm
+
+
+def _alarm_level(table: CaseTable, case: Integers, detector: Integers) -> Floats:
+    """Lowest level at which a detector alarms for the hazard; not-a-number where it does not.
+
+    Without any recorded alarm an oxygen detector is taken to warn late, at the second mark, and of
+    enrichment not at all.
+    """
+    alarms = table.given.detectors.alarms[detector]
+    sign = np.array([hazard.sign for hazard in HAZARDS])[table.hazard[case]]
+    levels = sign[:, np.newaxis] * (OXYGEN_IN_AIR - alarms) / OXYGEN_IN_AIR
+    counted = np.where(levels > 0.0, levels, np.inf)
+    lowest = counted.min(axis=1, initial=np.inf)
+    unrecorded = np.isnan(alarms).all(axis=1) & (sign > 0.0)
+    set_to = np.where(unrecorded, table.marks[case, 1], lowest)
+    return np.where(np.isinf(set_to), np.nan, set_to)
+
+
+def _first(times: Floats, case: Integers, size: int) -> Floats:
+    first = np.full(size, np.inf)
+    np.minimum.at(first, case, known(times, np.inf))
+    return np.where(np.isinf(first), np.nan, first)
+
+
+def _any(holds: Mask, case: Integers, size: int) -> Mask:
+    found = np.zeros(size, dtype=np.bool_)
+    found[case[holds]] = True
+    return found
+
+
+def _ventilation(table: CaseTable, results: Results) -> Mask:
+    """Measured in date, holds what lasts, and brings the room back in time."""
+    proven = AIRFLOWS.index(PROVEN)
+    flow = np.maximum(table.air.supply[proven], table.air.exhaust[proven])[table.room]
+    wanted = flow_to_restore(
+        results.level,
+        table.marks[:, 0],
+        volume=table.volume,
+        within=table.given.bases.restore[table.room],
+    )
+    holds: Mask = proven_to_hold(table, results)[table.room] & (flow > 0.0) & (flow >= wanted)
+    return holds
