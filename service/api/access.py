@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
+from functools import cache
 from types import MappingProxyType
 from typing import Final
 
@@ -16,7 +17,9 @@ from fastapi.params import Depends as Dependency
 from fastapi.routing import APIRoute, iter_route_contexts
 from starlette.routing import BaseRoute
 
-from service.errors import NotAllowed
+from service.api.keyring import key_text
+from service.api.service import service_of
+from service.errors import FieldsRefused, NotAllowed
 from service.store.scope import Scope
 
 READER: Final = "reader"
@@ -52,6 +55,8 @@ ROLES: Final[Mapping[str, frozenset[str]]] = MappingProxyType(
 )
 """The operations and the roles that may do them; what is not here nobody may do."""
 
+LABEL: Final = "label."
+LONGEST_PARAMETER: Final = 100
 _REFERENCE_KINDS: Final = frozenset({"basis", "fluid"})
 
 
@@ -81,9 +86,45 @@ class Allowed:
 
     async def __call__(self, request: Request) -> Caller:
         """Find out who asks, or refuse."""
-        caller: Caller = await request.app.state.service.keys.caller_of(request.headers)
+        scope = await service_of(request).keys.scope_of(key_text(request.headers))
+        caller = Caller(scope)
         caller.require(self.operation)
+        request.state.caller = caller
+        refuse_unknown_parameters(request)
         return caller
+
+
+def caller_of(request: Request) -> Caller:
+    """Give who asks, as the route's operation has found out."""
+    caller: Caller = request.state.caller
+    return caller
+
+
+def refuse_unknown_parameters(request: Request) -> None:
+    """Refuse a query parameter that the route does not know, and one that is sent twice.
+
+    A filter that was misspelt and passed over would answer with everything.
+    """
+    sent = [name for name, _ in request.query_params.multi_items()]
+    known, labels = _known_parameters(request.scope["route"])
+    for name in sent:
+        if name not in known and not (labels and name.startswith(LABEL)):
+            shown = name[:LONGEST_PARAMETER]
+            raise FieldsRefused.parameter(shown, "unknown-parameter", "There is no such parameter.")
+        if sent.count(name) > 1:
+            raise FieldsRefused.parameter(name, "sent-twice", "Send this parameter once.")
+
+
+@cache
+def _known_parameters(route: APIRoute) -> tuple[frozenset[str], bool]:
+    names: set[str] = set()
+    waiting, labels = [route.dependant], False
+    while waiting:
+        dependant = waiting.pop()
+        names.update(field.alias for field in dependant.query_params)
+        labels = labels or getattr(dependant.call, "takes_labels", False)
+        waiting.extend(dependant.dependencies)
+    return frozenset(names), labels
 
 
 class Open:

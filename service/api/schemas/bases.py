@@ -11,10 +11,10 @@ from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
     Answer,
-    Consequences,
     OfSite,
     RecordPatch,
     SharedRecordRead,
+    Written,
     read_of,
 )
 
@@ -71,5 +71,5 @@ class BasisRead(SharedRecordRead):
     )
 
 
-class BasisWritten(BasisRead, Consequences):
+class BasisWritten(BasisRead, Written):
     """A basis after a write, and what that did."""

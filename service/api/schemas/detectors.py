@@ -19,11 +19,11 @@ from service.api.fields import (
 from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
-    Consequences,
     EveryDays,
     OfSite,
     RecordPatch,
     RecordRead,
+    Written,
     read_of,
 )
 
@@ -76,5 +76,5 @@ class DetectorRead(RecordRead):
     room_id: RecordIdText
 
 
-class DetectorWritten(DetectorRead, Consequences):
+class DetectorWritten(DetectorRead, Written):
     """A detector after a write, and what that did."""

@@ -11,10 +11,10 @@ from service.api.fields import Fraction, Quantity, ShortText, patch_of
 from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
-    Consequences,
     OfSite,
     RecordPatch,
     SharedRecordRead,
+    Written,
     read_of,
 )
 
@@ -63,5 +63,5 @@ class FluidRead(SharedRecordRead):
     sources: dict[str, str]
 
 
-class FluidWritten(FluidRead, Consequences):
+class FluidWritten(FluidRead, Written):
     """A fluid after a write, and what that did."""

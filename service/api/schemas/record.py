@@ -205,13 +205,18 @@ class ReadAsRead(Answer):
 
 
 class Consequences(Answer):
-    """What a write answers besides: where it stands in the site's history, and what it did."""
+    """What a write did, and where it stands in the site's history."""
 
     position: int = Field(description="The site's position after the change.")
     recalculating: bool = Field(
         description="More rooms are touched than one change takes; they follow shortly."
     )
     effects: list[EffectRead]
+
+
+class Written(Consequences):
+    """What a write answers beside the record."""
+
     read_as: list[ReadAsRead] = Field(description="Quantities that were sent with a unit.")
 
 

@@ -20,10 +20,10 @@ from service.api.fields import (
 from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
-    Consequences,
     OfSite,
     RecordPatch,
     RecordRead,
+    Written,
     read_of,
 )
 
@@ -90,5 +90,5 @@ class RoomRead(RecordRead):
     volume_derived: bool = Field(description="The volume was made of floor area and height.")
 
 
-class RoomWritten(RoomRead, Consequences):
+class RoomWritten(RoomRead, Written):
     """A room after a write, and what that did."""

@@ -11,10 +11,10 @@ from service import units
 from service.api.fields import Elevation, Quantity, RecordIdText, ShortText, Tag, patch_of, refused
 from service.api.schemas.record import (
     WORDED_ANEW,
-    Consequences,
     RecordCreate,
     RecordPatch,
     RecordRead,
+    Written,
     read_of,
 )
 
@@ -67,5 +67,5 @@ class SiteRead(RecordRead):
     basis: str
 
 
-class SiteWritten(SiteRead, Consequences):
+class SiteWritten(SiteRead, Written):
     """A site after a write, and what that did."""

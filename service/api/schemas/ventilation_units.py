@@ -20,11 +20,11 @@ from service.api.fields import (
 from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
-    Consequences,
     EveryDays,
     OfSite,
     RecordPatch,
     RecordRead,
+    Written,
     read_of,
 )
 
@@ -88,5 +88,5 @@ class VentilationUnitRead(RecordRead):
     serves: list[ServedRead]
 
 
-class VentilationUnitWritten(VentilationUnitRead, Consequences):
+class VentilationUnitWritten(VentilationUnitRead, Written):
     """A ventilation unit after a write, and what that did."""

@@ -23,10 +23,10 @@ from service.api.fields import (
 from service.api.schemas.record import (
     NEVER_NULL,
     WORDED_ANEW,
-    Consequences,
     OfSite,
     RecordPatch,
     RecordRead,
+    Written,
     read_of,
 )
 
@@ -109,5 +109,5 @@ class VesselRead(RecordRead):
     fluid: str
 
 
-class VesselWritten(VesselRead, Consequences):
+class VesselWritten(VesselRead, Written):
     """A vessel after a write, and what that did."""

@@ -1,0 +1,99 @@
+"""The schemas of a room's status and assessment; more members may be added to either."""
+
+from __future__ import annotations
+
+from typing import Any, Literal
+
+from pydantic import ConfigDict, Field
+
+from service.api.fields import Instant, RecordIdText
+from service.api.schemas.findings import FindingRead
+from service.api.schemas.record import Answer
+
+Standing = Literal["in-order", "attention", "action", "stop"]
+Currency = Literal["current", "recalculating", "behind", "failed"]
+
+
+class Growing(Answer):
+    """An answer to which members may be added."""
+
+    model_config = ConfigDict(extra="allow")
+
+
+class WorstRead(Growing):
+    """A case in few words; null stands for never, or for no such number."""
+
+    release: str
+    airflow: str
+    hazard: str
+    fluid: str | None
+    fluids: list[str]
+    vessel_ids: list[RecordIdText]
+    oxygen_pct: float
+    oxygen_kpa: float
+    at_s: float
+    to_deficient_s: float | None
+    to_danger_s: float | None
+    to_critical_s: float | None
+    recovered_s: float | None
+
+
+class VentilationRead(Growing):
+    """The air of a room, as a fan moves it and as it counts."""
+
+    outdoor_air_m3_h: float
+    credited_m3_h: float
+    air_changes_per_h: float
+    sustained_release_m3_h: float
+    required_m3_h: float | None
+    shortfall_m3_h: float | None
+    restore_m3_h: float | None
+    deciding_case: str | None
+
+
+class StatusBasis(Growing):
+    """What a status and an assessment have in common."""
+
+    room_id: RecordIdText
+    tag: str
+    name: str | None
+    site_id: RecordIdText
+    position: int = Field(description="The site's position from which this holds.")
+    assessed_at: Instant
+    currency: Currency = Field(
+        description="current; recalculating: the basis, the method or an import is newer; behind: "
+        "the clock has passed the moment at which it changes by itself; failed: it cannot be "
+        "computed."
+    )
+    basis: str
+    judges: str
+    state: str
+    standing: Standing
+    worst: WorstRead | None = Field(description="The case that decides; null for an empty room.")
+    highest_oxygen: WorstRead | None
+    ventilation: VentilationRead | None
+    turns_at: Instant | None = Field(description="When this can change by itself.")
+    method_version: str
+    failed: str | None = Field(description="Why it cannot be computed.")
+
+
+class StatusRead(StatusBasis):
+    """What a room's records say, in few words: the poll."""
+
+    findings: dict[str, Any] = Field(description="How many of each severity; those accepted apart.")
+
+
+class AssessmentRead(StatusBasis):
+    """Everything that a room's records say, and what it rests on."""
+
+    findings_by_severity: dict[str, Any]
+    basis_id: RecordIdText
+    basis_revision: int
+    cause: str = Field(description="What made it be assessed.")
+    inputs: list[dict[str, Any]] = Field(description="The records read, in their revisions.")
+    assumed: list[dict[str, Any]] = Field(description="What was missing, and what was taken.")
+    figures: dict[str, Any]
+    cases: list[dict[str, Any]]
+    methods: list[str]
+    findings: list[FindingRead]
+    cautions: str

@@ -1,0 +1,213 @@
+"""The application: the routes, the layers in front of them, and what starts and stops with it."""
+
+from __future__ import annotations
+
+import asyncio
+import contextlib
+import logging
+import sqlite3
+from collections.abc import AsyncIterator, Callable
+from contextlib import asynccontextmanager
+from functools import partial
+from importlib.resources import as_file, files
+from pathlib import Path
+from typing import Any, Final
+
+from fastapi import FastAPI
+from starlette.concurrency import run_in_threadpool
+from starlette.staticfiles import StaticFiles
+from starlette.types import ASGIApp
+
+from service.api.access import check_declared
+from service.api.keyring import USE_NOTED_EVERY, KeyRing
+from service.api.limits import Limits
+from service.api.openapi import described
+from service.api.poll import PollLayer
+from service.api.problems import install_problem_handlers
+from service.api.routes import changes, docs, findings, health, keys, room_answers
+from service.api.routes.records import record_routers
+from service.api.service import Service
+from service.audit.assessment import METHOD_VERSION
+from service.changes.method import claim_method, is_newer
+from service.changes.shipped import ship
+from service.clock import Clock, SystemClock
+from service.errors import NewerDatabase
+from service.settings import Settings, SettingsError
+from service.store.engine import Database
+from service.store.heads import INSTALLATION, head_of, heads_of
+from service.store.installation import ensure_installation
+from service.store.memory import SiteHead, StatusMemory
+from service.store.migrate import CURRENT, NEWER
+from service.store.scope import EVERYTHING
+from service.store.session import WriteSession
+from service.store.urls import SQLITE
+from service.store.writer import Writer
+from service.work.clock import run_clock_once
+from service.work.context import ITSELF
+from service.work.repeat import repeat
+from service.work.sweep import run_sweep_once
+from service.work.upkeep import run_upkeep_once
+
+# The version of the API, which callers see; that of the distribution is another matter.
+API_VERSION: Final = "1.0"
+_NO_TELEMETRY: Final = {"tracing": False, "metrics": False, "logs": False}
+# Before this release two connections that write in the same instant can damage a file; the service
+# has one only, so that this is a hint and no fault.
+_SOUND_SQLITE: Final = (3, 51, 3)
+
+_log = logging.getLogger(__name__)
+
+
+class Application(FastAPI):
+    """The framework's application with our layers around it and our description of it."""
+
+    largest_body: int
+
+    def build_middleware_stack(self) -> ASGIApp:
+        """Put the poll layer before the framework, and the limits before both."""
+        return Limits(PollLayer(super().build_middleware_stack()), self.largest_body)
+
+    def openapi(self) -> dict[str, Any]:
+        """Describe the API; made once."""
+        if self.openapi_schema is None:
+            self.openapi_schema = described(self.routes, API_VERSION)
+        return self.openapi_schema
+
+
+def create_app(
+    settings: Settings, *, clock: Clock | None = None, database: Database | None = None
+) -> Application:
+    """Make the application; nothing is opened before it starts."""
+    app = Application(
+        title="Rimeward",
+        version=API_VERSION,
+        docs_url=None,
+        redoc_url=None,
+        telemetry=_NO_TELEMETRY,  # type: ignore[arg-type]
+        redirect_slashes=False,
+        lifespan=partial(_running, settings, clock or SystemClock(), database),
+    )
+    app.largest_body = settings.max_body_bytes
+    install_problem_handlers(app)
+    # By external id before what follows an id, so that no external id is taken for a path.
+    for router in (*record_routers(), room_answers.router, changes.router, findings.router):
+        app.include_router(router)
+    for router in (keys.router, health.router, docs.router):
+        app.include_router(router)
+    with as_file(files("service") / "static") as folder:
+        app.mount("/static", StaticFiles(directory=Path(folder)), name="static")
+    check_declared(app.routes)
+    return app
+
+
+@asynccontextmanager
+async def _running(
+    settings: Settings, clock: Clock, given: Database | None, app: FastAPI
+) -> AsyncIterator[None]:
+    database = Database(settings.database_url) if given is None else given
+    try:
+        await run_in_threadpool(check_schema, database)
+        service = await _started(settings, clock, database)
+        app.state.service = service
+        jobs = [asyncio.create_task(job) for job in _jobs(settings, service)]
+        try:
+            yield
+        finally:
+            await _stop(service, settings, jobs)
+    finally:
+        if given is None:
+            await run_in_threadpool(database.close)
+
+
+def check_schema(database: Database) -> None:
+    """Refuse a database whose tables are not those of this release."""
+    state = database.schema_state()
+    if state == NEWER:
+        raise NewerDatabase(
+            "The database was made by a newer release; run that one, or restore a copy."
+        )
+    if state != CURRENT:
+        raise SettingsError(
+            "The database has no tables, or those of an older release: run 'rimeward migrate'."
+        )
+
+
+async def _started(settings: Settings, clock: Clock, database: Database) -> Service:
+    memory = StatusMemory(settings.memory_bytes)
+    writer = Writer(database, clock, memory, rooms_per_change=settings.rooms_per_change)
+    try:
+        secret = await writer.run(prepare, ITSELF)
+        memory.tell_heads(await run_in_threadpool(database.read, _site_heads))
+    except BaseException:
+        await run_in_threadpool(writer.close)
+        raise
+    _tell_version(database)
+    return Service(
+        database=database,
+        clock=clock,
+        memory=memory,
+        writer=writer,
+        keys=KeyRing(database, memory, clock),
+        cursor_secret=secret,
+        idempotency_for=settings.idempotency_for,
+    )
+
+
+def prepare(session: WriteSession) -> bytes:
+    """Write what a database must hold to be served: its own row, the shipped records."""
+    method = claim_method(session)
+    if is_newer(method, METHOD_VERSION):
+        _log.warning("The database is computed by method %s; this process only reads.", method)
+    else:
+        ship(session)
+    return ensure_installation(session).secret
+
+
+def _site_heads(connection: Any) -> dict[str, SiteHead]:
+    heads = list(heads_of(EVERYTHING, connection))
+    installation = head_of(EVERYTHING, connection, INSTALLATION)
+    if installation is not None:
+        heads.append(installation)
+    return {head.site_id: SiteHead(head.position, head.wanted_position) for head in heads}
+
+
+def _tell_version(database: Database) -> None:
+    if database.dialect == SQLITE and sqlite3.sqlite_version_info < _SOUND_SQLITE:
+        _log.info(
+            "SQLite %s is older than 3.51.3; with one writer, as here, that is sound.",
+            sqlite3.sqlite_version,
+        )
+
+
+def _jobs(settings: Settings, service: Service) -> list[Any]:
+    writer, database, clock = service.writer, service.database, service.clock
+    wanted: list[tuple[str, Callable[[], Any], Any]] = [
+        ("clock", partial(run_clock_once, writer, database, clock), settings.clock_every),
+        (
+            "sweep",
+            partial(run_sweep_once, writer, database, settings.sweep_batch),
+            settings.sweep_every,
+        ),
+    ]
+    jobs = [repeat(name, once, every) for name, once, every in wanted if every]
+    if settings.clock_every:
+        jobs.append(repeat("upkeep", partial(_upkeep, settings, service), USE_NOTED_EVERY))
+    return jobs
+
+
+async def _upkeep(settings: Settings, service: Service) -> None:
+    await run_upkeep_once(service.writer, service.keys.used(), settings.idempotency_for)
+
+
+async def _stop(service: Service, settings: Settings, jobs: list[asyncio.Task[Any]]) -> None:
+    """Stop in order: nobody new, no more jobs, what waits is written, then the rest is closed."""
+    service.accepting = False
+    for job in jobs:
+        job.cancel()
+    with contextlib.suppress(asyncio.CancelledError):
+        await asyncio.gather(*jobs, return_exceptions=True)
+    try:
+        if jobs:
+            await _upkeep(settings, service)
+    finally:
+        await run_in_threadpool(service.writer.close)
