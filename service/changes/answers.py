@@ -82,9 +82,7 @@ def status_bytes(assessed: Assessed, position: int) -> bytes:
         "worst_oxygen_pct": assessed.worst_oxygen_pct,
         "worst": _worst(assessment),
         "highest_oxygen": _highest_oxygen(assessment),
-        "ventilation": None
-        if assessment.ventilation is None
-        else asdict(assessment.ventilation),
+        "ventilation": None if assessment.ventilation is None else asdict(assessment.ventilation),
         "findings": counts(assessed.findings),
         "turns_at": None if assessment.turns_at is None else text_of(assessment.turns_at),
         "method_version": assessment.method_version,

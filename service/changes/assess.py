@@ -82,6 +82,4 @@ def _matched(
     rested = {finding.id for finding in prior if finding.state in ("cleared", "accepted")}
     returned = frozenset(f.id for f in news if f.state == "open" and f.id in rested)
     failed = assessment.failed is not None
-    return Assessed(
-        room, assessment, tuple(news), after, returned, standing(after, failed=failed)
-    )
+    return Assessed(room, assessment, tuple(news), after, returned, standing(after, failed=failed))

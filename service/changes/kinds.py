@@ -149,4 +149,4 @@ def reaches_far(before: Record | None, after: Record | None) -> bool:
 
 def blank_fields(kind: str) -> dict[str, Any]:
     """Give every field of a kind, null where it has no default."""
-    return {name: None for name in field_names(kind)} | {"labels": {}} | dict(KINDS[kind].defaults)
+    return dict.fromkeys(field_names(kind)) | {"labels": {}} | dict(KINDS[kind].defaults)

@@ -15,9 +15,7 @@ Records = Mapping[str, Record]
 MOST_CONTENTS: Final = 1.2
 
 
-def derived_fields(
-    kind: str, fields: dict[str, Any], sent: Mapping[str, Any]
-) -> dict[str, Any]:
+def derived_fields(kind: str, fields: dict[str, Any], sent: Mapping[str, Any]) -> dict[str, Any]:
     """Fill in what follows from other fields: a room's volume from floor area and height."""
     if kind != "room":
         return fields
@@ -72,7 +70,9 @@ def _vessel_amounts(record: Record, records: Records) -> Iterator[FieldError]:
     fields = record.fields
     litres, kilograms = fields["capacity_l"], fields["capacity_kg"]
     if (litres is None) == (kilograms is None):
-        yield FieldError("/capacity_l", "missing", "Send 'capacity_l' or 'capacity_kg', one of them.")
+        yield FieldError(
+            "/capacity_l", "missing", "Send 'capacity_l' or 'capacity_kg', one of them."
+        )
         return
     used, other = ("l", "kg") if kilograms is None else ("kg", "l")
     if fields[f"contents_{other}"] is not None:

@@ -109,9 +109,7 @@ def carry_out(
     )
     outcome = Outcome(operation, after.pairs, assessed, before.prior, left_to_sweep)
     effects = replace(session, heads, outcome)
-    moved = {
-        place.head_id for place, pair in zip(places, after.pairs, strict=True) if pair.changed
-    }
+    moved = {place.head_id for place, pair in zip(places, after.pairs, strict=True) if pair.changed}
     positions = {
         site_id: head.position + (1 if site_id in moved else 0) for site_id, head in heads.items()
     }

@@ -1,4 +1,4 @@
-"""What a change leaves behind: records, versions, assessments, findings, events, one entry a site."""
+"""What a change leaves: records, versions, assessments, findings, events, an entry a site."""
 
 from __future__ import annotations
 
@@ -232,9 +232,7 @@ def _entry(
         reason=session.reason,
         wants=wants,
         records=[_record_line(pair) for pair in pairs],
-        assessments=[
-            {"room_id": one.room_id, "sha256": assessment_digest(one)} for one in stored
-        ],
+        assessments=[{"room_id": one.room_id, "sha256": assessment_digest(one)} for one in stored],
         findings=[
             {"id": row["id"], "number": row["number"], "sha256": finding_digest(row)}
             for row in news
@@ -291,9 +289,7 @@ def _events(
     prior: Mapping[str, Prior],
 ) -> list[StoredEvent]:
     told = [*_record_events(pairs), *_room_events(assessed, prior)]
-    return [
-        _event(session, site_id, position, number, *one) for number, one in enumerate(told)
-    ]
+    return [_event(session, site_id, position, number, *one) for number, one in enumerate(told)]
 
 
 _Told = tuple[str, str, dict[str, Any]]

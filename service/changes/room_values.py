@@ -91,9 +91,7 @@ def _room_values(records: Mapping[str, Record], placed: _Placed, room: Record) -
             _vessel_values(vessel, records[vessel.fields["fluid_id"]], count_every)
             for vessel in placed.vessels.get(room.id, ())
         ),
-        units=tuple(
-            _unit_values(unit, room.id, zone) for unit in placed.units.get(room.id, ())
-        ),
+        units=tuple(_unit_values(unit, room.id, zone) for unit in placed.units.get(room.id, ())),
         detectors=tuple(
             _detector_values(detector, zone) for detector in placed.detectors.get(room.id, ())
         ),

@@ -79,9 +79,7 @@ def verify(database: Database, scope: Scope = EVERYTHING, *, site_id: str | None
 class _Walk:
     """The walk along one site's chain."""
 
-    def __init__(
-        self, scope: Scope, connection: Connection, head: Head, report: Report
-    ) -> None:
+    def __init__(self, scope: Scope, connection: Connection, head: Head, report: Report) -> None:
         self._scope, self._connection = scope, connection
         self._head, self._report = head, report
         self._newest: dict[tuple[str, str], str | None] = {}
@@ -127,9 +125,7 @@ class _Walk:
     def _check_covered(self, entry: ChangeEntry) -> None:
         told = json.loads(entry.entry)
         self._check_versions(entry.position, told["records"])
-        stored = assessments_from(
-            self._scope, self._connection, self._head.site_id, entry.position
-        )
+        stored = assessments_from(self._scope, self._connection, self._head.site_id, entry.position)
         self._check_hashes(
             entry.position,
             "assessment of room",
@@ -146,7 +142,11 @@ class _Walk:
         self._check_hashes(
             position,
             "record version",
-            {(line["id"], line["revision"]): line["sha256"] for line in told if line["kind"] != "key"},
+            {
+                (line["id"], line["revision"]): line["sha256"]
+                for line in told
+                if line["kind"] != "key"
+            },
             {
                 (row.record_id, row.revision): None if row.body is None else digest(row.body)
                 for row in rows
@@ -157,9 +157,7 @@ class _Walk:
             self._newest[row.kind, row.record_id] = hashed
 
     def _check_findings(self, position: int, told: Sequence[Mapping[str, Any]]) -> None:
-        rows = findings_from(
-            self._scope, self._connection, self._head.site_id, position
-        )
+        rows = findings_from(self._scope, self._connection, self._head.site_id, position)
         self._report.findings += len(rows)
         found = {(row["id"], row["number"]): finding_digest(row) for row in rows}
         self._check_hashes(
