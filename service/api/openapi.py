@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Iterable, Mapping, Sequence
 from typing import Any, Final
 
@@ -11,7 +12,7 @@ from starlette.routing import BaseRoute
 
 from service.api.access import declared_operation
 from service.api.body import declare_bodies
-from service.api.problems import declare_problems
+from service.api.problems import PROBLEM_JSON, declare_problems
 from service.changes.cautions import CAUTIONS
 
 TITLE: Final = "Rimeward"
@@ -76,6 +77,7 @@ def described(routes: Sequence[BaseRoute], version: str) -> dict[str, Any]:
                 del operation["parameters"]
     for path in document["paths"].values():
         _without_own_validation_error(path)
+    _share_problems(document)
     return document
 
 
@@ -109,3 +111,23 @@ def _without_own_validation_error(path: dict[str, Any]) -> None:
     for operation in path.values():
         if "security" not in operation:
             operation.get("responses", {}).pop("422", None)
+
+
+def _share_problems(document: dict[str, Any]) -> None:
+    """Write each answer of a problem once, and refer to it: else most of the document is these."""
+    shared: dict[str, dict[str, Any]] = {}
+    names: dict[str, str] = {}
+    for path in document["paths"].values():
+        for operation in path.values():
+            for status, response in operation["responses"].items():
+                if status[:1] not in "45" or PROBLEM_JSON not in response.get("content", {}):
+                    continue
+                text = json.dumps(response, sort_keys=True)
+                name = names.setdefault(text, f"Problem{status}-{_nth(names, status)}")
+                shared[name] = response
+                operation["responses"][status] = {"$ref": f"#/components/responses/{name}"}
+    document["components"]["responses"] = shared
+
+
+def _nth(names: Mapping[str, str], status: str) -> int:
+    return 1 + sum(name.startswith(f"Problem{status}-") for name in names.values())

@@ -33,7 +33,7 @@ from service.api.routes.declared import (
     answering,
     not_modified,
 )
-from service.api.schemas.record import Answer, RecordCreate, Removed
+from service.api.schemas.record import Page, RecordCreate, Removed
 from service.changes.answers import rendered
 from service.changes.records import (
     Written,
@@ -69,11 +69,9 @@ def _add_reading(router: APIRouter, resource: Resource) -> None:
     asking = Asking(resource.filters, resource.sorts, USUAL_SORT)
     page = create_model(
         f"{resource.one}Page",
-        __base__=Answer,
-        __doc__="A page of a list.",
+        __base__=Page,
+        __doc__=f"A page of {words} records.",
         items=(list[resource.read], ...),  # type: ignore[name-defined]
-        next=(str | None, ...),
-        total=(int, None),
     )
 
     async def list_(listing: Annotated[Listing, Depends(asking)], read: Reader) -> Response:

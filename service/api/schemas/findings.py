@@ -7,7 +7,7 @@ from typing import Any, Literal
 from pydantic import Field
 
 from service.api.fields import Instant, RecordIdText
-from service.api.schemas.record import Answer
+from service.api.schemas.record import Answer, Page
 
 Severity = Literal["critical", "major", "minor", "observation"]
 FindingState = Literal["open", "acknowledged", "accepted", "cleared"]
@@ -53,10 +53,8 @@ class FindingRead(Answer):
     key_id: str | None
 
 
-class FindingPage(Answer):
+class FindingPage(Page):
     """A page of findings."""
 
     items: list[FindingRead]
-    next: str | None
-    total: int = Field(default=0, description="Only where it was asked for.")
     cautions: str

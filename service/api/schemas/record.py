@@ -76,6 +76,15 @@ class Answer(BaseModel):
     )
 
 
+class Page(Answer):
+    """A page of a list."""
+
+    model_config = ConfigDict(json_schema_serialization_defaults_required=False)
+
+    next: str | None = Field(description="The cursor of the next page; null: this is the last.")
+    total: int | None = Field(default=None, description="Of all pages, where it was asked for.")
+
+
 class AnyRecordRead(Answer):
     """What is answered of a record of any kind; null stands for what is not known."""
 
