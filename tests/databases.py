@@ -40,7 +40,7 @@ class Cluster:
         """Give the address of a database that is a copy of another, for a block."""
         self.made += 1
         name = f"copy_{self.made}"
-        self.run(f"CREATE DATABASE {name} TEMPLATE {template}")
+        self.run(f"CREATE DATABASE {name} TEMPLATE {template} STRATEGY FILE_COPY")
         try:
             yield self.url(name)
         finally:

@@ -13,7 +13,7 @@ depends_on: str | Sequence[str] | None = None
 
 Text = sa.Text().with_variant(sa.Text(collation="C"), "postgresql")
 Document = Text
-Number: sa.Double[float] = sa.Double().with_variant(sa.REAL(), "sqlite")
+Number = sa.REAL().with_variant(postgresql.DOUBLE_PRECISION(), "postgresql")
 Whole = sa.BigInteger().with_variant(sa.Integer(), "sqlite")
 Flag = sa.Boolean().with_variant(sa.Integer(), "sqlite")
 Instant = sa.Text().with_variant(postgresql.TIMESTAMP(timezone=True), "postgresql")
