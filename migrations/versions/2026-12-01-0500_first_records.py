@@ -13,7 +13,7 @@ depends_on: str | Sequence[str] | None = None
 
 Text = sa.Text().with_variant(sa.Text(collation="C"), "postgresql")
 Document = Text
-Number = sa.REAL().with_variant(postgresql.DOUBLE_PRECISION(), "postgresql")
+Number: sa.REAL[float] = sa.REAL().with_variant(postgresql.DOUBLE_PRECISION(), "postgresql")
 Whole = sa.BigInteger().with_variant(sa.Integer(), "sqlite")
 Flag = sa.Boolean().with_variant(sa.Integer(), "sqlite")
 Instant = sa.Text().with_variant(postgresql.TIMESTAMP(timezone=True), "postgresql")
@@ -628,8 +628,8 @@ def _create_history() -> None:
         op.f("ix_change_wanted"),
         "change",
         ["site_id", "position"],
-        sqlite_where=sa.text("wants IS 1"),
-        postgresql_where=sa.text("wants IS true"),
+        sqlite_where=sa.text("wants = 1"),
+        postgresql_where=sa.text("wants = true"),
     )
     op.create_table(
         "record_version",

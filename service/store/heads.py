@@ -5,7 +5,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from typing import Any, Final
 
-from sqlalchemy import Connection, Row, Select, bindparam, func, select
+from sqlalchemy import Connection, Row, Select, bindparam, func, select, true
 
 from service.store.scope import Scope, within
 from service.store.tables.registry import CHANGE, HEAD
@@ -41,7 +41,7 @@ _WANTED = (
     select(func.max(CHANGE.c.position))
     .where(CHANGE.c.site_id == bindparam("site"))
     .where(CHANGE.c.position <= bindparam("most"))
-    .where(CHANGE.c.wants.is_(True))
+    .where(CHANGE.c.wants == true())
 )
 
 

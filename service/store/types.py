@@ -42,8 +42,7 @@ class Number(TypeDecorator[float]):
 
     def load_dialect_impl(self, dialect: Dialect) -> TypeEngine[Any]:
         """Use the name that a STRICT table takes on SQLite."""
-        own = sa.REAL() if _on_sqlite(dialect) else postgresql.DOUBLE_PRECISION()
-        return dialect.type_descriptor(own)
+        return dialect.type_descriptor(sa.REAL() if _on_sqlite(dialect) else sa.Double())
 
     def process_bind_param(self, value: float | None, dialect: Dialect) -> float | None:
         """Refuse NaN, which SQLite would keep as nothing, and infinity."""

@@ -25,12 +25,6 @@ def test_tables_are_strict_on_sqlite(table):
     assert "STRICT" in str(CreateTable(table).compile(dialect=sqlite.dialect()))
 
 
-def test_numbers_have_64_bits_on_postgresql():
-    dialect = postgresql.dialect()
-    assert Number().compile(dialect) == "DOUBLE PRECISION"
-    assert Whole().compile(dialect) == "BIGINT"
-
-
 @pytest.mark.parametrize("table", METADATA.sorted_tables, ids=lambda table: table.name)
 def test_every_constraint_has_a_name_of_its_own_that_postgresql_does_not_cut(table):
     prepared = postgresql.dialect().identifier_preparer

@@ -6,7 +6,7 @@ since what they tell of may be gone.
 
 from datetime import datetime
 
-from sqlalchemy import ForeignKey, ForeignKeyConstraint, Index, UniqueConstraint
+from sqlalchemy import ForeignKey, ForeignKeyConstraint, Index, UniqueConstraint, true
 from sqlalchemy.orm import Mapped, declared_attr, mapped_column
 
 from service.store.tables.row import Base, Json, RecordId, one_of
@@ -54,8 +54,8 @@ Index(
     "ix_change_wanted",
     Change.site_id,
     Change.position,
-    sqlite_where=Change.wants.is_(True),
-    postgresql_where=Change.wants.is_(True),
+    sqlite_where=Change.wants == true(),
+    postgresql_where=Change.wants == true(),
 )
 
 
