@@ -6,7 +6,7 @@ from numpy.typing import ArrayLike
 from service.physics.arrays import Floats, Integers, positive, quotient
 from service.physics.course import Course
 from service.physics.errors import OutOfRange
-from service.physics.relaxation import gained_share, relaxed
+from service.physics.relaxation import gained_share, kept_share, relaxed
 from service.physics.roots import smallest_enough
 
 
@@ -135,17 +135,22 @@ def _fraction_in(run: Course, segment: Integers, times: Floats) -> Floats:
 def _integral_to(run: Course, times: Floats) -> Floats:
     """Integral of the fraction from the start of the run, the last fraction held after its end."""
     lengths = np.diff(run.times, axis=1)
-    gained = gained_share(run.rates * lengths)
-    areas = lengths * (run.ends[:, :-1] * (1.0 - gained) + run.steady * gained)
+    areas = _area(run.ends[:, :-1], run.steady, run.rates, lengths)
     before = np.concatenate([np.zeros_like(run.times[:, :1]), np.cumsum(areas, axis=1)], axis=1)
     segment = _segment_at(run, times)
-    elapsed = _elapsed(run, segment, times)
-    gained = gained_share(np.take_along_axis(run.rates, segment, axis=1) * elapsed)
-    start = np.take_along_axis(run.ends, segment, axis=1)
-    steady = np.take_along_axis(run.steady, segment, axis=1)
-    within = elapsed * (start * (1.0 - gained) + steady * gained)
+    within = _area(
+        np.take_along_axis(run.ends, segment, axis=1),
+        np.take_along_axis(run.steady, segment, axis=1),
+        np.take_along_axis(run.rates, segment, axis=1),
+        _elapsed(run, segment, times),
+    )
     beyond = np.clip(times - run.times[:, -1:], 0.0, None) * run.ends[:, -1:]
     return np.take_along_axis(before, segment, axis=1) + within + beyond
+
+
+def _area(start: Floats, steady: Floats, rate: Floats, length: Floats) -> Floats:
+    turnovers = rate * length
+    return length * (start * kept_share(turnovers) + steady * gained_share(turnovers))
 
 
 def _turning_points(run: Course, joints: Floats, widths: Floats) -> Floats:

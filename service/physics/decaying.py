@@ -267,10 +267,11 @@ def _after_panel(
         return _decayed(turnover * (right - since) + before_right * _decayed(decay * since))
 
     half = (right - left) / 2.0
-    gained = np.zeros_like(deficit)
-    for node, weight in zip(_NODES, _WEIGHTS, strict=True):
-        moment = left + half * (1.0 + node)
-        gained = gained + weight * half * flow * _decayed(decay * moment) * left_share(moment)
+    # The nodes come before the rooms, so that a panel is one sweep over arrays.
+    beside = (-1,) + (1,) * deficit.ndim
+    moments = left + half * (1.0 + _NODES.reshape(beside))
+    arriving = flow * _decayed(decay * moments) * left_share(moments)
+    gained: Floats = half * np.sum(_WEIGHTS.reshape(beside) * arriving, axis=0)
     return deficit * left_share(left) + gained
 
 

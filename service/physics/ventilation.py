@@ -22,7 +22,7 @@ from service.physics.arrays import (
 from service.physics.constants import OXYGEN_IN_AIR
 from service.physics.course import Course, ends_of_segments
 from service.physics.errors import OutOfRange
-from service.physics.relaxation import gained_share, relaxed, time_between
+from service.physics.relaxation import gained_share, kept_share, relaxed, time_between
 from service.physics.roots import smallest_enough
 
 Direction: TypeAlias = Literal["rising", "falling"]
@@ -371,8 +371,8 @@ def mean_fraction(
     before = finite("start", start)
     steady = steady_fraction(release, supply, exhaust, dilution=dilution, start=before)
     rate = outflow(release, supply, exhaust) / positive("volume", volume)
-    gained = gained_share(rate * non_negative("duration", duration))
-    return before * (1.0 - gained) + steady * gained
+    turnovers = rate * non_negative("duration", duration)
+    return before * kept_share(turnovers) + steady * gained_share(turnovers)
 
 
 def time_to_fraction(

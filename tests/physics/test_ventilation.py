@@ -248,6 +248,12 @@ def test_nothing_flows_and_nothing_changes():
     assert steady_fraction(**still, start=0.3) == 0.3
 
 
+def test_the_mean_of_a_long_purge_keeps_its_figures():
+    """Closed: G0 V / (Q t), since all the gas has gone out."""
+    mean = mean_fraction(1e7, release=0.0, supply=1e3, exhaust=0.0, volume=1.0, start=0.5)
+    assert_allclose(mean, 0.5 / 1e10, rtol=1e-12)
+
+
 def test_an_empty_room_and_no_time_give_the_start_exactly():
     for start in (0.0, 0.1, 1.0 / 3.0, 1.0):
         assert fraction_after(0.0, **ROOM, start=start) == start
