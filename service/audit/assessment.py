@@ -26,6 +26,7 @@ class Assumed:
     reason: str
     source: str
     matters: bool  # raises an observation
+    decides: bool = False  # the standing rests on it
 
 
 @dataclass(frozen=True, slots=True)

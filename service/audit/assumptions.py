@@ -288,12 +288,14 @@ def _no_count_in_kilograms(table: CaseTable) -> Mask:
 def _full_litres(table: CaseTable) -> Floats:
     vessels = table.given.vessels
     most: Floats = np.fmax(vessels.capacity_volume, vessels.contents_volume)
-    return most * _LITRES
+    litres: Floats = most * _LITRES
+    return litres
 
 
 def _full_kilograms(table: CaseTable) -> Floats:
     vessels = table.given.vessels
-    return np.fmax(vessels.capacity_mass, vessels.contents_mass)
+    most: Floats = np.fmax(vessels.capacity_mass, vessels.contents_mass)
+    return most
 
 
 def _as_last_counted(given: Columns, rooms: Mask) -> Columns:
@@ -305,8 +307,8 @@ def _as_last_counted(given: Columns, rooms: Mask) -> Columns:
 def _no_alarms(table: CaseTable) -> Mask:
     detectors = table.given.detectors
     oxygen = (detectors.gas == OXYGEN_GAS) & (detectors.state == _IN_SERVICE)
-    unset = np.isnan(detectors.alarms).all(axis=1)
-    return all_of(unset, oxygen, _has_cases(table)[detectors.room])
+    unset = np.isnan(detectors.alarms)
+    return all_of(np.logical_and.reduce(unset, axis=1), oxygen, _has_cases(table)[detectors.room])
 
 
 def _second_mark(table: CaseTable) -> Floats:

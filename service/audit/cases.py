@@ -52,8 +52,9 @@ class CaseTable:
     rates_diluting: Floats
     marks: Floats  # (rows, 3) levels
     oxygen_marks: Floats  # (rows, 3) oxygen fractions
-    member_row: Integers  # sources of each case
+    member_start: Integers  # where the sources of each case begin; one more for the end
     member_source: Integers
+    member_row: Integers  # which case each of them belongs to, never falling
 
     @property
     def size(self) -> int:
@@ -114,6 +115,10 @@ def _joined(
     offsets = np.cumsum(sizes) - sizes
     oxygen_marks = np.stack([each.marks(room) for each in HAZARDS])[hazard, rooms]
     levels = np.stack([each.level(each.marks(room)) for each in HAZARDS])[hazard, rooms]
+    member_row = np.concatenate(
+        [rows.member_row + offset for (*_, rows), offset in zip(blocks, offsets, strict=True)]
+    ).astype(np.int64)
+    by_case = np.argsort(member_row, kind="stable")
     from_boil_off = by_block([each.from_boil_off for each, *_ in blocks]) == 1
     return CaseTable(
         given=given,
@@ -141,10 +146,9 @@ def _joined(
         rates_diluting=padded("rates_diluting"),
         marks=levels,
         oxygen_marks=oxygen_marks,
-        member_row=np.concatenate(
-            [rows.member_row + offset for (*_, rows), offset in zip(blocks, offsets, strict=True)]
-        ),
-        member_source=joined("member_source").astype(np.int64),
+        member_start=np.searchsorted(member_row[by_case], np.arange(rooms.size + 1)),
+        member_source=joined("member_source").astype(np.int64)[by_case],
+        member_row=member_row[by_case],
     )
 
 

@@ -25,6 +25,7 @@ class BasisValues:
     record: Reference
     values: Mapping[str, Any]
     sources: Mapping[str, str]
+    derived_from: tuple[Reference, ...] = ()  # the basis it was copied from, if any
 
 
 @dataclass(frozen=True, slots=True)

@@ -119,7 +119,8 @@ def rooms_of(tables: Tables, subject: Subject) -> Integers:
         Subject.DETECTORS: table.given.detectors.room,
         Subject.ASSUMED: tables.assumed.room,
     }[subject]
-    return tables.sound[rows]
+    positions: Integers = tables.sound[rows]
+    return positions
 
 
 def record_of(tables: Tables, subject: Subject, row: int) -> Reference:
@@ -130,7 +131,7 @@ def record_of(tables: Tables, subject: Subject, row: int) -> Reference:
     if subject is Subject.DETECTORS:
         return detector_record(tables, row)
     if subject is Subject.ASSUMED:
-        return _assumed_record(tables, row)
+        return assumed_record(tables, row)
     return tables.room(int(table.room[row]) if subject is Subject.CASES else row).record
 
 
@@ -140,7 +141,8 @@ def detector_record(tables: Tables, row: int) -> Reference:
     return tables.room(int(detectors.room[row])).detectors[int(detectors.source[row])].record
 
 
-def _assumed_record(tables: Tables, place: int) -> Reference:
+def assumed_record(tables: Tables, place: int) -> Reference:
+    """The record of a row of what was assumed."""
     assumed, given = tables.assumed, tables.cases.table.given
     room, row = tables.room(int(assumed.room[place])), int(assumed.row[place])
     kind = ASSUMPTIONS[int(assumed.code[place])].record

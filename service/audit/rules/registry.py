@@ -1,0 +1,14 @@
+"""Every rule, in the order in which an auditor would read them."""
+
+from typing import Final
+
+from service.audit.rules import detectors, enrichment, oxygen, records
+from service.audit.rules.rule import Rule
+
+# A slug is public and never reused.
+RULES: Final[tuple[Rule, ...]] = (
+    *oxygen.RULES,
+    *enrichment.RULES,
+    *detectors.RULES,
+    *records.RULES,
+)
