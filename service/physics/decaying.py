@@ -5,7 +5,7 @@ from numpy.typing import ArrayLike
 
 from service.physics.arrays import Floats, fraction, non_negative, positive, quotient
 from service.physics.constants import OXYGEN_IN_AIR
-from service.physics.relaxation import LONGEST
+from service.physics.relaxation import LONGEST, kept_share
 from service.physics.ventilation import fraction_from_oxygen, oxygen_from_fraction
 
 # exp(-45) is below the last figure of a fraction: what lies so far back has no say.
@@ -323,6 +323,5 @@ def _decayed(exponent: Floats) -> Floats:
 
 def _pulse(time: Floats, turnover: Floats, decay: Floats) -> Floats:
     """The difference of the two decays over that of their rates; time itself where those meet."""
-    spread = np.minimum(np.abs(turnover - decay) * time, LONGEST)
-    shape = quotient(-np.expm1(-spread), spread, where_zero=1.0)
+    shape = kept_share(np.abs(turnover - decay) * time)
     return time * shape * _decayed(np.minimum(turnover, decay) * time)

@@ -136,6 +136,14 @@ def test_the_end_of_a_closed_room_is_all_gas_mixed_at_once():
     assert_allclose(end, oxygen_after_mixing(0.15 / 0.005, 100.0), rtol=1e-12)
 
 
+def test_a_short_puff_is_purged_long_after_as_a_release_at_once():
+    """Closed: what a puff of R0/lambda leaves decays with Q/V, 1/(1 - k/lambda) to begin with."""
+    puff = {"initial_release": 0.001, "decay_rate": 0.1, "volume": 100.0}
+    oxygen = oxygen_with_decaying_source_exhaust(1e4, **puff, exhaust=0.01)
+    left = 0.001 / 100.0 / (0.1 - 1e-4) * np.exp(-1.0)
+    assert_allclose(1.0 - oxygen / OXYGEN_IN_AIR, left, rtol=1e-9)
+
+
 def test_the_room_starts_as_it_was_and_ends_clean():
     for formula, air in (
         (oxygen_with_decaying_source_exhaust, "exhaust"),
