@@ -18,13 +18,11 @@ from service.store.urls import SQLITE, database_address, dialect_of, sqlite_file
 
 Read = TypeVar("Read")
 
-# The primary code of SQLite is the low byte; a failed write or flush says "disk I/O error".
+# Where a limit other than that of the disk is met, SQLite says that the write failed.
 _FULL_ON_SQLITE: Final = frozenset(
     {
         sqlite3.SQLITE_FULL,
         sqlite3.SQLITE_IOERR_WRITE,
-        sqlite3.SQLITE_IOERR_FSYNC,
-        sqlite3.SQLITE_IOERR_TRUNCATE,
         sqlite3.SQLITE_IOERR_SHMSIZE,
     }
 )

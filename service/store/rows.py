@@ -23,7 +23,8 @@ def field_names(kind: str) -> tuple[str, ...]:
 
 
 @cache
-def _instants(kind: str) -> frozenset[str]:
+def instant_names(kind: str) -> frozenset[str]:
+    """Return the fields of a kind that hold a moment."""
     columns = TABLES[kind].columns
     return frozenset(name for name in field_names(kind) if isinstance(columns[name].type, Instant))
 
@@ -49,7 +50,7 @@ def row_of(record: Record) -> dict[str, Any]:
         **record.fields,
         "tag_folded": folded_tag(record.fields["tag"]),
     }
-    for name in _instants(record.kind):
+    for name in instant_names(record.kind):
         row[name] = None if row[name] is None else moment_of(row[name])
     return row
 
@@ -57,7 +58,7 @@ def row_of(record: Record) -> dict[str, Any]:
 @cache
 def reader_of(kind: str) -> Callable[[RowMapping], Record]:
     """Return the function that makes records of one kind from rows."""
-    names, instants = field_names(kind), _instants(kind)
+    names, instants = field_names(kind), instant_names(kind)
 
     def read(row: RowMapping) -> Record:
         fields = {name: row[name] for name in names}

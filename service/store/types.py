@@ -31,7 +31,7 @@ class Text(TypeDecorator[str]):
 
     def load_dialect_impl(self, dialect: Dialect) -> TypeEngine[Any]:
         """Sort by code point on PostgreSQL, whatever the locale of the database."""
-        return dialect.type_descriptor(sa.Text() if _on_sqlite(dialect) else sa.Text(collation="C"))
+        return sa.Text() if _on_sqlite(dialect) else sa.Text(collation="C")
 
 
 class Number(TypeDecorator[float]):
@@ -42,7 +42,7 @@ class Number(TypeDecorator[float]):
 
     def load_dialect_impl(self, dialect: Dialect) -> TypeEngine[Any]:
         """Use the name that a STRICT table takes on SQLite."""
-        return dialect.type_descriptor(sa.REAL() if _on_sqlite(dialect) else sa.Double())
+        return sa.REAL() if _on_sqlite(dialect) else sa.Double()
 
     def process_bind_param(self, value: float | None, dialect: Dialect) -> float | None:
         """Refuse NaN, which SQLite would keep as nothing, and infinity."""
@@ -59,7 +59,7 @@ class Whole(TypeDecorator[int]):
 
     def load_dialect_impl(self, dialect: Dialect) -> TypeEngine[Any]:
         """Use the name that a STRICT table takes on SQLite, which has 64 bits there too."""
-        return dialect.type_descriptor(sa.Integer() if _on_sqlite(dialect) else sa.BigInteger())
+        return sa.Integer() if _on_sqlite(dialect) else sa.BigInteger()
 
 
 class Flag(TypeDecorator[bool]):
@@ -70,7 +70,7 @@ class Flag(TypeDecorator[bool]):
 
     def load_dialect_impl(self, dialect: Dialect) -> TypeEngine[Any]:
         """Keep 0 and 1 on SQLite."""
-        return dialect.type_descriptor(sa.Integer() if _on_sqlite(dialect) else sa.Boolean())
+        return sa.Integer() if _on_sqlite(dialect) else sa.Boolean()
 
     def process_bind_param(self, value: bool | None, dialect: Dialect) -> bool | int | None:
         """Refuse what is no flag: 2 would be true on one database and an error on the other."""
@@ -91,8 +91,7 @@ class Instant(TypeDecorator[datetime]):
 
     def load_dialect_impl(self, dialect: Dialect) -> TypeEngine[Any]:
         """Keep text on SQLite, which has no type for time and drops zones."""
-        own = sa.Text() if _on_sqlite(dialect) else postgresql.TIMESTAMP(timezone=True)
-        return dialect.type_descriptor(own)
+        return sa.Text() if _on_sqlite(dialect) else postgresql.TIMESTAMP(timezone=True)
 
     def process_bind_param(self, value: datetime | None, dialect: Dialect) -> str | datetime | None:
         """Refuse a moment without a zone."""
@@ -118,7 +117,7 @@ class Document(TypeDecorator[Any]):
 
     def load_dialect_impl(self, dialect: Dialect) -> TypeEngine[Any]:
         """Keep text, as for the text type."""
-        return dialect.type_descriptor(sa.Text() if _on_sqlite(dialect) else sa.Text(collation="C"))
+        return sa.Text() if _on_sqlite(dialect) else sa.Text(collation="C")
 
     def process_bind_param(self, value: Any, dialect: Dialect) -> str | None:
         """Write canonical JSON; nothing stays null."""

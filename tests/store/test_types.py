@@ -35,6 +35,21 @@ def test_every_constraint_has_a_name_of_its_own_that_postgresql_does_not_cut(tab
     assert all(len(name.encode()) <= 63 for name in named)
 
 
+@pytest.mark.parametrize(
+    ("column_type", "name"),
+    [
+        (Text(), 'TEXT COLLATE "C"'),
+        (Number(), "DOUBLE PRECISION"),
+        (Whole(), "BIGINT"),
+        (Flag(), "BOOLEAN"),
+        (Instant(), "TIMESTAMP WITH TIME ZONE"),
+        (Document(), 'TEXT COLLATE "C"'),
+    ],
+)
+def test_types_on_postgresql_have_64_bits_a_zone_and_one_order(column_type, name):
+    assert column_type.compile(postgresql.dialect()) == name
+
+
 @pytest.fixture
 def kept(database):
     """Write a value into a column of a type and read it back."""
