@@ -171,6 +171,7 @@ def inputs_document(assessment: Assessment) -> bytes:
                     "reason": assumed.reason,
                     "source": assumed.source,
                     "matters": assumed.matters,
+                    "decides": assumed.decides,
                 }
                 for assumed in assessment.assumed
             ],

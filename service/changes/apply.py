@@ -11,6 +11,7 @@ from service.changes.merge import merge_patch
 from service.changes.neighbourhood import OXYGEN, Neighbourhood, TagKey
 from service.changes.record_rules import derived_fields, record_problems
 from service.changes.requested import CREATE, REMOVE, Placed, pointing
+from service.clock import moment_of, text_of
 from service.errors import (
     DuplicateExternalId,
     DuplicateTag,
@@ -22,6 +23,7 @@ from service.errors import (
     StillReferred,
 )
 from service.store.records import Record, folded_tag
+from service.store.rows import instant_names
 
 
 @dataclass(frozen=True, slots=True)
@@ -176,6 +178,9 @@ def _fields_after(
     fields = {name: merged.get(name) for name in base}
     if fields["labels"] is None:
         fields["labels"] = {}
+    for name in instant_names(kind):
+        # One way of writing a moment, whoever sent it, so that a record reads back as it was hashed.
+        fields[name] = None if fields[name] is None else text_of(moment_of(fields[name]))
     return derived_fields(kind, fields, sent)
 
 

@@ -71,7 +71,7 @@ def _matched(
     news = reconcile(
         prior,
         assessment.judgements,
-        room=assessment,
+        room=room,
         at=at,
         position=position,
         reopen_days=int(room.basis.values["reopen_days"]),

@@ -31,9 +31,9 @@ ZERO_CELSIUS: Final = 273.15  # [K]
 class _Placed:
     """What stands in each room, found once for all rooms; in record order, that is by id."""
 
-    vessels: Mapping[str, list[Record]]
-    units: Mapping[str, list[Record]]
-    detectors: Mapping[str, list[Record]]
+    vessels: dict[str, list[Record]]
+    units: dict[str, list[Record]]
+    detectors: dict[str, list[Record]]
 
 
 def values_of_rooms(records: Mapping[str, Record], room_ids: Iterable[str]) -> list[RoomValues]:
@@ -110,7 +110,8 @@ def basis_values(records: Mapping[str, Record], basis: Record) -> BasisValues:
     if origin is not None:
         values = effective(origin.fields["values"], values)
         sources = {**origin.fields["sources"], **sources}
-    return BasisValues(reference(basis), values, sources)
+    copied = () if origin is None else (reference(origin),)
+    return BasisValues(reference(basis), values, sources, copied)
 
 
 def fluid_values(fluid: Record) -> FluidValues:
