@@ -8,7 +8,7 @@ from numpy.typing import ArrayLike
 
 from service.physics.arrays import Floats, Integers, Mask, finite, non_negative, positive
 from service.physics.course import Course
-from service.physics.relaxation import LONGEST
+from service.physics.relaxation import LONGEST, kept_share
 
 # Halvings of a bracket: more than the bits of a double's fraction, so that nothing is left of it.
 _HALVINGS: Final = 60
@@ -102,9 +102,7 @@ def reading_after(
     turns, lags = non_negative("rate", rate) * time, time / tau
     left = np.exp(-np.minimum(lags, LONGEST))
     # (exp(-kt) - exp(-t/tau)) / (1 - k tau) without a difference of near equals.
-    gap = np.minimum(np.abs(lags - turns), LONGEST)
-    small = gap < 1e-8
-    share = np.where(small, 1.0, -np.expm1(-gap) / np.where(small, 1.0, gap))
+    share = kept_share(np.abs(lags - turns))
     slow = np.exp(-np.minimum(np.minimum(turns, lags), LONGEST))
     lagging = slow * lags * share
     caught_up = (finite("reading", reading) - target) * left

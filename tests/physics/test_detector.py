@@ -101,3 +101,13 @@ def test_a_sensor_without_a_response_time_is_refused():
         time_constant([0.0])
     with pytest.raises(OutOfRange):
         time_constant([np.nan])
+
+
+def test_a_sensor_that_lags_a_slow_room_by_a_steady_ramp_reads_true_after_hours():
+    """After 100,000 s a 30 s sensor trails the room by its own lag only: M3, by hand.
+
+    The room goes as exp(-kt), so the reading is exp(-kt)/(1 - k tau) once exp(-t/tau) is gone.
+    """
+    rate, tau, elapsed = 1e-6, 13.0288, 1e5
+    reading = reading_after(elapsed, reading=0.0, start=1.0, steady=0.0, rate=rate, constant=tau)
+    assert_allclose(reading, np.exp(-rate * elapsed) / (1.0 - rate * tau), rtol=1e-12)
