@@ -312,7 +312,8 @@ def _no_alarms(table: CaseTable) -> Mask:
 
 
 def _second_mark(table: CaseTable) -> Floats:
-    return 100.0 * table.conditions.low_marks[table.given.detectors.room, 1]
+    marks: Floats = 100.0 * table.conditions.low_marks[table.given.detectors.room, 1]
+    return marks
 
 
 def _no_response(table: CaseTable) -> Mask:

@@ -118,7 +118,8 @@ def _distinct_ends(row: Integers, ends: Floats, longest: Floats) -> tuple[Floats
     order = np.lexsort((all_ends, all_rows))
     sorted_rows, sorted_ends = all_rows[order], all_ends[order]
     new_row = np.diff(sorted_rows, prepend=-1) != 0
-    new_end = np.concatenate([[True] * min(order.size, 1), np.diff(sorted_ends) != 0.0]) | new_row
+    new_end = new_row.copy()
+    new_end[1:] |= np.diff(sorted_ends) != 0.0
     running = np.cumsum(new_end) - 1
     position = running - running[np.flatnonzero(new_row)][sorted_rows]
     width = int(position.max(initial=-1)) + 1
@@ -193,7 +194,13 @@ RELEASES: Final = (
         from_boil_off=False,
         counts_in=frozenset({"as-measured", "lost"}),
         safeguards=("detection",),
-        method=("A3", "B4", "D0", "D6", "G1"),
+        method=(
+            "gas/ideal-at-site",
+            "marks/oxygen-by-pressure",
+            "boil-off/normal-evaporation",
+            "ventilation/piecewise-constant",
+            "ventilation/hold",
+        ),
     ),
     Release(
         slug=LARGEST_VESSEL,
@@ -202,7 +209,12 @@ RELEASES: Final = (
         from_boil_off=True,
         counts_in=frozenset({"as-measured"}),
         safeguards=("detection", "ventilation"),
-        method=("A3", "B4", "C", "D0"),
+        method=(
+            "gas/ideal-at-site",
+            "marks/oxygen-by-pressure",
+            "ventilation/piecewise-constant",
+            "ventilation/restore",
+        ),
     ),
 )
 

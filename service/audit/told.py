@@ -1,0 +1,268 @@
+"""Arrays become what an assessment answers of one room: cases, air, figures, assumptions."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Final
+
+import numpy as np
+
+from service.audit.air import AIRFLOWS, AS_MEASURED
+from service.audit.assessment import Assumed, Case, Ventilation
+from service.audit.assumptions import ASSUMPTIONS
+from service.audit.evaluation import Evaluation
+from service.audit.hazards import HAZARDS
+from service.audit.releases import BOIL_OFF, LARGEST_VESSEL, RELEASES
+from service.audit.rules.case_records import fluids_of, vessels_of
+from service.audit.rules.rule import Tables, assumed_record
+from service.audit.rules.words import number
+from service.physics.arrays import Floats, Integers, rounded, sum_by_group
+from service.physics.constants import SECONDS_PER_HOUR, ZERO_CELSIUS
+
+_AT_ONCE: Final = "It is let go at once, so that no fan can hold it."
+_BOIL_OFF: Final = [release.slug for release in RELEASES].index(BOIL_OFF)
+_AS_MEASURED: Final = AIRFLOWS.index(AS_MEASURED)
+_PERCENT: Final = 100.0
+_KILOPASCAL: Final = 1000.0  # [Pa]
+
+
+@dataclass(frozen=True, slots=True)
+class _Numbers:
+    """Results in the units of an answer, rounded again after the change of unit."""
+
+    oxygen_pct: Floats
+    oxygen_kpa: Floats
+    to_marks_s: Floats
+    recovered_s: Floats
+    at_s: Floats
+    gas_m3: Floats
+    required_m3_h: Floats
+    restore_m3_h: Floats
+
+
+def _numbers(evaluation: Evaluation) -> _Numbers:
+    results = evaluation.results
+    return _Numbers(
+        oxygen_pct=rounded(_PERCENT * results.oxygen),
+        oxygen_kpa=rounded(results.oxygen_pressure / _KILOPASCAL),
+        to_marks_s=results.to_marks,
+        recovered_s=results.recovered,
+        at_s=results.at,
+        gas_m3=results.gas,
+        required_m3_h=rounded(results.required * SECONDS_PER_HOUR),
+        restore_m3_h=rounded(results.restore * SECONDS_PER_HOUR),
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class Told:
+    """Evaluated rooms, and how to tell one of them by its row of the columns."""
+
+    tables: Tables
+    without: Evaluation  # the same cases with every stacked factor at 1
+    leading: Integers  # row of the case that each room's standing rests on
+    _numbers: _Numbers = field(init=False)
+    _bare: _Numbers = field(init=False)
+    _cases: tuple[Integers, ...] = field(init=False)  # rows shown, by room
+    _assumed: tuple[Integers, ...] = field(init=False)
+    _ventilation: Mapping[str, Floats] = field(init=False)
+    _figures: Mapping[str, Floats] = field(init=False)
+
+    def __post_init__(self) -> None:
+        """Lay out once what every room is told from."""
+        for name, value in (
+            ("_numbers", _numbers(self.tables.cases)),
+            ("_bare", _numbers(self.without)),
+            ("_cases", _rows_by_room(self.tables)),
+            ("_assumed", _by_room(self.tables.assumed.room, self.tables)),
+            ("_ventilation", _ventilation(self.tables)),
+            ("_figures", _figures(self.tables)),
+        ):
+            object.__setattr__(self, name, value)
+
+    def cases(self, row: int) -> tuple[Case, ...]:
+        """The cases of a room, in the order of releases, the largest first."""
+        return tuple(self._case(int(case)) for case in self._cases[row])
+
+    def deciding(self, row: int) -> int | None:
+        """Place of the case that the standing rests on."""
+        found = np.flatnonzero(self._cases[row] == self.leading[row])
+        return int(found[0]) if found.size else None
+
+    def assumed(self, row: int) -> tuple[Assumed, ...]:
+        """What was assumed of a room and what stands in it."""
+        return tuple(self._assumption(int(place)) for place in self._assumed[row])
+
+    def ventilation(self, row: int) -> Ventilation:
+        """The air of a room."""
+        found = self._ventilation
+        boils = bool(found["boils"][row])
+        return Ventilation(
+            outdoor_air_m3_h=float(found["moved"][row]),
+            credited_m3_h=float(found["credited"][row]),
+            air_changes_per_h=float(found["changes"][row]),
+            sustained_release_m3_h=float(found["release"][row]),
+            required_m3_h=float(found["required"][row]),
+            shortfall_m3_h=float(found["shortfall"][row]),
+            restore_m3_h=float(found["restore"][row]),
+            deciding_case=f"{BOIL_OFF}/{AS_MEASURED}" if boils else None,
+        )
+
+    def figures(self, row: int) -> Mapping[str, float | str | None]:
+        """What the numbers rest on besides the records, and both readings of the contents."""
+        read_as = self.tables.cases.table.given.bases.as_recorded[row]
+        found: dict[str, float | str | None] = {
+            name: number(float(values[row])) for name, values in self._figures.items()
+        }
+        return {**found, "contents": "recorded" if read_as else "capacity"}
+
+    def _assumption(self, place: int) -> Assumed:
+        assumed = self.tables.assumed
+        basis = self.tables.room(int(assumed.room[place])).basis
+        assumption = ASSUMPTIONS[int(assumed.code[place])]
+        return Assumed(
+            record=assumed_record(self.tables, place),
+            field=assumption.field,
+            value=assumed.value[place],
+            reason=assumption.reason,
+            source=basis.sources.get(assumption.source, assumption.source),
+            matters=bool(assumed.matters[place]),
+            decides=bool(self.tables.decides[place]),
+        )
+
+    def _case(self, row: int) -> Case:
+        table, found = self.tables.cases.table, self._numbers
+        release, guards = RELEASES[int(table.release[row])], self.tables.cases.guards
+        deficient, danger, critical = (_or_none(each) for each in found.to_marks_s[row])
+        return Case(
+            release=release.slug,
+            airflow=AIRFLOWS[int(table.airflow[row])],
+            hazard=HAZARDS[int(table.hazard[row])].slug,
+            counts=bool(table.counts[row]),
+            fluids=tuple(fluids_of(self.tables, row)),
+            vessels=tuple(vessels_of(self.tables, row)),
+            oxygen_pct=float(found.oxygen_pct[row]),
+            oxygen_kpa=float(found.oxygen_kpa[row]),
+            at_s=float(found.at_s[row]),
+            to_deficient_s=deficient,
+            to_danger_s=danger,
+            to_critical_s=critical,
+            recovered_s=_or_none(found.recovered_s[row]),
+            gas_m3=float(found.gas_m3[row]),
+            required_m3_h=_or_none(found.required_m3_h[row]),
+            required_reason=_AT_ONCE if release.at_once else None,
+            restore_m3_h=_or_none(found.restore_m3_h[row]),
+            alarm_s=_or_none(guards.alarm[row]),
+            margin_s=_or_none(guards.margin[row]),
+            mark=int(self.tables.cases.results.mark[row]),
+            without_margins=self._without_margins(row),
+            method=self._method(row),
+        )
+
+    def _without_margins(self, row: int) -> dict[str, float | None]:
+        bare = self._bare
+        deficient, danger, critical = (_or_none(each) for each in bare.to_marks_s[row])
+        return {
+            "oxygen_pct": _or_none(bare.oxygen_pct[row]),
+            "oxygen_kpa": _or_none(bare.oxygen_kpa[row]),
+            "at_s": _or_none(bare.at_s[row]),
+            "to_deficient_s": deficient,
+            "to_danger_s": danger,
+            "to_critical_s": critical,
+            "recovered_s": _or_none(bare.recovered_s[row]),
+            "gas_m3": _or_none(bare.gas_m3[row]),
+            "net_volume_m3": number(float(self.without.table.volume[row])),
+            "required_m3_h": _or_none(bare.required_m3_h[row]),
+            "restore_m3_h": _or_none(bare.restore_m3_h[row]),
+        }
+
+    def _method(self, row: int) -> tuple[str, ...]:
+        table = self.tables.cases.table
+        release = RELEASES[int(table.release[row])]
+        if release.slug != LARGEST_VESSEL:
+            return release.method
+        pushed = bool(table.given.bases.by_displacement[table.room[row]])
+        return (*release.method, "mixing/displacement" if pushed else "mixing/while-displacing")
+
+
+def _or_none(value: float) -> float | None:
+    return float(value) if np.isfinite(value) else None
+
+
+def _by_room(room: Integers, tables: Tables) -> tuple[Integers, ...]:
+    """Rows of a table by room, in their order."""
+    order = np.argsort(room, kind="stable")
+    ends = np.searchsorted(room[order], np.arange(1, tables.sound.size))
+    return tuple(np.split(order, ends)) if tables.sound.size else ()
+
+
+def _rows_by_room(tables: Tables) -> tuple[Integers, ...]:
+    """Cases shown, by room: by release, airflow and hazard, the nearest to a mark first."""
+    table = tables.cases.table
+    shown = np.flatnonzero(table.shown)
+    order = np.lexsort(
+        (
+            -tables.cases.results.nearness[shown],
+            table.hazard[shown],
+            table.airflow[shown],
+            table.release[shown],
+            table.room[shown],
+        )
+    )
+    rows = shown[order]
+    ends = np.searchsorted(table.room[rows], np.arange(1, tables.sound.size))
+    return tuple(np.split(rows, ends)) if tables.sound.size else ()
+
+
+def _ventilation(tables: Tables) -> Mapping[str, Floats]:
+    """The air of every room; what holds its boil-off needs no more."""
+    table, results = tables.cases.table, tables.cases.results
+    count = table.given.count
+    boils = (table.release == _BOIL_OFF) & (table.airflow == _AS_MEASURED)
+    required, restore, holds, any_boils = (
+        np.zeros(count),
+        np.zeros(count),
+        np.ones(count),
+        np.zeros(count),
+    )
+    np.maximum.at(required, table.room[boils], results.required[boils])
+    np.maximum.at(restore, table.room[table.counts], results.restore[table.counts])
+    holds[table.room[boils & (results.mark > 0)]] = 0.0
+    any_boils[table.room[boils]] = 1.0
+    moved, by_fans = table.air.moved[_AS_MEASURED], table.air.by_fans[_AS_MEASURED]
+    credited = np.maximum(table.air.supply[_AS_MEASURED], table.air.exhaust[_AS_MEASURED])
+    short = np.where(holds > 0.0, 0.0, np.maximum(required - by_fans, 0.0))
+    release = sum_by_group(table.sources.rate, table.sources.room, count)
+    per_hour = {
+        "moved": moved,
+        "credited": credited,
+        "changes": moved / table.conditions.volume,
+        "release": release,
+        "required": required,
+        "shortfall": short,
+        "restore": restore,
+    }
+    answered = {name: rounded(flow * SECONDS_PER_HOUR) for name, flow in per_hour.items()}
+    return {**answered, "boils": any_boils}
+
+
+def _figures(tables: Tables) -> Mapping[str, Floats]:
+    table = tables.cases.table
+    room, stock, count = table.conditions, table.stock, table.given.count
+    owner = table.given.vessels.room
+    low, high = _PERCENT * room.low_marks, _PERCENT * room.high_marks
+    return {
+        "pressure_kpa_abs": room.pressure / _KILOPASCAL,
+        "temperature_c": room.temperature - ZERO_CELSIUS,
+        "gross_volume_m3": table.given.rooms.gross_volume,
+        "net_volume_m3": room.volume,
+        "natural_air_m3_h": room.natural_flow * SECONDS_PER_HOUR,
+        "way_out_m": room.way_out,
+        "oxygen_deficient_pct": low[:, 0],
+        "oxygen_danger_pct": low[:, 1],
+        "oxygen_critical_pct": low[:, 2],
+        "oxygen_enriched_pct": high[:, 0],
+        "gas_at_capacity_m3": sum_by_group(stock.full_mass * stock.gas_per_mass, owner, count),
+        "gas_as_recorded_m3": sum_by_group(stock.recorded_mass * stock.gas_per_mass, owner, count),
+    }

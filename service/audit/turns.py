@@ -1,0 +1,43 @@
+"""When an assessment can next change by itself: the turns of rules and of inputs that age."""
+
+from collections.abc import Iterator, Sequence
+
+import numpy as np
+
+from service.audit.columns import DETECTOR_STATES, VESSEL_STATES, Moments
+from service.audit.rules.rule import Judged, Subject, Tables, rooms_of
+from service.physics.arrays import Integers
+
+_OFF = DETECTOR_STATES.index("off")
+_EMPTY = VESSEL_STATES.index("empty")
+
+
+def next_turns(
+    tables: Tables, judged: Sequence[tuple[Subject, Judged]], at: np.datetime64
+) -> Moments:
+    """Least moment, strictly later than now, at which each room asked for can change."""
+    turns = np.full(len(tables.rooms), np.datetime64("NaT", "us"))
+    for subject, answer in judged:
+        _take_earlier(turns, rooms_of(tables, subject), answer.turns_at, at)
+    for room, moment in _ageing(tables):
+        _take_earlier(turns, tables.sound[room], moment, at)
+    return turns
+
+
+def _ageing(tables: Tables) -> Iterator[tuple[Integers, Moments]]:
+    """Moments at which an input ages; only where that can make a difference."""
+    table = tables.cases.table
+    vessels, units, detectors = table.given.vessels, table.given.units, table.given.detectors
+    relied_on = table.given.bases.as_recorded[vessels.room] | (vessels.state == _EMPTY)
+    relied_on &= table.stock.count_holds & table.stock.present
+    yield vessels.room[relied_on], vessels.count_due[relied_on]
+    measured = table.air.units.measurement_holds & table.air.units.runs
+    yield units.room[measured], units.measurement_due[measured]
+    watches = detectors.state != _OFF
+    yield detectors.room[watches], detectors.silenced_since[watches]
+
+
+def _take_earlier(turns: Moments, room: Integers, moment: Moments, at: np.datetime64) -> None:
+    # Comparisons with not-a-time are false, so what has no turn is left out.
+    later = moment > at
+    np.fmin.at(turns, room[later], moment[later])
