@@ -6,15 +6,17 @@ import asyncio
 import contextlib
 import logging
 import sqlite3
-from collections.abc import AsyncIterator, Callable
+from collections.abc import AsyncIterator, Callable, Iterator
 from contextlib import asynccontextmanager
 from functools import partial
-from importlib.resources import as_file, files
+from importlib.resources import files
 from pathlib import Path
 from typing import Any, Final
 
 from fastapi import FastAPI
+from fastapi.telemetry import TelemetryConfig
 from starlette.concurrency import run_in_threadpool
+from starlette.routing import BaseRoute, Mount
 from starlette.staticfiles import StaticFiles
 from starlette.types import ASGIApp
 
@@ -25,6 +27,7 @@ from service.api.openapi import described
 from service.api.poll import PollLayer
 from service.api.problems import install_problem_handlers
 from service.api.routes import changes, docs, findings, health, keys, room_answers
+from service.api.routes.declared import with_heads
 from service.api.routes.records import record_routers
 from service.api.service import Service
 from service.audit.assessment import METHOD_VERSION
@@ -50,7 +53,7 @@ from service.work.upkeep import run_upkeep_once
 
 # The version of the API, which callers see; that of the distribution is another matter.
 API_VERSION: Final = "1.0"
-_NO_TELEMETRY: Final = {"tracing": False, "metrics": False, "logs": False}
+_NO_TELEMETRY: Final[TelemetryConfig] = {"tracing": False, "metrics": False, "logs": False}
 # Before this release two connections that write in the same instant can damage a file; the service
 # has one only, so that this is a hint and no fault.
 _SOUND_SQLITE: Final = (3, 51, 3)
@@ -83,21 +86,32 @@ def create_app(
         version=API_VERSION,
         docs_url=None,
         redoc_url=None,
-        telemetry=_NO_TELEMETRY,  # type: ignore[arg-type]
+        telemetry=_NO_TELEMETRY,
         redirect_slashes=False,
+        # Handed over whole: including a router makes each of its routes a second time.
+        routes=list(with_heads(_routes())),
         lifespan=partial(_running, settings, clock or SystemClock(), database),
     )
     app.largest_body = settings.max_body_bytes
     install_problem_handlers(app)
-    # By external id before what follows an id, so that no external id is taken for a path.
-    for router in (*record_routers(), room_answers.router, changes.router, findings.router):
-        app.include_router(router)
-    for router in (keys.router, health.router, docs.router):
-        app.include_router(router)
-    with as_file(files("service") / "static") as folder:
-        app.mount("/static", StaticFiles(directory=Path(folder)), name="static")
     check_declared(app.routes)
     return app
+
+
+def _routes() -> Iterator[BaseRoute]:
+    # Records by external id come before what follows an id, so that none is taken for the other.
+    for router in (
+        *record_routers(),
+        room_answers.router,
+        changes.router,
+        findings.router,
+        keys.router,
+        health.router,
+        docs.router,
+    ):
+        yield from router.routes
+    folder = Path(str(files("service"))) / "static"
+    yield Mount("/static", StaticFiles(directory=folder), name="static")
 
 
 @asynccontextmanager

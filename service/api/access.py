@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
-from functools import cache
 from types import MappingProxyType
 from typing import Final
 
@@ -105,6 +104,8 @@ def refuse_unknown_parameters(request: Request) -> None:
 
     A filter that was misspelt and passed over would answer with everything.
     """
+    if not request.scope["query_string"]:
+        return
     sent = [name for name, _ in request.query_params.multi_items()]
     known, labels = _known_parameters(request.scope["route"])
     for name in sent:
@@ -115,7 +116,6 @@ def refuse_unknown_parameters(request: Request) -> None:
             raise FieldsRefused.parameter(name, "sent-twice", "Send this parameter once.")
 
 
-@cache
 def _known_parameters(route: APIRoute) -> tuple[frozenset[str], bool]:
     names: set[str] = set()
     waiting, labels = [route.dependant], False

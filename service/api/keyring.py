@@ -68,14 +68,16 @@ class KeyRing:
 
     def used(self) -> dict[str, datetime]:
         """Give the keys whose use is to be noted, each at most once a minute, and forget them."""
+        now = self._clock.now()
         due = {
             key_id: moment
             for key_id, moment in list(self._used.items())
-            if moment - self._noted.get(key_id, moment - USE_NOTED_EVERY) >= USE_NOTED_EVERY
+            if now - self._noted.get(key_id, now - USE_NOTED_EVERY) >= USE_NOTED_EVERY
         }
         for key_id, moment in due.items():
-            self._noted[key_id] = moment
-            if self._used.get(key_id) == moment:
+            self._noted[key_id] = now
+            # A use since then stays, for the next time.
+            if self._used[key_id] == moment:
                 del self._used[key_id]
         return due
 

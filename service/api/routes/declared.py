@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable, Iterator
 from typing import Any
 
-from fastapi import APIRouter
 from fastapi.routing import APIRoute
 from pydantic import BaseModel
+from starlette.routing import BaseRoute, Route
+from starlette.types import Receive, Scope, Send
 
 from service.api.problems import ALWAYS, problems
 from service.errors import (
@@ -74,16 +76,20 @@ def _declared(names: tuple[str, ...]) -> dict[str, Any]:
     return {name: {"description": _HEADERS[name], "schema": {"type": "string"}} for name in names}
 
 
-def add_heads(router: APIRouter) -> None:
-    """Let every path that is read be asked for its headers alone."""
-    for route in list(router.routes):
-        if isinstance(route, APIRoute) and route.methods == {"GET"}:
-            router.add_api_route(
-                route.path.removeprefix(router.prefix),
-                route.endpoint,
-                methods=["HEAD"],
-                dependencies=route.dependencies,
-                response_model=None,
-                include_in_schema=False,
-                name=f"{route.name}-head",
-            )
+class _Head:
+    """Answers HEAD as the route of the same path answers GET; the server sends no body for it."""
+
+    def __init__(self, route: APIRoute) -> None:
+        self._route = route
+
+    async def __call__(self, scope: Scope, receive: Receive, send: Send) -> None:
+        scope["route"] = self._route
+        await self._route.app(scope, receive, send)
+
+
+def with_heads(routes: Iterable[BaseRoute]) -> Iterator[BaseRoute]:
+    """Give each route, and for each that is read another one that answers its headers alone."""
+    for route in routes:
+        yield route
+        if isinstance(route, APIRoute) and "GET" in (route.methods or ()):
+            yield Route(route.path, _Head(route), methods=["HEAD"], include_in_schema=False)

@@ -10,7 +10,6 @@ from fastapi import APIRouter
 from starlette.responses import HTMLResponse, Response
 
 from service.api.access import OPEN
-from service.api.routes.declared import add_heads
 from service.changes.cautions import CAUTIONS
 from service.errors import RimewardError, every_problem
 
@@ -102,6 +101,3 @@ def _marked_up(words: str) -> str:
     parts = escape(words).replace("``", "`").split("`")
     shown = (f"<code>{part}</code>" if n % 2 else part for n, part in enumerate(parts))
     return "".join(shown)
-
-
-add_heads(router)

@@ -20,7 +20,6 @@ from service.api.rendering import FRESH
 from service.api.routes.declared import (
     LISTING,
     READING_PAST,
-    add_heads,
     answering,
     not_modified,
 )
@@ -249,6 +248,3 @@ def _found(
     if not versions:
         raise RecordNotFound.of("finding")
     return versions[-1]
-
-
-add_heads(router)

@@ -13,7 +13,6 @@ from starlette.responses import Response
 
 from service.api.access import OPEN
 from service.api.deps import JSON, NOT_KEPT_BY_CACHES
-from service.api.routes.declared import add_heads
 from service.api.schemas.health import AliveRead, ReadyRead
 from service.api.service import Service, service_of
 from service.audit.assessment import METHOD_VERSION
@@ -92,6 +91,3 @@ def _method_detail(noted: str) -> str:
     if is_newer(noted, METHOD_VERSION):
         return f"The database has method {noted}; this process only reads."
     return f"It computes by method {METHOD_VERSION}."
-
-
-add_heads(router)

@@ -29,7 +29,6 @@ from service.api.routes.declared import (
     READING,
     READING_PAST,
     WRITING,
-    add_heads,
     answering,
     not_modified,
 )
@@ -60,7 +59,6 @@ def record_router(resource: Resource) -> APIRouter:
     router = APIRouter(prefix=f"/v1/{resource.path}", tags=[resource.many])
     _add_reading(router, resource)
     _add_writing(router, resource)
-    add_heads(router)
     return router
 
 

@@ -12,7 +12,7 @@ from starlette.responses import Response
 from service.api.access import READ, allowed
 from service.api.conditional import not_modified as has_it_already
 from service.api.deps import JSON, AsOf, Reader
-from service.api.routes.declared import READING_PAST, add_heads, answering, not_modified
+from service.api.routes.declared import READING_PAST, answering, not_modified
 from service.api.routes.records import position_of
 from service.api.schemas.status import AssessmentRead, StatusRead
 from service.api.status import Poll, poll_at, poll_of, polled, wait_until_known
@@ -122,6 +122,3 @@ def _assessment(
         if finding["state"] != "cleared"
     ]
     return poll, assessment_answer(assessment, findings, poll.currency)
-
-
-add_heads(router)

@@ -35,7 +35,7 @@ class FluidCreate(OfSite):
         description="Of the liquid at its boiling point, or of the solid."
     )
     oxygen_fraction: Fraction = Field(description="Of oxygen in the gas, by volume.")
-    solid: bool = False
+    solid: bool = Field(description="Kept as a solid, such as dry ice.")
     hazards: Annotated[list[Hazard], Field(min_length=1, max_length=4)]
     settles: Settles = Field(description="Where the cold gas goes.")
     sources: Annotated[dict[PropertyName, ShortText], Field(max_length=40)] = Field(
