@@ -15,6 +15,7 @@ from service.audit.columns import UNKNOWN, moments
 from service.audit.evaluation import deciding, evaluate
 from service.audit.inputs import Reference, RoomValues
 from service.audit.margins import without_margins
+from service.audit.rules.case_records import case_records
 from service.audit.rules.registry import RULES
 from service.audit.rules.rule import (
     Direction,
@@ -60,13 +61,15 @@ def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) ->
     table = case_table(rooms, at)
     cases = evaluate(table, moment)
     assumed = assumptions(table)
+    sound = _sound(table)
     return Tables(
         rooms=rooms,
         failed=table.failed,
-        sound=_sound(table),
+        sound=sound,
         cases=cases,
         assumed=assumed,
         decides=deciding(cases, assumed, moment),
+        records=case_records(rooms, sound, table),
     )
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Final
 
@@ -12,47 +12,17 @@ from service.audit.air import AIRFLOWS, AS_MEASURED
 from service.audit.assessment import Assumed, Case, Ventilation
 from service.audit.assumptions import ASSUMPTIONS
 from service.audit.evaluation import Evaluation
-from service.audit.hazards import HAZARDS
-from service.audit.releases import BOIL_OFF, LARGEST_VESSEL, RELEASES
-from service.audit.rules.case_records import fluids_of, vessels_of
+from service.audit.releases import BOIL_OFF, RELEASES
 from service.audit.rules.rule import Tables, assumed_record
 from service.audit.rules.words import number
+from service.audit.told_cases import told_cases
 from service.physics.arrays import Floats, Integers, rounded, sum_by_group
 from service.physics.constants import SECONDS_PER_HOUR, ZERO_CELSIUS
 
-_AT_ONCE: Final = "It is let go at once, so that no fan can hold it."
 _BOIL_OFF: Final = [release.slug for release in RELEASES].index(BOIL_OFF)
 _AS_MEASURED: Final = AIRFLOWS.index(AS_MEASURED)
 _PERCENT: Final = 100.0
 _KILOPASCAL: Final = 1000.0  # [Pa]
-
-
-@dataclass(frozen=True, slots=True)
-class _Numbers:
-    """Results in the units of an answer, rounded again after the change of unit."""
-
-    oxygen_pct: Floats
-    oxygen_kpa: Floats
-    to_marks_s: Floats
-    recovered_s: Floats
-    at_s: Floats
-    gas_m3: Floats
-    required_m3_h: Floats
-    restore_m3_h: Floats
-
-
-def _numbers(evaluation: Evaluation) -> _Numbers:
-    results = evaluation.results
-    return _Numbers(
-        oxygen_pct=rounded(_PERCENT * results.oxygen),
-        oxygen_kpa=rounded(results.oxygen_pressure / _KILOPASCAL),
-        to_marks_s=results.to_marks,
-        recovered_s=results.recovered,
-        at_s=results.at,
-        gas_m3=results.gas,
-        required_m3_h=rounded(results.required * SECONDS_PER_HOUR),
-        restore_m3_h=rounded(results.restore * SECONDS_PER_HOUR),
-    )
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,8 +32,7 @@ class Told:
     tables: Tables
     without: Evaluation  # the same cases with every stacked factor at 1
     leading: Integers  # row of the case that each room's standing rests on
-    _numbers: _Numbers = field(init=False)
-    _bare: _Numbers = field(init=False)
+    _all_cases: Sequence[Case] = field(init=False)  # by row, whether shown or not
     _cases: tuple[Integers, ...] = field(init=False)  # rows shown, by room
     _assumed: tuple[Integers, ...] = field(init=False)
     _ventilation: Mapping[str, Floats] = field(init=False)
@@ -72,8 +41,7 @@ class Told:
     def __post_init__(self) -> None:
         """Lay out once what every room is told from."""
         for name, value in (
-            ("_numbers", _numbers(self.tables.cases)),
-            ("_bare", _numbers(self.without)),
+            ("_all_cases", told_cases(self.tables, self.without)),
             ("_cases", _rows_by_room(self.tables)),
             ("_assumed", _by_room(self.tables.assumed.room, self.tables)),
             ("_ventilation", _ventilation(self.tables)),
@@ -83,7 +51,7 @@ class Told:
 
     def cases(self, row: int) -> tuple[Case, ...]:
         """The cases of a room, in the order of releases, the largest first."""
-        return tuple(self._case(int(case)) for case in self._cases[row])
+        return tuple(self._all_cases[case] for case in self._cases[row].tolist())
 
     def deciding(self, row: int) -> int | None:
         """Place of the case that the standing rests on."""
@@ -130,64 +98,6 @@ class Told:
             matters=bool(assumed.matters[place]),
             decides=bool(self.tables.decides[place]),
         )
-
-    def _case(self, row: int) -> Case:
-        table, found = self.tables.cases.table, self._numbers
-        release, guards = RELEASES[int(table.release[row])], self.tables.cases.guards
-        deficient, danger, critical = (_or_none(each) for each in found.to_marks_s[row])
-        return Case(
-            release=release.slug,
-            airflow=AIRFLOWS[int(table.airflow[row])],
-            hazard=HAZARDS[int(table.hazard[row])].slug,
-            counts=bool(table.counts[row]),
-            fluids=tuple(fluids_of(self.tables, row)),
-            vessels=tuple(vessels_of(self.tables, row)),
-            oxygen_pct=float(found.oxygen_pct[row]),
-            oxygen_kpa=float(found.oxygen_kpa[row]),
-            at_s=float(found.at_s[row]),
-            to_deficient_s=deficient,
-            to_danger_s=danger,
-            to_critical_s=critical,
-            recovered_s=_or_none(found.recovered_s[row]),
-            gas_m3=float(found.gas_m3[row]),
-            required_m3_h=_or_none(found.required_m3_h[row]),
-            required_reason=_AT_ONCE if release.at_once else None,
-            restore_m3_h=_or_none(found.restore_m3_h[row]),
-            alarm_s=_or_none(guards.alarm[row]),
-            margin_s=_or_none(guards.margin[row]),
-            mark=int(self.tables.cases.results.mark[row]),
-            without_margins=self._without_margins(row),
-            method=self._method(row),
-        )
-
-    def _without_margins(self, row: int) -> dict[str, float | None]:
-        bare = self._bare
-        deficient, danger, critical = (_or_none(each) for each in bare.to_marks_s[row])
-        return {
-            "oxygen_pct": _or_none(bare.oxygen_pct[row]),
-            "oxygen_kpa": _or_none(bare.oxygen_kpa[row]),
-            "at_s": _or_none(bare.at_s[row]),
-            "to_deficient_s": deficient,
-            "to_danger_s": danger,
-            "to_critical_s": critical,
-            "recovered_s": _or_none(bare.recovered_s[row]),
-            "gas_m3": _or_none(bare.gas_m3[row]),
-            "net_volume_m3": number(float(self.without.table.volume[row])),
-            "required_m3_h": _or_none(bare.required_m3_h[row]),
-            "restore_m3_h": _or_none(bare.restore_m3_h[row]),
-        }
-
-    def _method(self, row: int) -> tuple[str, ...]:
-        table = self.tables.cases.table
-        release = RELEASES[int(table.release[row])]
-        if release.slug != LARGEST_VESSEL:
-            return release.method
-        pushed = bool(table.given.bases.by_displacement[table.room[row]])
-        return (*release.method, "mixing/displacement" if pushed else "mixing/while-displacing")
-
-
-def _or_none(value: float) -> float | None:
-    return float(value) if np.isfinite(value) else None
 
 
 def _by_room(room: Integers, tables: Tables) -> tuple[Integers, ...]:

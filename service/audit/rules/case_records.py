@@ -1,46 +1,52 @@
-"""Which records a case lets go."""
+"""Which records each case lets go, laid out once for many rooms."""
 
-from service.audit.inputs import FluidValues, Reference, VesselValues
+import itertools
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from service.audit.cases import CaseTable
+from service.audit.inputs import Reference, RoomValues
 from service.audit.releases import NO_VESSEL
-from service.audit.rules.rule import Tables
+from service.physics.arrays import Integers
 
 UNKNOWN_PURGE_GAS = "unknown purge gas"
 
 
-def members_of(tables: Tables, row: int) -> list[int]:
-    """Rows of the sources that a case lets go, in record order."""
-    table = tables.cases.table
-    first, end = table.member_start[row], table.member_start[row + 1]
-    return [int(source) for source in table.member_source[first:end]]
+@dataclass(frozen=True, slots=True)
+class CaseRecords:
+    """One entry a case, in record order."""
+
+    sources: Sequence[Sequence[int]]  # rows of the sources
+    vessels: Sequence[tuple[Reference, ...]]
+    fluids: Sequence[tuple[str, ...]]  # tags, each once
 
 
-def vessel_values(tables: Tables, row: int) -> list[VesselValues]:
-    """The vessels that a case lets go, in record order."""
-    table = tables.cases.table
-    room = tables.room(int(table.room[row]))
-    vessels = table.sources.vessel[members_of(tables, row)]
-    return [
-        room.vessels[int(table.given.vessels.source[vessel])]
-        for vessel in vessels
-        if vessel != NO_VESSEL
-    ]
+def case_records(rooms: Sequence[RoomValues], sound: Integers, table: CaseTable) -> CaseRecords:
+    """Look up what each case lets go."""
+    named = _source_records(rooms, sound, table)
+    members, starts = table.member_source.tolist(), table.member_start.tolist()
+    sources = [members[first:end] for first, end in itertools.pairwise(starts)]
+    found = [[named[source] for source in row] for row in sources]
+    return CaseRecords(
+        sources,
+        vessels=[tuple(vessel for vessel, _ in row if vessel is not None) for row in found],
+        fluids=[tuple(dict.fromkeys(fluid for _, fluid in row)) for row in found],
+    )
 
 
-def vessels_of(tables: Tables, row: int) -> list[Reference]:
-    """References to the vessels that a case lets go, in record order."""
-    return [vessel.record for vessel in vessel_values(tables, row)]
-
-
-def fluids_of(tables: Tables, row: int) -> list[str]:
-    """Tags of the fluids that a case lets go, each once."""
-    table = tables.cases.table
-    room = tables.room(int(table.room[row]))
-    tags = [vessel.fluid.record.tag for vessel in vessel_values(tables, row)]
-    purges = any(table.sources.vessel[source] == NO_VESSEL for source in members_of(tables, row))
-    if purges:
-        tags.append(_purge_gas(room.purge_fluid))
-    return list(dict.fromkeys(tags))
-
-
-def _purge_gas(fluid: FluidValues | None) -> str:
-    return UNKNOWN_PURGE_GAS if fluid is None else fluid.record.tag
+def _source_records(
+    rooms: Sequence[RoomValues], sound: Integers, table: CaseTable
+) -> list[tuple[Reference | None, str]]:
+    """The vessel and the tag of the fluid of each source; purge gas has no vessel."""
+    place = table.given.vessels.source.tolist()
+    named: list[tuple[Reference | None, str]] = []
+    for room, vessel in zip(
+        sound[table.sources.room].tolist(), table.sources.vessel.tolist(), strict=True
+    ):
+        if vessel == NO_VESSEL:
+            fluid = rooms[room].purge_fluid
+            named.append((None, UNKNOWN_PURGE_GAS if fluid is None else fluid.record.tag))
+        else:
+            found = rooms[room].vessels[place[vessel]]
+            named.append((found.record, found.fluid.record.tag))
+    return named

@@ -12,7 +12,6 @@ from service.audit.air import AIRFLOWS, LOST
 from service.audit.assessment import SEVERITIES
 from service.audit.hazards import HAZARDS, OXYGEN_LOW
 from service.audit.releases import BOIL_OFF, RELEASES
-from service.audit.rules.case_records import fluids_of, vessels_of
 from service.audit.rules.kinds import never
 from service.audit.rules.remedies import boil_off_remedy, largest_vessel_remedy
 from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables
@@ -93,45 +92,36 @@ def _statement(tables: Tables, row: int) -> str:
     level = oxygen_text(100.0 * float(results.oxygen[row]), low=low)
     pressure = float(results.oxygen_pressure[row]) / 1000.0
     mark = 100.0 * float(table.oxygen_marks[row, place])
-    crossed = f"{'below' if low else 'above'} the {_mark_name(low, place)} mark of {mark:.4g} %"
-    verb = "fall" if low else "rise"
+    name = (LOW_MARKS if low else HIGH_MARKS)[place]
     return (
-        f"{_event(tables, row)}, oxygen would {verb} to {level} ({pressure:.1f} kPa), {crossed}"
-        f"{_in_time(tables, row)}{_recovery(tables, row)}{_caution(tables, row)}."
+        f"{_event(tables, row)}, oxygen would {'fall' if low else 'rise'} to {level} "
+        f"({pressure:.1f} kPa), {'below' if low else 'above'} the {name} mark of {mark:.4g} %; "
+        f"{_times(tables, row)}{_caution(tables, row)}."
     )
-
-
-def _mark_name(low: bool, place: int) -> str:
-    return (LOW_MARKS if low else HIGH_MARKS)[place]
 
 
 def _event(tables: Tables, row: int) -> str:
     table = tables.cases.table
-    tags = listed([record.tag for record in vessels_of(tables, row)] or ["the purge gas"])
-    gas = listed(fluids_of(tables, row))
+    vessels = [record.tag for record in tables.records.vessels[row]]
+    source, gas = listed(vessels or ["the purge"]), listed(tables.records.fluids[row])
     if RELEASES[int(table.release[row])].slug != BOIL_OFF:
-        return f"If {tags} let go of all {gas} at once"
+        return f"If {source} let go of all {gas} at once"
     lost = AIRFLOWS[int(table.airflow[row])] == LOST
-    air = "with power lost" if lost else "by normal evaporation alone"
-    return f"With the {gas} from {tags} and the air that counts {air}"
+    air = "with its power lost" if lost else "as measured"
+    return f"By what {source} give off of {gas} in normal use, with the ventilation {air}"
 
 
-def _in_time(tables: Tables, row: int) -> str:
-    results = tables.cases.results
-    seconds = float(results.to_marks[row, 0])
-    at_once = bool(tables.cases.table.at_once[row])
-    return "" if at_once or np.isnan(seconds) else f", passing the first after {_time(seconds)}"
-
-
-def _recovery(tables: Tables, row: int) -> str:
-    seconds = float(tables.cases.results.recovered[row])
-    if np.isnan(seconds):
-        return ", and would not be back within the time followed"
-    return f", and be back after {_time(seconds)}"
-
-
-def _time(seconds: float) -> str:
-    return duration_text(seconds)
+def _times(tables: Tables, row: int) -> str:
+    """When the first mark is passed, and when the room is back inside it."""
+    table, results = tables.cases.table, tables.cases.results
+    passed, back = float(results.to_marks[row, 0]), float(results.recovered[row])
+    first = 100.0 * float(table.oxygen_marks[row, 0])
+    start = "" if table.at_once[row] else f"it passes {first:.4g} % after {duration_text(passed)} "
+    if np.isnan(back):
+        end = f"and is not back within {duration_text(float(results.course.times[row, -1]))}"
+    else:
+        end = f"and is back at {first:.4g} % after {duration_text(back)}"
+    return f"{start}{end}" if start else f"it {end.removeprefix('and ')}"
 
 
 def _caution(tables: Tables, row: int) -> str:
@@ -163,7 +153,7 @@ def case_evidence(tables: Tables, row: int) -> dict[str, Any]:
         "alarm_s": number(float(guards.alarm[row])),
         "margin_s": number(float(guards.margin[row])),
         "safeguards": _held(guards, row),
-        "records": [as_record(record) for record in vessels_of(tables, row)],
+        "records": [as_record(record) for record in tables.records.vessels[row]],
     }
 
 

@@ -6,7 +6,6 @@ import math
 
 from service.audit.air import AIRFLOWS, AS_MEASURED
 from service.audit.columns import ROOM_KINDS
-from service.audit.rules.case_records import fluids_of, members_of
 from service.audit.rules.rule import Tables
 from service.audit.rules.words import at_least, at_most, listed
 from service.physics.constants import SECONDS_PER_HOUR
@@ -52,10 +51,10 @@ def _allowed_amount(tables: Tables, row: int) -> str:
     """The largest amount that stays inside the first mark, by the same calculation."""
     table = tables.cases.table
     share = _allowed_share(tables, row)
-    gas = listed(fluids_of(tables, row))
+    gas = listed(tables.records.fluids[row])
     if share <= 0.0:
         return f"no {gas}"
-    vessels = [int(table.sources.vessel[source]) for source in members_of(tables, row)]
+    vessels = [int(table.sources.vessel[source]) for source in tables.records.sources[row]]
     mass = [float(table.stock.held_mass[vessel]) for vessel in vessels]
     given = table.given
     if any(math.isnan(float(given.vessels.capacity_volume[vessel])) for vessel in vessels):

@@ -13,6 +13,7 @@ from service.audit.assumptions import ASSUMPTIONS, Assumptions
 from service.audit.columns import Moments
 from service.audit.evaluation import Evaluation
 from service.audit.inputs import Reference, RoomValues
+from service.audit.rules.case_records import CaseRecords
 from service.physics.arrays import Floats, Integers, Mask
 
 
@@ -63,6 +64,7 @@ class Tables:
     cases: Evaluation
     assumed: Assumptions
     decides: Mask  # by assumption
+    records: CaseRecords
 
     def room(self, row: int) -> RoomValues:
         """The room of a row of the columns."""

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 import numpy as np
 
@@ -27,13 +27,12 @@ def at_least(value: float) -> str:
     return _three_figures(value, math.ceil)
 
 
-def _three_figures(value: float, rounding: object) -> str:
+def _three_figures(value: float, rounding: Callable[[float], int]) -> str:
     if value <= 0.0:
         return "0"
     places = 2 - math.floor(math.log10(value))
     scale = 10.0**places
-    whole = math.floor if rounding is math.floor else math.ceil
-    return f"{whole(round(value * scale, 6)) / scale:.{max(places, 0)}f}"
+    return f"{rounding(round(value * scale, 6)) / scale:.{max(places, 0)}f}"
 
 
 def duration_text(seconds: float) -> str:
@@ -54,7 +53,7 @@ def listed(names: Sequence[str]) -> str:
     """Names as a list in a sentence; more than four are counted."""
     if len(names) > 4:
         return f"{', '.join(names[:3])} and {len(names) - 3} more"
-    return " and ".join(filter(None, [", ".join(names[:-1]), names[-1]]))
+    return " and ".join(filter(None, [", ".join(names[:-1]), *names[-1:]]))
 
 
 def as_record(reference: Reference) -> dict[str, str | int]:
