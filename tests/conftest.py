@@ -10,7 +10,7 @@ from service.store.engine import Database
 from service.store.memory import StatusMemory
 from service.store.migrate import upgrade
 from service.store.writer import Writer
-from tests.databases import TEMPLATE, cluster
+from tests.databases import cluster
 
 MOMENT = datetime(2027, 3, 1, 8, tzinfo=UTC)
 
@@ -39,7 +39,7 @@ def database_url(request, tmp_path):
         yield f"sqlite:///{file}"
     else:
         running = request.getfixturevalue("postgresql_cluster")
-        with running.copy_of(TEMPLATE) as url:
+        with running.migrated() as url:
             yield url
 
 

@@ -1,11 +1,12 @@
 """Answers kept for requests that may come again with the same Idempotency-Key."""
 
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from datetime import datetime
 
 from sqlalchemy import bindparam, delete, insert, select
 
+from service.store.rows import columns_of
 from service.store.session import WriteSession
 from service.store.tables.registry import ANSWER
 
@@ -33,7 +34,9 @@ def find_answer(session: WriteSession, key_id: str, path: str, token: str) -> St
 
 def keep_answer(session: WriteSession, answer: StoredAnswer) -> None:
     """Keep an answer, in the transaction of what it answers."""
-    session.connection.execute(insert(ANSWER), asdict(answer) | {"headers": dict(answer.headers)})
+    session.connection.execute(
+        insert(ANSWER), columns_of(answer) | {"headers": dict(answer.headers)}
+    )
 
 
 def drop_old_answers(session: WriteSession, before: datetime) -> int:

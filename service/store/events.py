@@ -1,11 +1,12 @@
 """Events: what subscribers are told, written in the transaction of what happened."""
 
 from collections.abc import Iterable
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from typing import Final
 
 from sqlalchemy import Connection, bindparam, func, insert, select, update
 
+from service.store.rows import columns_of
 from service.store.scope import Scope, within
 from service.store.session import WriteSession
 from service.store.tables.registry import EVENT
@@ -31,7 +32,7 @@ class StoredEvent:
 
 def append_events(session: WriteSession, events: Iterable[StoredEvent]) -> None:
     """Append events; the one writer of SQLite gives them their place in the feed at once."""
-    rows = [asdict(event) for event in events]
+    rows = [columns_of(event) for event in events]
     if not rows:
         return
     if session.dialect == SQLITE:

@@ -32,6 +32,12 @@ class Head:
 
 
 _HEAD = select(HEAD).where(HEAD.c.site_id == bindparam("site"))
+_HEADS = (
+    select(HEAD)
+    .where(HEAD.c.site_id.in_(bindparam("some", expanding=True)))
+    .order_by(HEAD.c.site_id)
+)
+_LOCKED = _HEADS.with_for_update()
 _POSITION = (
     select(func.max(CHANGE.c.position))
     .where(CHANGE.c.site_id == bindparam("site"))
@@ -78,8 +84,7 @@ def heads_for_writing(
     connection: Connection, site_ids: Iterable[str], *, lock: bool
 ) -> dict[str, Head]:
     """Return the heads of sites in id order, locked until the transaction ends."""
-    query = select(HEAD).where(HEAD.c.site_id.in_(sorted(site_ids))).order_by(HEAD.c.site_id)
-    rows = connection.execute(query.with_for_update() if lock else query)
+    rows = connection.execute(_LOCKED if lock else _HEADS, {"some": sorted(site_ids)})
     return {row.site_id: _head(row) for row in rows}
 
 

@@ -7,7 +7,7 @@ import hashlib
 import json
 import zlib
 from collections.abc import Iterable
-from dataclasses import asdict, dataclass, replace
+from dataclasses import dataclass, replace
 from datetime import datetime
 from typing import Any, Final, TypeAlias
 
@@ -17,6 +17,7 @@ from sqlalchemy import Connection, Row, Select, bindparam, func, insert, or_, se
 from service.store.heads import INSTALLATION, sees_head
 from service.store.parts import in_parts
 from service.store.records import Record, body, canonical, record_from_body
+from service.store.rows import columns_of
 from service.store.scope import Scope, within
 from service.store.session import WriteSession
 from service.store.tables.registry import (
@@ -103,8 +104,8 @@ def append_change(session: WriteSession, entry: ChangeEntry) -> None:
         chain_hash=entry.chain_hash,
         wanted_position=entry.position if entry.wants else head.wanted_position,
     )
-    session.connection.execute(_INSERT_CHANGE, asdict(entry))
-    session.connection.execute(_MOVE_HEAD, {**asdict(moved), "of_site": head.site_id})
+    session.connection.execute(_INSERT_CHANGE, columns_of(entry))
+    session.connection.execute(_MOVE_HEAD, {**columns_of(moved), "of_site": head.site_id})
     session.move_head(moved)
 
 
@@ -317,7 +318,7 @@ def _assessment_row(assessment: StoredAssessment) -> dict[str, Any]:
         "inputs": zlib.compress(assessment.inputs),
         "results": zlib.compress(assessment.results),
     }
-    return asdict(assessment) | packed
+    return columns_of(assessment) | packed
 
 
 def assessment_of_row(row: Row[Any]) -> StoredAssessment:

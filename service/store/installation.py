@@ -1,13 +1,14 @@
 """The database's own row: its lineage, its secret and the method that computes."""
 
 import secrets
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from datetime import datetime
 from typing import Final
 
 from sqlalchemy import Connection, select, update
 
 from service.store.ids import new_record_id
+from service.store.rows import columns_of
 from service.store.scope import EVERYTHING, Scope
 from service.store.session import WriteSession
 from service.store.tables.registry import INSTALLATION
@@ -51,7 +52,7 @@ def ensure_installation(session: WriteSession, method_version: str = "") -> Inst
         created_at=session.moment,
     )
     # Two replicas may start at once: one row goes in, and both return that one.
-    insert_missing(session.connection, INSTALLATION, [asdict(new) | {"singleton": 1}])
+    insert_missing(session.connection, INSTALLATION, [columns_of(new) | {"singleton": 1}])
     return installation_of(EVERYTHING, session.connection) or new
 
 

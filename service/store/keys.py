@@ -1,11 +1,12 @@
 """Keys, by digest: their texts are not kept."""
 
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from datetime import datetime
 from typing import Any
 
 from sqlalchemy import Connection, RowMapping, bindparam, insert, select, update
 
+from service.store.rows import columns_of
 from service.store.scope import Scope
 from service.store.session import WriteSession
 from service.store.tables.registry import KEY
@@ -49,7 +50,7 @@ def list_keys(scope: Scope, connection: Connection) -> list[Key]:
 def add_key(session: WriteSession, key: Key) -> None:
     """Add a key."""
     sites = None if key.sites is None else sorted(key.sites)
-    session.connection.execute(insert(KEY), asdict(key) | {"sites": sites})
+    session.connection.execute(insert(KEY), columns_of(key) | {"sites": sites})
 
 
 def revoke_key(session: WriteSession, key_id: str, replaced_by: str | None = None) -> bool:

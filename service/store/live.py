@@ -10,10 +10,8 @@ from typing import Any, Final, NamedTuple, TypeVar
 
 from sqlalchemy import (
     BindParameter,
-    ColumnElement,
     Connection,
     Delete,
-    FromClause,
     Insert,
     Select,
     Table,
@@ -59,8 +57,7 @@ def get_records(
     scope: Scope, connection: Connection, kind: str, ids: Iterable[str]
 ) -> list[Record]:
     """Return the records of some ids that are there, in record order."""
-    table = TABLES[kind]
-    return sorted(_many(scope, connection, kind, table, table.c["id"], ids), key=_record_order)
+    return sorted(_many(scope, connection, kind, _by_ids(kind), ids), key=_record_order)
 
 
 def record_by_tag(
@@ -144,18 +141,14 @@ def equipment_of(scope: Scope, connection: Connection, room_ids: Iterable[str]) 
     They are in the order of their kinds, then in record order.
     """
     rooms = sorted(set(room_ids))
-    units, serving = TABLES[_UNIT], VENTILATION_UNIT_ROOM
-    joined = units.join(serving, serving.c["unit_id"] == units.c["id"])
-    served = {
+    # A unit that serves two of the rooms is found once for each.
+    found = {
         record.id: record
-        for record in _many(scope, connection, _UNIT, joined, serving.c["room_id"], rooms)
+        for kind in (_UNIT, "vessel", "detector")
+        for record in _many(scope, connection, kind, _by_rooms(kind), rooms)
     }
-    found = list(served.values())
-    for kind in ("vessel", "detector"):
-        table = TABLES[kind]
-        found += _many(scope, connection, kind, table, table.c["room_id"], rooms)
     order = {kind: number for number, kind in enumerate(TABLES)}
-    return sorted(found, key=lambda record: (order[record.kind], record.id))
+    return sorted(found.values(), key=lambda record: (order[record.kind], record.id))
 
 
 def rooms_of_site(scope: Scope, connection: Connection, site_id: str) -> list[str]:
@@ -292,16 +285,16 @@ def _many(
     scope: Scope,
     connection: Connection,
     kind: str,
-    source: FromClause,
-    column: ColumnElement[Any],
-    values: Iterable[str],
+    query: Select[*tuple[Any, ...]],
+    ids: Iterable[str],
 ) -> list[Record]:
-    table = TABLES[kind]
-    found: list[Record] = []
-    for some in in_parts(values):
-        query = select(*table.c).select_from(source).where(column.in_(some))
-        found += _records(connection, kind, _seen(scope, kind, query))
-    return found
+    read = reader_of(kind)
+    return [
+        read(row)
+        for some in in_parts(ids)
+        for row in connection.execute(query, {"some": some}).mappings()
+        if scope.sees(row["site_id"])
+    ]
 
 
 def _records(connection: Connection, kind: str, query: Select[*tuple[Any, ...]]) -> list[Record]:
@@ -323,11 +316,28 @@ def _record_order(record: Record) -> str:
 
 # The statements by key, built once: building one costs as much as running it.
 
+_SOME: BindParameter[str] = bindparam("some", expanding=True)
+
 
 @cache
 def _by_id(kind: str) -> Select[*tuple[Any, ...]]:
     table = TABLES[kind]
     return select(table).where(table.c["id"] == bindparam("id"))
+
+
+@cache
+def _by_ids(kind: str) -> Select[*tuple[Any, ...]]:
+    table = TABLES[kind]
+    return select(table).where(table.c["id"].in_(_SOME))
+
+
+@cache
+def _by_rooms(kind: str) -> Select[*tuple[Any, ...]]:
+    table, serving = TABLES[kind], VENTILATION_UNIT_ROOM
+    if kind != _UNIT:
+        return select(table).where(table.c["room_id"].in_(_SOME))
+    joined = table.join(serving, serving.c["unit_id"] == table.c["id"])
+    return select(*table.c).select_from(joined).where(serving.c["room_id"].in_(_SOME))
 
 
 @cache

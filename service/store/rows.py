@@ -1,6 +1,7 @@
 """Between records and rows: which column holds which field, and in which form."""
 
 from collections.abc import Callable
+from dataclasses import fields
 from datetime import datetime
 from functools import cache
 from typing import Any
@@ -27,6 +28,11 @@ def instant_names(kind: str) -> frozenset[str]:
     """Return the fields of a kind that hold a moment."""
     columns = TABLES[kind].columns
     return frozenset(name for name in field_names(kind) if isinstance(columns[name].type, Instant))
+
+
+def columns_of(value: Any) -> dict[str, Any]:
+    """Return the fields of a value that is kept as it is; `asdict` would copy each deeply."""
+    return {field.name: getattr(value, field.name) for field in fields(value)}
 
 
 def row_of(record: Record) -> dict[str, Any]:
@@ -61,9 +67,9 @@ def reader_of(kind: str) -> Callable[[RowMapping], Record]:
     names, instants = field_names(kind), instant_names(kind)
 
     def read(row: RowMapping) -> Record:
-        fields = {name: row[name] for name in names}
+        given = {name: row[name] for name in names}
         for name in instants:
-            fields[name] = _text(fields[name])
+            given[name] = _text(given[name])
         return Record(
             kind=kind,
             id=row["id"],
@@ -71,7 +77,7 @@ def reader_of(kind: str) -> Callable[[RowMapping], Record]:
             revision=row["revision"],
             created_at=row["created_at"],
             updated_at=row["updated_at"],
-            fields=fields,
+            fields=given,
         )
 
     return read

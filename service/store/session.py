@@ -1,7 +1,7 @@
 """One write transaction: who writes, when, which heads it holds, and what it will tell."""
 
 from collections.abc import Iterable
-from dataclasses import asdict, dataclass, field
+from dataclasses import dataclass, field
 from datetime import datetime, timedelta
 from typing import Final
 
@@ -15,6 +15,7 @@ from service.store.heads import (
     heads_for_writing,
 )
 from service.store.memory import Published, SiteHead
+from service.store.rows import columns_of
 from service.store.scope import Scope
 from service.store.tables.registry import HEAD
 from service.store.upsert import insert_missing
@@ -90,6 +91,6 @@ class WriteSession:
         missing = site_ids - found.keys()
         if not missing:
             return found
-        new = [asdict(Head(site, 0, BEFORE_ALL, NO_HASH, 0)) for site in sorted(missing)]
+        new = [columns_of(Head(site, 0, BEFORE_ALL, NO_HASH, 0)) for site in sorted(missing)]
         insert_missing(self.connection, HEAD, new)
         return heads_for_writing(self.connection, site_ids, lock=lock)

@@ -364,7 +364,7 @@ def raise_in(session, state, runs=None):
 
 @pytest.fixture
 def postgresql_database(postgresql_cluster):
-    with postgresql_cluster.copy_of("migrated") as url, Database(url) as opened:
+    with postgresql_cluster.migrated() as url, Database(url) as opened:
         yield opened
 
 
