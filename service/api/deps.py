@@ -28,7 +28,13 @@ from service.api.problems import request_id_of
 from service.api.service import Service, service_of
 from service.changes.method import refuse_older_method
 from service.clock import moment_of
-from service.errors import FieldsRefused, IdempotencyMismatch, IdempotencyRunning, SecretShownOnce
+from service.errors import (
+    FieldsRefused,
+    IdempotencyMismatch,
+    IdempotencyRunning,
+    RimewardError,
+    SecretShownOnce,
+)
 from service.store.answers import StoredAnswer, find_answer, keep_answer
 from service.store.scope import Scope
 from service.store.session import WriteContext, WriteSession
@@ -106,16 +112,18 @@ class Write:
             return (await self._run(job)).response()
         asked = Asked(self.caller.scope.key_id, self.request.url.path, token, self._fingerprint())
         with _in_flight(self.service.in_flight, asked):
-            once = partial(_once, job, asked)
             try:
-                answered = await self._run(once)
-            except IntegrityError:
-                # Another replica kept the answer to the same request while this one ran: what was
-                # done here is rolled back, and the second time that answer is found.
-                answered = await self._run(once)
+                answered = await self._run(partial(_once, job, asked))
+            except (IntegrityError, RimewardError):
+                # Another replica may have done the same request while this one ran, so that what
+                # it made stood in the way here. Then its answer is there now.
+                kept = await self._run(partial(_kept, asked))
+                if kept is None:
+                    raise
+                answered = kept
         return answered.response()
 
-    async def _run(self, job: Callable[[WriteSession], Answered]) -> Answered:
+    async def _run(self, job: Callable[[WriteSession], Done]) -> Done:
         return await self.service.writer.run(partial(_by_this_method, job), self._context())
 
     def _context(self) -> WriteContext:
@@ -170,7 +178,7 @@ def _in_flight(running: set[tuple[str, str, str]], asked: Asked) -> Iterator[Non
         running.discard(request)
 
 
-def _by_this_method(job: Callable[[WriteSession], Answered], session: WriteSession) -> Answered:
+def _by_this_method(job: Callable[[WriteSession], Done], session: WriteSession) -> Done:
     refuse_older_method(session)
     return job(session)
 
@@ -187,9 +195,9 @@ def _answered(
 
 def _once(job: Callable[[WriteSession], Answered], asked: Asked, session: WriteSession) -> Answered:
     """Run a job, or give the answer that was kept when the same request came before."""
-    kept = find_answer(session, asked.key_id, asked.path, asked.token)
+    kept = _kept(asked, session)
     if kept is not None:
-        return _replayed(kept, asked)
+        return kept
     answered = job(session)
     keep_answer(
         session,
@@ -207,7 +215,11 @@ def _once(job: Callable[[WriteSession], Answered], asked: Asked, session: WriteS
     return answered
 
 
-def _replayed(kept: StoredAnswer, asked: Asked) -> Answered:
+def _kept(asked: Asked, session: WriteSession) -> Answered | None:
+    """Give the answer that was kept of a request, if it was done before."""
+    kept = find_answer(session, asked.key_id, asked.path, asked.token)
+    if kept is None:
+        return None
     if kept.fingerprint != asked.fingerprint:
         raise IdempotencyMismatch("This Idempotency-Key was used before for another request.")
     if kept.body is None:

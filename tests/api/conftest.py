@@ -53,15 +53,19 @@ def estate_in_a_file(estate_on_sqlite, tmp_path):
     return f"sqlite:///{tmp_path / 'copy.sqlite'}", made
 
 
+@pytest.fixture
+def postgresql_estate(estate_on_postgresql, postgresql_cluster):
+    """A copy of the estate on PostgreSQL, where several processes are needed."""
+    name, made = estate_on_postgresql
+    with postgresql_cluster.copy_of(name) as url:
+        yield url, made
+
+
 @pytest.fixture(params=BOTH)
 def copied_estate(request):
     """A copy of the estate on each kind of database: its address, and what is in it."""
-    if request.param == "sqlite":
-        yield request.getfixturevalue("estate_in_a_file")
-    else:
-        name, made = request.getfixturevalue("estate_on_postgresql")
-        with request.getfixturevalue("postgresql_cluster").copy_of(name) as url:
-            yield url, made
+    name = "estate_in_a_file" if request.param == "sqlite" else "postgresql_estate"
+    return request.getfixturevalue(name)
 
 
 @pytest.fixture

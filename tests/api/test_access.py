@@ -201,7 +201,8 @@ def test_another_sites_room_cannot_be_named_in_a_new_record(north, estate):
     for path, body in tries:
         # A 409 would say that the tag is taken there.
         assert north("POST", f"/v1/{path}", body).status_code in (404, 422), (path, body)
-    moved = north("PATCH", f"/v1/vessels/{estate.north.vessel['id']}", {"room_id": south.room["id"]})
+    vessel = estate.north.vessel["id"]
+    moved = north("PATCH", f"/v1/vessels/{vessel}", {"room_id": south.room["id"]})
     assert moved.status_code == 422
     assert north("POST", "/v1/sites", {"tag": "EAST"}).status_code == 403
 

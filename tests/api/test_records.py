@@ -158,7 +158,7 @@ def test_if_match_lets_one_of_two_writers_through(ask, estate):
 def test_if_none_match_saves_the_body_and_head_asks_for_headers_alone(ask, estate):
     path = f"/v1/rooms/{estate.north.room['id']}"
     whole = ask("GET", path)
-    spared = ask("GET", path, headers={"If-None-Match": f'W/{whole.headers["ETag"]}'})
+    spared = ask("GET", path, headers={"If-None-Match": f"W/{whole.headers['ETag']}"})
     assert (spared.status_code, spared.content) == (304, b"")
     head = ask("HEAD", path)
     assert head.status_code == 200
@@ -191,8 +191,9 @@ def test_an_external_id_in_two_sites_is_asked_for_with_its_site(ask, estate):
     room = ask.body(f"/v1/rooms/by-external-id/T-1?site={estate.south.site['tag']}")
     assert room["site_id"] == estate.south.site["id"]
     # A key that reaches one of the sites does not learn of the other.
-    assert ask.body("/v1/rooms/by-external-id/T-1", key=estate.keys["reader"])["site_id"] == (
-        estate.north.site["id"]
+    assert (
+        ask.body("/v1/rooms/by-external-id/T-1", key=estate.keys["reader"])["site_id"]
+        == (estate.north.site["id"])
     )
 
 
