@@ -1,6 +1,7 @@
 """Rooms whose numbers cannot be: why, as a sentence, before any formula sees them."""
 
 from collections.abc import Callable, Iterator
+from typing import Final
 
 import numpy as np
 
@@ -9,6 +10,10 @@ from service.physics.arrays import Floats, Integers, Mask
 from service.physics.constants import ATMOSPHERE_HIGHEST, ATMOSPHERE_LOWEST
 
 Held = Callable[[Floats], Mask]
+
+# What no record of a room can be, in any of the units met here; formulas would overflow beyond.
+_SMALLEST: Final = 1e-9
+_LARGEST: Final = 1e12
 
 
 def failures(given: Columns) -> tuple[str | None, ...]:
@@ -24,6 +29,7 @@ def _found(given: Columns) -> Iterator[tuple[int, str]]:
     yield from _of_rooms(given)
     yield from _of_vessels(given)
     yield from _of_units(given)
+    yield from _of_detectors(given)
 
 
 def _of_rooms(given: Columns) -> Iterator[tuple[int, str]]:
@@ -110,6 +116,20 @@ def _of_units(given: Columns) -> Iterator[tuple[int, str]]:
     )
 
 
+def _of_detectors(given: Columns) -> Iterator[tuple[int, str]]:
+    detectors = given.detectors
+    yield from _bad(
+        detectors.room,
+        _unknown_or(_positive, detectors.t90),
+        "The time of response of a detector is not above 0.",
+    )
+    yield from _bad(
+        detectors.room,
+        _unknown_or(_not_negative, detectors.delay),
+        "A detector's delay is below 0.",
+    )
+
+
 def _bad(room: Integers, held: Mask, sentence: str) -> Iterator[tuple[int, str]]:
     # Asked for what must hold, so that not-a-number fails.
     for index in room[~held]:
@@ -117,11 +137,11 @@ def _bad(room: Integers, held: Mask, sentence: str) -> Iterator[tuple[int, str]]
 
 
 def _positive(values: Floats) -> Mask:
-    return np.isfinite(values) & (values > 0.0)
+    return (values >= _SMALLEST) & (values <= _LARGEST)
 
 
 def _not_negative(values: Floats) -> Mask:
-    return np.isfinite(values) & (values >= 0.0)
+    return (values >= 0.0) & (values <= _LARGEST)
 
 
 def _unknown_or(held: Held, values: Floats) -> Mask:

@@ -16,8 +16,11 @@ ACKNOWLEDGED: Final = "acknowledged"
 ACCEPTED: Final = "accepted"
 CLEARED: Final = "cleared"
 
-#: Numbers that agree this far, relative, are the same.
+# Numbers that agree this far, relative, are the same.
 TOLERANCE: Final = 1e-9
+
+# Where the evidence keeps what an acceptance covers: its severity and its measure.
+TERMS: Final = "accepted"
 
 Identity = tuple[str, str, str, str | None]
 
@@ -78,7 +81,7 @@ def reconcile(
     is cleared when nothing breaks its rule any more. Back within ``reopen_days`` it is the same
     finding, and an acceptance that has not lapsed and still covers it holds again.
     """
-    known = {finding.identity: finding for finding in prior}
+    known = _newest_by_identity(prior)
     news: list[Finding] = []
     seen: set[Identity] = set()
     for judged in judgements:
@@ -90,10 +93,14 @@ def reconcile(
             after = _continued(before, judged, at, position)
             if after is not before:
                 news.append(after)
-    for before in prior:
-        if before.identity not in seen and before.state != CLEARED:
-            news.append(_cleared(before, at, position))
-    return tuple(news)
+    gone = [each for each in known.values() if each.identity not in seen and each.state != CLEARED]
+    return tuple(news) + tuple(_cleared(before, at, position) for before in gone)
+
+
+def _newest_by_identity(prior: Sequence[Finding]) -> dict[Identity, Finding]:
+    """One finding an identity: what stands before what is cleared, and the latest of those."""
+    in_order = sorted(prior, key=lambda finding: (finding.state != CLEARED, finding.changed_at))
+    return {finding.identity: finding for finding in in_order}
 
 
 def _identity(judged: Judgement) -> Identity:
@@ -150,7 +157,7 @@ def _continued(before: Finding, judged: Judgement, at: datetime, position: int) 
         measure=judged.measure,
         limit=judged.limit,
         statement=judged.statement,
-        evidence=judged.evidence,
+        evidence=_evidence(before, judged, state),
         remedy=judged.remedy,
         method=judged.method,
         source=judged.source,
@@ -174,17 +181,33 @@ def _state_after(before: Finding, judged: Judgement, at: datetime) -> str:
 
 
 def _covers(accepted: Finding, judged: Judgement, at: datetime) -> bool:
-    """Tell whether an acceptance still holds: not lapsed, and it has not become worse."""
+    """Tell whether an acceptance still holds: not lapsed, and no worse than what was accepted."""
     if accepted.expires_at is None or at >= accepted.expires_at:
         return False
-    if SEVERITIES.index(judged.severity) > SEVERITIES.index(accepted.severity):
+    terms = _terms(accepted)
+    if SEVERITIES.index(judged.severity) > SEVERITIES.index(terms["severity"]):
         return False
-    if accepted.measure is None or judged.measure is None:
-        return accepted.measure is judged.measure
-    slack = TOLERANCE * abs(accepted.measure)
+    measure = terms["measure"]
+    if measure is None or judged.measure is None:
+        return measure is judged.measure
+    slack = TOLERANCE * abs(measure)
     if judged.worse_is == "lower":
-        return judged.measure >= accepted.measure - slack
-    return judged.measure <= accepted.measure + slack
+        return bool(judged.measure >= measure - slack)
+    return bool(judged.measure <= measure + slack)
+
+
+def _terms(accepted: Finding) -> Mapping[str, Any]:
+    """What was accepted; kept in the evidence, since what is measured may improve meanwhile."""
+    own = {"severity": accepted.severity, "measure": accepted.measure}
+    terms: Mapping[str, Any] = accepted.evidence.get(TERMS, own)
+    return terms
+
+
+def _evidence(before: Finding, judged: Judgement, state: str) -> Mapping[str, Any]:
+    """The evidence of now, with the terms of an acceptance that goes on."""
+    if state != ACCEPTED:
+        return judged.evidence
+    return {**judged.evidence, TERMS: dict(_terms(before))}
 
 
 def _says_the_same(before: Finding, judged: Judgement) -> bool:
@@ -195,8 +218,12 @@ def _says_the_same(before: Finding, judged: Judgement) -> bool:
         and before.remedy == judged.remedy
         and _same(before.measure, judged.measure)
         and _same(before.limit, judged.limit)
-        and _same(before.evidence, judged.evidence)
+        and _same(_without_terms(before.evidence), judged.evidence)
     )
+
+
+def _without_terms(evidence: Mapping[str, Any]) -> Mapping[str, Any]:
+    return {name: value for name, value in evidence.items() if name != TERMS}
 
 
 def _same(one: Any, other: Any) -> bool:
@@ -213,17 +240,20 @@ def _same(one: Any, other: Any) -> bool:
 
 
 def _cleared(before: Finding, at: datetime, position: int) -> Finding:
+    accepted = before.state == ACCEPTED
+    evidence = {**before.evidence, TERMS: dict(_terms(before))} if accepted else before.evidence
     return replace(
         before,
         number=before.number + 1,
         position=position,
+        evidence=evidence,
         state=CLEARED,
         changed_at=at,
         cleared_at=at,
     )
 
 
-def standing(findings: Sequence[Finding], *, failed: bool) -> str:
+def standing(findings: Sequence[Finding], failed: bool = False) -> str:
     """Give a room's standing: that of its worst finding which is open, acknowledged or accepted.
 
     An accepted finding counts one step lower, and never below `attention` when it was major or
