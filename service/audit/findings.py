@@ -103,6 +103,11 @@ def _newest_by_identity(prior: Sequence[Finding]) -> dict[Identity, Finding]:
     return {finding.identity: finding for finding in in_order}
 
 
+def clear(prior: Sequence[Finding], *, at: datetime, position: int) -> tuple[Finding, ...]:
+    """Clear what is left of findings whose room is no longer there to be calculated."""
+    return tuple(_cleared(before, at, position) for before in prior if before.state != CLEARED)
+
+
 def _identity(judged: Judgement) -> Identity:
     return judged.rule, judged.subject.kind, judged.subject.id, judged.gas
 

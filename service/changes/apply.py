@@ -23,7 +23,7 @@ from service.errors import (
     StillReferred,
 )
 from service.store.records import Record, folded_tag
-from service.store.rows import instant_names
+from service.store.rows import instant_names, number_names
 
 
 @dataclass(frozen=True, slots=True)
@@ -178,10 +178,17 @@ def _fields_after(
     fields = {name: merged.get(name) for name in base}
     if fields["labels"] is None:
         fields["labels"] = {}
+    return written_one_way(kind, derived_fields(kind, fields, sent))
+
+
+def written_one_way(kind: str, fields: dict[str, Any]) -> dict[str, Any]:
+    """Write moments and numbers as they will be read back, so that they hash alike."""
     for name in instant_names(kind):
-        # One way of writing a moment, whoever sent it, so that a record reads back as it was hashed.
         fields[name] = None if fields[name] is None else text_of(moment_of(fields[name]))
-    return derived_fields(kind, fields, sent)
+    for name in number_names(kind):
+        # Adding zero takes the sign of a negative zero, which not every database keeps.
+        fields[name] = None if fields[name] is None else float(fields[name]) + 0.0
+    return fields
 
 
 def _check_site(

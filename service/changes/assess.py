@@ -7,9 +7,11 @@ from dataclasses import dataclass
 from datetime import datetime
 
 from service.audit.assessment import Assessment
-from service.audit.findings import Finding, reconcile, standing
+from service.audit.findings import Finding, clear, reconcile, standing
 from service.audit.inputs import RoomValues
 from service.audit.judge import assess_rooms
+from service.changes.apply import Applied
+from service.changes.neighbourhood import Neighbourhood
 from service.changes.room_values import values_of_rooms
 from service.store.records import Record
 
@@ -57,6 +59,21 @@ def assess(
             room, assessment, findings.get(room.record.id, ()), at, positions[room.site.id], new_id
         )
         for room, assessment in zip(rooms, assess_rooms(rooms, at=at), strict=True)
+    )
+
+
+def findings_of_gone(
+    after: Applied, before: Neighbourhood, *, at: datetime, positions: Mapping[str, int]
+) -> tuple[Finding, ...]:
+    """Clear the findings of rooms that the change removes: no calculation will do it later."""
+    gone = [pair.before for pair in after.pairs if pair.after is None and pair.before is not None]
+    return tuple(
+        finding
+        for room in gone
+        if room.kind == "room" and room.site_id is not None
+        for finding in clear(
+            before.findings.get(room.id, ()), at=at, position=positions[room.site_id]
+        )
     )
 
 

@@ -86,7 +86,16 @@ def neighbourhood(session: WriteSession, places: Sequence[Placed]) -> Neighbourh
         far_rooms=far,
         left_to_sweep=sweep,
         prior=loader.prior_of(reached),
-        findings=loader.findings_of(reached),
+        # Of rooms that go as well, even where the rest is left to the sweep: it would miss them.
+        findings=loader.findings_of(reached | _removed_rooms(places)),
+    )
+
+
+def _removed_rooms(places: Sequence[Placed]) -> frozenset[str]:
+    return frozenset(
+        place.record_id
+        for place in places
+        if place.change.kind == "room" and place.change.operation == REMOVE
     )
 
 

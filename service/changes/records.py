@@ -8,7 +8,7 @@ from functools import partial
 from typing import Any
 
 from service.changes.apply import Pair, applied
-from service.changes.assess import assess
+from service.changes.assess import assess, findings_of_gone
 from service.changes.neighbourhood import neighbourhood
 from service.changes.replace import Effect, Outcome, next_positions, replace
 from service.changes.requested import CHANGE, CREATE, REMOVE, Placed, RecordChange, placed
@@ -107,7 +107,8 @@ def carry_out(
         positions=next_positions(heads),
         new_id=partial(new_record_id, session.moment),
     )
-    outcome = Outcome(operation, after.pairs, assessed, before.prior, left_to_sweep)
+    cleared = findings_of_gone(after, before, at=session.moment, positions=next_positions(heads))
+    outcome = Outcome(operation, after.pairs, assessed, before.prior, left_to_sweep, cleared)
     effects = replace(session, heads, outcome)
     moved = {place.head_id for place, pair in zip(places, after.pairs, strict=True) if pair.changed}
     positions = {

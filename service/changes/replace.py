@@ -69,6 +69,7 @@ class Outcome:
     assessed: Sequence[Assessed]
     prior: Mapping[str, Prior]
     left_to_sweep: frozenset[str] = frozenset()
+    cleared: Sequence[Finding] = ()  # of rooms that went
 
 
 def next_positions(heads: Mapping[str, Head]) -> dict[str, int]:
@@ -112,7 +113,9 @@ def _append_site(
     if not pairs and not assessed and not wants:
         return
     stored = [_stored_assessment(one, position, outcome.operation) for one in assessed]
-    news = [_finding_row(finding, session) for one in assessed for finding in one.news]
+    cleared = [finding for finding in outcome.cleared if finding.site_id == site_id]
+    told = [*cleared, *(finding for one in assessed for finding in one.news)]
+    news = [_finding_row(finding, session) for finding in told]
     entry = _entry(session, site_id, position, outcome.operation, wants, pairs, stored, news)
     append_change(
         session,

@@ -11,7 +11,7 @@ from sqlalchemy import RowMapping
 from service.clock import moment_of, text_of
 from service.store.records import COMMON_FIELDS, Record, folded_tag
 from service.store.tables.registry import TABLES
-from service.store.types import Instant
+from service.store.types import Instant, Number
 
 _NOT_FIELDS = frozenset({"id", "site_id", "revision", "created_at", "updated_at", "tag_folded"})
 
@@ -33,6 +33,13 @@ def instant_names(kind: str) -> frozenset[str]:
 def columns_of(value: Any) -> dict[str, Any]:
     """Return the fields of a value that is kept as it is; `asdict` would copy each deeply."""
     return {field.name: getattr(value, field.name) for field in fields(value)}
+
+
+@cache
+def number_names(kind: str) -> frozenset[str]:
+    """Return the fields of a kind that hold a number which need not be whole."""
+    columns = TABLES[kind].columns
+    return frozenset(name for name in field_names(kind) if isinstance(columns[name].type, Number))
 
 
 def row_of(record: Record) -> dict[str, Any]:
