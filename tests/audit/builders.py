@@ -4,9 +4,12 @@ from __future__ import annotations
 
 from dataclasses import replace
 from datetime import UTC, datetime, timedelta
+from itertools import count
 from typing import Any
 
+from service.audit.assessment import Assessment, Case, Judgement
 from service.audit.bases import SHIPPED_SOURCES, SHIPPED_VALUES
+from service.audit.findings import Finding, reconcile, standing
 from service.audit.inputs import (
     BasisValues,
     DetectorValues,
@@ -16,6 +19,7 @@ from service.audit.inputs import (
     UnitValues,
     VesselValues,
 )
+from service.audit.judge import assess_rooms
 
 NOW = datetime(2027, 3, 1, 8, tzinfo=UTC)
 LATER = NOW + timedelta(days=100)
@@ -88,9 +92,7 @@ def a_vessel(litres: float = 50.0, fluid: FluidValues = NITROGEN, **fields: Any)
         "filled_by": "exchanged",
     }
     tag = fields.pop("tag", f"V-{litres:g}-{fluid.record.tag}")
-    return VesselValues(
-        record=a_reference("vessel", tag), fluid=fluid, **{**defaults, **fields}
-    )
+    return VesselValues(record=a_reference("vessel", tag), fluid=fluid, **{**defaults, **fields})
 
 
 def some_ice(kilograms: float = 10.0, **fields: Any) -> VesselValues:
@@ -157,3 +159,51 @@ def a_room(volume_m3: float = 70.0, **fields: Any) -> RoomValues:
         gross_volume=volume_m3,
         **{**defaults, **fields},
     )
+
+
+def assessed(*rooms: RoomValues, at: datetime = NOW) -> tuple[Assessment, ...]:
+    return assess_rooms(rooms, at=at)
+
+
+def judged(room: RoomValues, rule: str, *, at: datetime = NOW) -> Judgement | None:
+    """The judgement of a rule on a room by itself, or None where it is not broken."""
+    found = [each for each in assessed(room, at=at)[0].judgements if each.rule == rule]
+    return found[0] if found else None
+
+
+def severity(room: RoomValues, rule: str) -> str | None:
+    found = judged(room, rule)
+    return None if found is None else found.severity
+
+
+def case_of(
+    room: RoomValues,
+    release: str = "largest-vessel",
+    airflow: str = "as-measured",
+    hazard: str = "oxygen-low",
+) -> Case:
+    found = [
+        case
+        for case in assessed(room)[0].cases
+        if (case.release, case.airflow, case.hazard) == (release, airflow, hazard)
+    ]
+    assert len(found) == 1, f"{len(found)} cases"
+    return found[0]
+
+
+def findings_of(room: RoomValues, *, at: datetime = NOW) -> tuple[Finding, ...]:
+    """What a room nobody has looked at before is found to have."""
+    ids = (f"finding-{number}" for number in count(1))
+    return reconcile(
+        (),
+        assessed(room, at=at)[0].judgements,
+        room=room,
+        at=at,
+        position=1,
+        reopen_days=30,
+        new_id=lambda: next(ids),
+    )
+
+
+def standing_of(room: RoomValues) -> str:
+    return standing(findings_of(room), assessed(room)[0].failed is not None)
