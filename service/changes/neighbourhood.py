@@ -224,11 +224,11 @@ class _Loader:
 
     def take_rooms(self, room_ids: frozenset[str]) -> None:
         """Load rooms, what stands in them, and what they are judged by."""
-        if not room_ids:
-            return
-        self._take("room", room_ids)
-        for record in equipment_of(EVERYTHING, self._session.connection, sorted(room_ids)):
-            self.records[record.id] = record
+        if room_ids:
+            self._take("room", room_ids)
+            for record in equipment_of(EVERYTHING, self._session.connection, sorted(room_ids)):
+                self.records[record.id] = record
+        # A room that is only now made needs what its site is judged by as well.
         rooms = [r for r in self.records.values() if r.kind == "room" and r.id in room_ids]
         self._take("site", {room.site_id for room in rooms if room.site_id is not None})
         self._take("basis", self._ids_in("site", "basis_id"))
