@@ -86,7 +86,7 @@ def started(clock):
 
 
 @pytest.fixture
-def serve(started, copied_estate):
+def serve(copied_estate, started):
     """Give a started service on each kind of database, for some settings."""
 
     def serving(**changed):
@@ -109,7 +109,7 @@ def estate(copied_estate):
 
 
 @pytest.fixture
-def ask_one(started, estate_in_a_file):
+def ask_one(estate_in_a_file, started):
     """A started service on SQLite, where one database is enough."""
     url, made = estate_in_a_file
     return started(url, made.ask.keys)

@@ -103,7 +103,7 @@ def test_a_status_is_as_its_schema_says_and_its_tag_moves_with_the_room(ask, est
 
 
 @pytest.mark.postgresql
-def test_a_poll_never_misses_what_another_replica_has_written(started, postgresql_estate):
+def test_a_poll_never_misses_what_another_replica_has_written(postgresql_estate, started):
     url, made = postgresql_estate
     one, other = started(url, made.ask.keys), started(url, made.ask.keys)
     path = f"/v1/rooms/{made.north.room['id']}/status"

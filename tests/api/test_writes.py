@@ -82,7 +82,7 @@ def test_the_same_request_at_the_same_time_is_done_once(ask, estate):
 
 
 @pytest.mark.postgresql
-def test_the_same_request_to_two_replicas_is_done_once(started, postgresql_estate):
+def test_the_same_request_to_two_replicas_is_done_once(postgresql_estate, started):
     url, made = postgresql_estate
     replicas = [started(url, made.ask.keys) for _ in range(2)]
     body, headers = a_vessel(made.north.room, "RACE"), {"Idempotency-Key": "race-2"}

@@ -51,6 +51,24 @@ class VentilationRead(Growing):
     deciding_case: str | None
 
 
+class AcceptedCounts(Answer):
+    """How many accepted findings there are of each severity."""
+
+    critical: int
+    major: int
+    minor: int
+
+
+class FindingCounts(Growing):
+    """How many findings there are of each severity; those accepted apart."""
+
+    critical: int
+    major: int
+    minor: int
+    observation: int
+    accepted: AcceptedCounts
+
+
 class StatusBasis(Growing):
     """What a status and an assessment have in common."""
 
@@ -69,6 +87,7 @@ class StatusBasis(Growing):
     judges: str
     state: str
     standing: Standing
+    worst_oxygen_pct: float | None = Field(description="The lowest of the cases that count.")
     worst: WorstRead | None = Field(description="The case that decides; null for an empty room.")
     highest_oxygen: WorstRead | None
     ventilation: VentilationRead | None
@@ -80,13 +99,13 @@ class StatusBasis(Growing):
 class StatusRead(StatusBasis):
     """What a room's records say, in few words: the poll."""
 
-    findings: dict[str, Any] = Field(description="How many of each severity; those accepted apart.")
+    findings: FindingCounts
 
 
 class AssessmentRead(StatusBasis):
     """Everything that a room's records say, and what it rests on."""
 
-    findings_by_severity: dict[str, Any]
+    finding_counts: FindingCounts
     basis_id: RecordIdText
     basis_revision: int
     cause: str = Field(description="What made it be assessed.")

@@ -1,0 +1,131 @@
+"""Findings over HTTP: listed, filtered, paged, and as they stood."""
+
+from datetime import timedelta
+
+import pytest
+
+from service.api.schemas.findings import FindingRead
+from tests.api.estate import a_room, a_vessel
+
+
+@pytest.fixture
+def crowded(ask, estate):
+    """Rooms with more findings than one page holds."""
+    for number in range(4):
+        room = ask.made(
+            "rooms", a_room(estate.north.site, f"F-{number}", labels={"ward": str(number % 2)})
+        )
+        ask.made("vessels", a_vessel(room, f"F-{number}", capacity_l=120))
+        ask.clock.advance(timedelta(days=2))
+    return estate
+
+
+def every_page(ask, path, **options):
+    found, answer = [], ask.body(path, **options)
+    while True:
+        found += answer["items"]
+        if answer["next"] is None:
+            return found
+        answer = ask.body(f"{path}&cursor={answer['next']}", **options)
+
+
+def test_an_unguarded_dewar_in_a_small_room_is_found_and_told_with_cautions(ask, estate):
+    """A room of 57 m3 net with 120 L of nitrogen let go at once falls far below 19.5 % oxygen.
+
+    A litre of liquid nitrogen makes about 0.69 m3 of gas at room conditions (densities 807 kg/m3 at
+    its boiling point, 1.165 kg/m3 at 20 C and 101.325 kPa: common property tables, from memory).
+    """
+    room = ask.made("rooms", a_room(estate.north.site, "SMALL"))
+    ask.made("vessels", a_vessel(room, "BIG", capacity_l=120))
+    page = ask.body(f"/v1/findings?room_id={room['id']}&family=oxygen", key="reader")
+    assert "screening calculations" in page["cautions"]
+    worst = [finding for finding in page["items"] if finding["severity"] == "critical"]
+    assert worst
+    for finding in page["items"]:
+        FindingRead.model_validate(finding)
+        assert finding["room_id"] == room["id"]
+        assert finding["statement"]
+        assert ask.body(f"/v1/findings/{finding['id']}") == finding
+    status = ask.body(f"/v1/rooms/{room['id']}/status")
+    assert status["findings"]["critical"] == len(worst)
+
+
+def test_findings_are_filtered(ask, crowded):
+    everything = every_page(ask, "/v1/findings?limit=500")
+    assert len(everything) > 8
+    for name in ("room_id", "rule", "family", "severity", "state", "site_id"):
+        value = everything[0][name]
+        found = every_page(ask, f"/v1/findings?limit=500&{name}={value}")
+        assert found == [finding for finding in everything if finding[name] == value]
+    two = {"critical", "observation"}
+    found = every_page(ask, "/v1/findings?limit=500&severity=critical,observation")
+    assert found == [finding for finding in everything if finding["severity"] in two]
+    rooms = {room["id"] for room in ask.body("/v1/rooms?label.ward=1")["items"]}
+    found = every_page(ask, "/v1/findings?limit=500&label.ward=1")
+    assert {finding["room_id"] for finding in found} == rooms
+    counted = ask.body("/v1/findings?limit=1&total=true")
+    assert counted["total"] == len(everything)
+    assert every_page(ask, "/v1/findings?limit=500&site=NORTH") == [
+        finding for finding in everything if finding["site_id"] == crowded.north.site["id"]
+    ]
+
+
+def test_findings_are_filtered_by_age(ask, crowded):
+    now = ask.clock.now()
+    everything = every_page(ask, "/v1/findings?limit=500")
+    before = (now - timedelta(days=5)).isoformat()
+    found = every_page(ask, "/v1/findings?limit=500&older_than_days=5")
+    assert found == [finding for finding in everything if finding["opened_at"] < before]
+    assert 0 < len(found) < len(everything)
+
+
+@pytest.mark.parametrize(
+    ("query", "parameter"),
+    [
+        ("severity=bad", "severity"),
+        ("state=open,bad", "state"),
+        ("older_than_days=nan", "older_than_days"),
+        ("older_than_days=-1", "older_than_days"),
+        ("older_than_days=", "older_than_days"),
+        ("colour=red", "colour"),
+        ("sort=evidence", "sort"),
+    ],
+)
+def test_a_filter_that_means_nothing_is_named(ask_one, query, parameter):
+    answer = ask_one("GET", f"/v1/findings?{query}")
+    assert answer.status_code == 422
+    assert answer.json()["errors"][0]["parameter"] == parameter
+
+
+@pytest.mark.parametrize("sort", ["id", "-id", "severity", "-opened_at", "rule"])
+def test_each_finding_is_on_one_page_now_and_in_the_past(ask, crowded, sort):
+    now = every_page(ask, f"/v1/findings?limit=500&sort={sort}")
+    paged = every_page(ask, f"/v1/findings?limit=3&sort={sort}")
+    assert paged == now
+    moment = ask.clock.now().isoformat().replace("+00:00", "Z")
+    ask.clock.advance(timedelta(minutes=1))
+    past = every_page(ask, f"/v1/findings?limit=3&sort={sort}&as_of={moment}", key="auditor")
+    assert past == now
+
+
+def test_a_cleared_finding_is_left_out_until_asked_for_and_stands_in_the_past(ask, estate):
+    room = ask.made("rooms", a_room(estate.north.site, "SMALL"))
+    vessel = ask.made("vessels", a_vessel(room, "BIG", capacity_l=120))
+    path = f"/v1/findings?room_id={room['id']}&family=oxygen"
+    before = ask.body(path)["items"]
+    assert before
+    moment = ask.clock.advance(timedelta(minutes=1)).isoformat().replace("+00:00", "Z")
+    ask.clock.advance(timedelta(minutes=1))
+    gone = ask("DELETE", f"/v1/vessels/{vessel['id']}").json()
+    (effect,) = gone["effects"]
+    cleared = {finding["id"] for finding in effect["findings"]["cleared"]}
+    assert {finding["id"] for finding in before} <= cleared
+    assert ask.body(path)["items"] == []
+    kept = ask.body(f"{path}&state=cleared")["items"]
+    assert {finding["id"] for finding in kept} == {finding["id"] for finding in before}
+    then = ask.body(f"{path}&as_of={moment}", key="auditor")["items"]
+    assert then == before
+    one = ask.body(f"/v1/findings/{before[0]['id']}?as_of={moment}", key="auditor")
+    assert one == before[0]
+    early = ask("GET", f"/v1/findings/{before[0]['id']}?as_of=2020-01-01T00:00:00Z")
+    assert early.status_code == 404
