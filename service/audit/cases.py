@@ -153,7 +153,9 @@ def _joined(
 
 
 def _padded(table: Floats, width: int) -> Floats:
-    return np.pad(table, ((0, 0), (0, width - table.shape[1])))
+    filled = np.zeros((table.shape[0], width))
+    filled[:, : table.shape[1]] = table
+    return filled
 
 
 def _starts_from(

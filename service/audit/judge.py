@@ -45,7 +45,7 @@ def assess_rooms(rooms: Sequence[RoomValues], *, at: datetime) -> tuple[Assessme
     judgements = _judgements(tables, judged)
     told = Told(
         tables=tables,
-        without=evaluate(cases_of(without_margins(table.given), moment), moment),
+        without=cases_of(without_margins(table.given), moment),
         leading=_leading(tables, judged),
     )
     turns = next_turns(tables, [(rule.subject, answer) for rule, answer in judged], moment)

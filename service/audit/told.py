@@ -11,10 +11,11 @@ import numpy as np
 from service.audit.air import AIRFLOWS, AS_MEASURED
 from service.audit.assessment import Assumed, Case, Ventilation
 from service.audit.assumptions import ASSUMPTIONS
-from service.audit.evaluation import Evaluation
+from service.audit.cases import CaseTable
 from service.audit.releases import BOIL_OFF, RELEASES
 from service.audit.rules.rule import Tables, assumed_record
 from service.audit.rules.words import number
+from service.audit.solve import solve
 from service.audit.told_cases import told_cases
 from service.physics.arrays import Floats, Integers, rounded, sum_by_group
 from service.physics.constants import SECONDS_PER_HOUR, ZERO_CELSIUS
@@ -30,7 +31,7 @@ class Told:
     """Evaluated rooms, and how to tell one of them by its row of the columns."""
 
     tables: Tables
-    without: Evaluation  # the same cases with every stacked factor at 1
+    without: CaseTable  # the same cases with every stacked factor at 1
     leading: Integers  # row of the case that each room's standing rests on
     _all_cases: Sequence[Case] = field(init=False)  # by row, whether shown or not
     _cases: tuple[Integers, ...] = field(init=False)  # rows shown, by room
@@ -41,7 +42,7 @@ class Told:
     def __post_init__(self) -> None:
         """Lay out once what every room is told from."""
         for name, value in (
-            ("_all_cases", told_cases(self.tables, self.without)),
+            ("_all_cases", told_cases(self.tables, solve(self.without), self.without.volume)),
             ("_cases", _rows_by_room(self.tables)),
             ("_assumed", _by_room(self.tables.assumed.room, self.tables)),
             ("_ventilation", _ventilation(self.tables)),

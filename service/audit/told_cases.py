@@ -7,10 +7,10 @@ import numpy as np
 
 from service.audit.air import AIRFLOWS
 from service.audit.assessment import Case
-from service.audit.evaluation import Evaluation
 from service.audit.hazards import HAZARDS
 from service.audit.releases import LARGEST_VESSEL, RELEASES, Release
 from service.audit.rules.rule import Tables
+from service.audit.solve import Results
 from service.physics.arrays import Floats, rounded
 from service.physics.constants import SECONDS_PER_HOUR
 
@@ -19,11 +19,11 @@ _AT_ONCE: Final = "It is let go at once, so that no fan can hold it."
 _Fields = Mapping[str, Any]
 
 
-def told_cases(tables: Tables, without: Evaluation) -> Sequence[Case]:
-    """Tell every case of a table; the rows of the table without margins are the same cases."""
+def told_cases(tables: Tables, without: Results, volume: Floats) -> Sequence[Case]:
+    """Tell every case of a table; results without margins and their net volume are row by row."""
     guards = tables.cases.guards
-    found = {**_numbers(tables.cases), "alarm_s": guards.alarm, "margin_s": guards.margin}
-    bare = {**_numbers(without), "net_volume_m3": rounded(without.table.volume)}
+    found = {**_numbers(tables.cases.results), "alarm_s": guards.alarm, "margin_s": guards.margin}
+    bare = {**_numbers(without), "net_volume_m3": rounded(volume)}
     return [
         Case(**what, **numbers, without_margins=plain)
         for what, numbers, plain in zip(
@@ -32,8 +32,7 @@ def told_cases(tables: Tables, without: Evaluation) -> Sequence[Case]:
     ]
 
 
-def _numbers(evaluation: Evaluation) -> dict[str, Floats]:
-    results = evaluation.results
+def _numbers(results: Results) -> dict[str, Floats]:
     return {
         "oxygen_pct": rounded(100.0 * results.oxygen),
         "oxygen_kpa": rounded(results.oxygen_pressure / 1000.0),

@@ -6,12 +6,12 @@ from typing import Final
 import numpy as np
 from numpy.typing import ArrayLike
 
-from service.physics.arrays import Floats, Integers, Mask, finite, non_negative, positive
+from service.physics.arrays import Floats, Integers, finite, non_negative, positive
 from service.physics.course import Course
 from service.physics.relaxation import LONGEST, kept_share
+from service.physics.roots import smallest_enough
 
-# Halvings of a bracket: more than the bits of a double's fraction, so that nothing is left of it.
-_HALVINGS: Final = 60
+_EVERY: Final = slice(None)
 
 
 def time_constant(t90: ArrayLike) -> Floats:
@@ -143,7 +143,8 @@ def alarm_time(
     .. math:: \tau \dot y = G(t - t_d) - y, \quad y(0) = 0
 
     A reading rises while the fraction is above it, so in each segment it has at most one height,
-    where the two meet; the level is sought on the way up to it by halving. A level of zero or
+    where the two meet; the level is sought on the way up to it by the bracketing of
+    [chandrupatla]_. A level of zero or
     less is read at once, after the delay.
 
     Examples
@@ -157,13 +158,12 @@ def alarm_time(
     reading = np.zeros(rows.size)
     found = np.where(sought <= 0.0, 0.0, np.nan)
     for segment in range(run.steady.shape[1]):
-        at_start = _Segment(run, rows, segment, reading, tau)
-        top = at_start.time_of_height()
-        crossed: Mask = np.isnan(found) & (at_start.read(top) >= sought)
-        if crossed.any():
-            within = at_start.time_of(sought, top)
-            found = np.where(crossed, run.times[rows, segment] + within, found)
-        reading = at_start.read(at_start.length)
+        piece = _Segment(run, rows, segment, reading, tau)
+        top = piece.time_of_height()
+        crossed = np.flatnonzero(np.isnan(found) & (piece.read(top) >= sought))
+        within = piece.time_of(sought, top, crossed)
+        found[crossed] = run.times[rows[crossed], segment] + within
+        reading = piece.read(piece.length)
     return found + non_negative("delay", delay)
 
 
@@ -180,44 +180,38 @@ class _Segment:
         self.rate = run.rates[rows, segment]
         self.constant = constant
 
-    def read(self, elapsed: Floats) -> Floats:
+    def read(self, elapsed: Floats, chosen: Integers | slice = _EVERY) -> Floats:
         """Reading some time into the segment."""
         return reading_after(
             elapsed,
-            reading=self.reading,
-            start=self.start,
-            steady=self.steady,
-            rate=self.rate,
-            constant=self.constant,
+            reading=self.reading[chosen],
+            start=self.start[chosen],
+            steady=self.steady[chosen],
+            rate=self.rate[chosen],
+            constant=self.constant[chosen],
         )
 
     def time_of_height(self) -> Floats:
         """Time of the highest reading: where the reading meets the fraction, or an end."""
-        ahead = self._is_ahead(self.length)
-        low, high = np.zeros_like(self.length), self.length.copy()
-        for _ in range(_HALVINGS):
-            middle = 0.5 * (low + high)
-            still = self._is_ahead(middle)
-            low, high = np.where(still, middle, low), np.where(still, high, middle)
-        top = np.where(ahead, self.length, low)
-        return np.where(self.start > self.reading, top, self._later_end())
+        # A reading that falls at first may rise to its end, or be highest where it began.
+        higher_at_end = self.read(self.length) > self.reading
+        top = np.where((self.start > self.reading) | higher_at_end, self.length, 0.0)
+        overtakes = (self.start > self.reading) & ~(self._ahead(self.length) > 0.0)
+        rows = np.flatnonzero(overtakes)
+        top[rows] = smallest_enough(
+            lambda some, elapsed: self._ahead(elapsed, rows[some]), self.length[rows]
+        )
+        return top
 
-    def time_of(self, level: Floats, top: Floats) -> Floats:
-        """Time of a level on the way up to the height."""
-        low, high = np.zeros_like(top), top.copy()
-        for _ in range(_HALVINGS):
-            middle = 0.5 * (low + high)
-            below = self.read(middle) < level
-            low, high = np.where(below, middle, low), np.where(below, high, middle)
-        return high
+    def time_of(self, level: Floats, top: Floats, rows: Integers) -> Floats:
+        """Time of a level on the way up to the height, for rows that reach it."""
+        return smallest_enough(
+            lambda some, elapsed: level[rows[some]] - self.read(elapsed, rows[some]), top[rows]
+        )
 
-    def _is_ahead(self, elapsed: Floats) -> Mask:
-        """Whether the fraction is above the reading, which then rises."""
-        turned = np.exp(-np.minimum(self.rate * elapsed, LONGEST))
-        ahead: Mask = self.steady + (self.start - self.steady) * turned > self.read(elapsed)
+    def _ahead(self, elapsed: Floats, chosen: Integers | slice = _EVERY) -> Floats:
+        """By how much the fraction is above the reading, which rises while it is."""
+        left = np.exp(-np.minimum(self.rate[chosen] * elapsed, LONGEST))
+        fraction = self.steady[chosen] + (self.start[chosen] - self.steady[chosen]) * left
+        ahead: Floats = fraction - self.read(elapsed, chosen)
         return ahead
-
-    def _later_end(self) -> Floats:
-        """Where the reading falls first, the higher of both ends."""
-        rises = self.read(self.length) > self.reading
-        return np.where(rises, self.length, 0.0)
