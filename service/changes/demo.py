@@ -3,13 +3,16 @@
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Iterator, Mapping
+from datetime import datetime, timedelta
 from importlib import resources
 from pathlib import Path
 from typing import Any, Final
 
 from service.changes.records import carry_out
 from service.changes.requested import CHANGE, CREATE, REMOVE, RecordChange
+from service.clock import text_of
 from service.store.live import list_records
 from service.store.records import Record
 from service.store.scope import EVERYTHING
@@ -26,6 +29,8 @@ _PARENTS_FIRST: Final = (
     "detector",
 )
 _AT_ONCE: Final = 500
+_DAYS_AGO: Final = re.compile(r"today-(\d+)")
+_MOMENTS: Final = frozenset({"counted_at"})
 
 
 def load_demo(session: WriteSession) -> int:
@@ -34,7 +39,7 @@ def load_demo(session: WriteSession) -> int:
     number = 0
     for site in estate["sites"]:
         changes = [
-            RecordChange(CREATE, record["kind"], None, record["fields"])
+            RecordChange(CREATE, record["kind"], None, _dated(record["fields"], session.moment))
             for record in _of_site(site)
         ]
         carry_out(session, changes, "demo-load")
@@ -72,6 +77,17 @@ def _of_site(site: Mapping[str, Any]) -> Iterator[Mapping[str, Any]]:
     yield {"kind": "site", "fields": {**site["fields"], "demo": True}}
     for record in site["records"]:
         yield {"kind": record["kind"], "fields": {**record["fields"], "site": tag}}
+
+
+def _dated(fields: Mapping[str, Any], moment: datetime) -> dict[str, Any]:
+    """Replace days before the present one by dates, so that the estate does not grow stale."""
+    dated = dict(fields)
+    for name, value in fields.items():
+        ago = _DAYS_AGO.fullmatch(value) if isinstance(value, str) else None
+        if ago is not None:
+            then = moment - timedelta(days=int(ago[1]))
+            dated[name] = text_of(then) if name in _MOMENTS else then.date().isoformat()
+    return dated
 
 
 def _all(session: WriteSession, kind: str, filters: Mapping[str, Any]) -> list[Record]:
