@@ -71,7 +71,7 @@ def test_a_change_of_many_rooms_is_recalculating_until_the_sweep_has_come_by(ser
     ask = serve(rooms_per_change=1)
     site = estate.north.site
     rooms = [estate.north.room] + [
-        ask.made("rooms", a_room(site, f"S-{number}", volume_m3=40)) for number in range(3)
+        ask.made("rooms", a_room(site, f"S-{number}", volume_m3=120)) for number in range(3)
     ]
     for number, room in enumerate(rooms[1:]):
         ask.made("vessels", a_vessel(room, f"S-{number}"))
