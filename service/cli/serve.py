@@ -1,10 +1,12 @@
 """``rimeward serve``: bring the database to this release, and serve the API."""
 
 import logging
+import signal
 import socket
 import sys
 from argparse import ArgumentParser, ArgumentTypeError, Namespace
 from dataclasses import replace
+from types import FrameType
 from typing import TYPE_CHECKING
 
 from service.settings import Settings, SettingsError
@@ -37,8 +39,16 @@ def run(arguments: Namespace, settings: Settings) -> int:
     logging.basicConfig(
         level=chosen.log_level.upper(), format="%(asctime)s %(levelname)s %(name)s: %(message)s"
     )
+    logging.getLogger("alembic").setLevel(logging.WARNING)
+    # The server raises the signal that stopped it once more at its end, when the database is still
+    # to be closed.
+    signal.signal(signal.SIGTERM, _leave)
     with listening(chosen.host, chosen.port) as listener:
         return _serve(chosen, listener)
+
+
+def _leave(_signal: int, _frame: FrameType | None) -> None:
+    raise SystemExit(0)
 
 
 def _port(text: str) -> int:
