@@ -740,9 +740,6 @@ def _create_history() -> None:
         sa.CheckConstraint(
             "worse_is IN ('lower', 'higher')", name=op.f("ck_finding_worse_is_known")
         ),
-        sa.ForeignKeyConstraint(
-            ["site_id"], ["site.id"], name=op.f("fk_finding_site_id"), ondelete="CASCADE"
-        ),
         sqlite_strict=True,
     )
     op.create_index(

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import math
+import zlib
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any, Final
@@ -34,6 +35,8 @@ from service.store.tables.registry import KINDS
 #: Assessments are equal when their numbers agree this far, relative.
 TOLERANCE: Final = 1e-9
 _PAGE: Final = 200
+#: What altered bytes raise where they are unpacked; told as a fault, so that the walk goes on.
+_UNREADABLE: Final = (KeyError, ValueError, TypeError, zlib.error)
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,8 +96,12 @@ class _Walk:
             if entry.position != position:
                 self._fault(position, f"missing: the next entry there is {entry.position}")
                 position = entry.position
-            previous = self._check_link(entry, previous)
-            self._check_covered(entry)
+            try:
+                previous = self._check_link(entry, previous)
+                self._check_covered(entry)
+            except _UNREADABLE as error:
+                previous = entry.chain_hash
+                self._fault(position, f"cannot be read: {type(error).__name__} {error}")
             self._report.changes += 1
         if (self._head.position, self._head.chain_hash) != (position, previous):
             self._fault(
@@ -238,9 +245,6 @@ class _Walk:
         }
         kept = {key: hashed for key, hashed in self._newest.items() if hashed is not None}
         self._check_hashes(self._head.position, "live record", kept, live)
-        if ("site", self._head.site_id) not in live:
-            # The live findings of a site go with it.
-            return
         rows = live_findings(self._scope, self._connection, self._head.site_id)
         self._check_hashes(
             self._head.position,
@@ -300,7 +304,7 @@ def differences(kept: Any, made: Any, at: str = "") -> Iterator[str]:
     elif _is_number(kept) and _is_number(made):
         if not math.isclose(kept, made, rel_tol=TOLERANCE, abs_tol=0.0):
             yield f"{at} was {kept}, is {made}"
-    elif kept != made:
+    elif kept != made or isinstance(kept, bool) is not isinstance(made, bool):
         yield f"{at} was {kept!r}, is {made!r}"
 
 

@@ -6,7 +6,7 @@ since what they tell of may be gone.
 
 from datetime import datetime
 
-from sqlalchemy import ForeignKey, ForeignKeyConstraint, Index, UniqueConstraint, true
+from sqlalchemy import ForeignKeyConstraint, Index, UniqueConstraint, true
 from sqlalchemy.orm import Mapped, declared_attr, mapped_column
 
 from service.store.tables.row import Base, Json, RecordId, one_of
@@ -173,13 +173,12 @@ class _FindingColumns:
 
 
 class Finding(_FindingColumns, Base):
-    """A finding as it stands; it outlives its room, cleared."""
+    """A finding as it stands; it outlives its room and its site, cleared."""
 
     __tablename__ = "finding"
 
     id: Mapped[RecordId] = mapped_column(primary_key=True)
     number: Mapped[int]
-    site_id: Mapped[RecordId] = mapped_column(ForeignKey("site.id", ondelete="CASCADE"))
 
     @classmethod
     def _indexes(cls) -> tuple[Index, ...]:
