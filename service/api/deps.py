@@ -235,6 +235,7 @@ async def _as_of(
             description="A moment of the past, inclusive; the answer is what was answered then. "
             "Needs an auditor or an administrator.",
             examples=["2027-03-01T08:00:00Z"],
+            json_schema_extra={"format": "date-time"},
         ),
     ] = None,
 ) -> datetime | None:

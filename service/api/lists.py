@@ -24,6 +24,7 @@ from service.api.paging import (
     next_link,
 )
 from service.api.rendering import FRESH
+from service.api.resources import Filter
 from service.api.service import service_of
 from service.changes.answers import rendered
 from service.errors import FieldsRefused
@@ -76,7 +77,9 @@ class Asking:
 
     takes_labels = True
 
-    def __init__(self, filters: Mapping[str, str], sorts: frozenset[str], usual_sort: str) -> None:
+    def __init__(
+        self, filters: Mapping[str, Filter], sorts: frozenset[str], usual_sort: str
+    ) -> None:
         self._filters = filters
         self._sorts = sorts
         self._usual_sort = usual_sort
@@ -84,10 +87,7 @@ class Asking:
 
     def _parameters(self) -> list[Parameter]:
         told: list[tuple[str, Any, Any]] = [("request", Request, Parameter.empty)]
-        told += [
-            (name, Annotated[str | None, Query(max_length=LONGEST_VALUE, description=text)], None)
-            for name, text in self._filters.items()
-        ]
+        told += [(name, _filter_type(asked), None) for name, asked in self._filters.items()]
         sorts = ", ".join(sorted(self._sorts))
         told += [
             (
@@ -96,6 +96,7 @@ class Asking:
                     str,
                     Query(
                         max_length=64,
+                        pattern=f"^-?({'|'.join(sorted(self._sorts))})$",
                         description=f"One of {sorts}; with a - before it, descending. Ties are in "
                         "the order of ids, and what is not known comes last.",
                     ),
@@ -120,8 +121,6 @@ class Asking:
         request: Request = asked["request"]
         parameters = request.query_params.multi_items()
         sort = asked["sort"].removeprefix("-")
-        if sort not in self._sorts:
-            raise FieldsRefused.parameter("sort", "unknown-field", "No field to sort by.")
         secret = service_of(request).cursor_secret
         path = request.url.path
         return Listing(
@@ -141,6 +140,16 @@ class Asking:
         given = {name: asked[name] for name in self._filters if asked[name] is not None}
         given |= {name: _label_value(name, value) for name, value in sent if name.startswith(LABEL)}
         return {name: value or None for name, value in given.items()}
+
+
+def _filter_type(asked: Filter) -> Any:
+    """Give the type of a filter's parameter; the words it knows are published, and checked later.
+
+    An empty value stands for what has none.
+    """
+    known = {"enum": [*asked.words, ""]} if asked.words else {}
+    query = Query(max_length=LONGEST_VALUE, description=asked.text, json_schema_extra=known)
+    return Annotated[str | None, query]
 
 
 def _label_value(name: str, value: str) -> str:

@@ -42,12 +42,23 @@ _SCHEMES: Final[Mapping[str, Mapping[str, str]]] = {
     "bearer": {"type": "http", "scheme": "bearer", "description": "A key as a bearer token."},
     "apiKey": {"type": "apiKey", "in": "header", "name": "X-API-Key", "description": "A key."},
 }
-_WRITE_HEADERS: Final = (
-    ("Idempotency-Key", "Repeat the request with the same key, and it is done once.", 255),
-    ("Change-Reason", "Why, in a few words; it stays in the history.", 500),
-    ("Change-Stated-At", "When it happened in the world, if that was earlier.", 40),
-)
-_IF_MATCH: Final = ("If-Match", "The ETag of the record as you read it.", 1000)
+_WRITE_HEADERS: Final[Mapping[str, tuple[str, Mapping[str, Any]]]] = {
+    "Idempotency-Key": (
+        "Repeat the request with the same key, and it is done once.",
+        {"pattern": "^[!#-~]{1,255}$"},
+    ),
+    "Change-Reason": ("Why, in a few words; it stays in the history.", {"maxLength": 500}),
+    "Change-Stated-At": (
+        "When it happened in the world, if that was earlier.",
+        {"format": "date-time"},
+    ),
+}
+_IF_MATCH: Final[Mapping[str, tuple[str, Mapping[str, Any]]]] = {
+    "If-Match": (
+        "The ETag of the record as you read it.",
+        {"pattern": r'^(\*|(W/)?"[0-9]{1,18}"(, ?(W/)?"[0-9]{1,18}"){0,9})$'},
+    ),
+}
 _WRITES: Final = frozenset({"post", "put", "patch", "delete"})
 
 
@@ -93,16 +104,16 @@ def _headers(path: str, method: str) -> list[dict[str, Any]]:
     if method not in _WRITES:
         return []
     conditional = method in ("patch", "delete", "put") and not path.startswith("/v1/keys")
-    named = (*_WRITE_HEADERS, _IF_MATCH) if conditional else _WRITE_HEADERS
+    named = {**_WRITE_HEADERS, **_IF_MATCH} if conditional else _WRITE_HEADERS
     return [
         {
             "name": name,
             "in": "header",
             "required": False,
             "description": text,
-            "schema": {"type": "string", "maxLength": longest},
+            "schema": {"type": "string", **form},
         }
-        for name, text, longest in named
+        for name, (text, form) in named.items()
     ]
 
 

@@ -29,6 +29,14 @@ from service.api.schemas.vessels import VesselCreate, VesselPatch, VesselRead, V
 
 
 @dataclass(frozen=True, slots=True)
+class Filter:
+    """A field that a list is filtered by: what it holds, and the words it knows."""
+
+    text: str
+    words: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
 class Resource:
     """One kind of record as the API shows it."""
 
@@ -47,12 +55,12 @@ class Resource:
         return self.kind.replace("-", " ")
 
     @property
-    def filters(self) -> Mapping[str, str]:
-        """Name the fields that a list can be filtered by, each with what it holds."""
+    def filters(self) -> Mapping[str, Filter]:
+        """Name the fields that a list can be filtered by."""
         return {
-            name: told
+            name: asked
             for name, field in self.read.model_fields.items()
-            if (told := _told(field.annotation)) and name not in _NO_FILTERS
+            if name not in _NO_FILTERS and (asked := _filter_of(field.annotation))
         }
 
     @property
@@ -61,7 +69,7 @@ class Resource:
         return frozenset(
             name
             for name, field in self.read.model_fields.items()
-            if _told(field.annotation) or _is_number(field.annotation)
+            if _filter_of(field.annotation) or _is_number(field.annotation)
         )
 
 
@@ -77,14 +85,16 @@ def _kinds(annotation: Any) -> tuple[Any, ...]:
     return () if annotation is type(None) else (annotation,)
 
 
-def _told(annotation: Any) -> str:
-    """Say what a field holds that can be equalled; empty: it cannot."""
+def _filter_of(annotation: Any) -> Filter | None:
+    """Say how a field is asked for; none: it cannot be equalled."""
     kinds = _kinds(annotation)
     if len(kinds) != 1:
-        return ""
+        return None
     if get_origin(kinds[0]) is Literal:
-        return "One of " + ", ".join(get_args(kinds[0])) + "."
-    return {str: "A text.", bool: "true or false."}.get(kinds[0], "")
+        return Filter(f"One of {', '.join(get_args(kinds[0]))}.", get_args(kinds[0]))
+    if kinds[0] is bool:
+        return Filter("true or false.", ("true", "false"))
+    return Filter("A text.") if kinds[0] is str else None
 
 
 def _is_number(annotation: Any) -> bool:

@@ -17,6 +17,7 @@ from service.api.deps import JSON, AsOf, Reader
 from service.api.fields import is_record_id
 from service.api.lists import Asking, Listing
 from service.api.rendering import FRESH
+from service.api.resources import Filter
 from service.api.routes.declared import (
     LISTING,
     READING_PAST,
@@ -45,16 +46,18 @@ SEVERITIES: Final = ("critical", "major", "minor", "observation")
 STATES: Final = ("open", "acknowledged", "accepted", "cleared")
 NOT_CLEARED: Final = STATES[:-1]
 MOST_DAYS: Final = 36525.0
-FILTERS: Final[Mapping[str, str]] = {
-    "site_id": "The id of a site.",
-    "site": "The tag of a site.",
-    "room_id": "The id of a room.",
-    "rule": "A rule, such as oxygen/largest-vessel.",
-    "family": "A family of rules, such as oxygen.",
-    "severity": f"One or more of {', '.join(SEVERITIES)}, with commas between.",
-    "state": f"One or more of {', '.join(STATES)}, with commas between; those not cleared where "
-    "none is said.",
-    "older_than_days": "Opened more than so many days ago.",
+FILTERS: Final[Mapping[str, Filter]] = {
+    "site_id": Filter("The id of a site."),
+    "site": Filter("The tag of a site."),
+    "room_id": Filter("The id of a room."),
+    "rule": Filter("A rule, such as oxygen/largest-vessel."),
+    "family": Filter("A family of rules, such as oxygen."),
+    "severity": Filter(f"One or more of {', '.join(SEVERITIES)}, with commas between."),
+    "state": Filter(
+        f"One or more of {', '.join(STATES)}, with commas between; those not cleared where none "
+        "is said."
+    ),
+    "older_than_days": Filter("Opened more than so many days ago."),
 }
 SORTS: Final = frozenset(
     {"id", "opened_at", "changed_at", "rule", "family", "severity", "state", "position"}
