@@ -6,9 +6,9 @@ import asyncio
 import contextlib
 import logging
 import sqlite3
-from collections.abc import AsyncIterator, Callable, Iterator
+from collections.abc import AsyncIterator, Callable
 from contextlib import asynccontextmanager
-from functools import partial
+from functools import cache, partial
 from importlib.resources import files
 from pathlib import Path
 from typing import Any, Final
@@ -71,10 +71,14 @@ class Application(FastAPI):
         return Limits(PollLayer(super().build_middleware_stack()), self.largest_body)
 
     def openapi(self) -> dict[str, Any]:
-        """Describe the API; made once."""
-        if self.openapi_schema is None:
-            self.openapi_schema = described(self.routes, API_VERSION)
-        return self.openapi_schema
+        """Describe the API."""
+        return description()
+
+
+@cache
+def description() -> dict[str, Any]:
+    """Describe the API of this release; it is made once, since that takes most of a second."""
+    return described(_routes(), API_VERSION)
 
 
 def create_app(
@@ -84,12 +88,13 @@ def create_app(
     app = Application(
         title="Rimeward",
         version=API_VERSION,
+        openapi_url=None,  # A route of our own makes it off the event loop.
         docs_url=None,
         redoc_url=None,
         telemetry=_NO_TELEMETRY,
         redirect_slashes=False,
         # Handed over whole: including a router makes each of its routes a second time.
-        routes=list(with_heads(_routes())),
+        routes=list(_routes()),
         lifespan=partial(_running, settings, clock or SystemClock(), database),
     )
     app.largest_body = settings.max_body_bytes
@@ -98,9 +103,11 @@ def create_app(
     return app
 
 
-def _routes() -> Iterator[BaseRoute]:
+@cache
+def _routes() -> tuple[BaseRoute, ...]:
+    """Make the routes; they hold nothing of an application, so that all of a process share them."""
     # Records by external id come before what follows an id, so that none is taken for the other.
-    for router in (
+    routers = (
         *record_routers(),
         room_answers.router,
         changes.router,
@@ -108,10 +115,10 @@ def _routes() -> Iterator[BaseRoute]:
         keys.router,
         health.router,
         docs.router,
-    ):
-        yield from router.routes
+    )
     folder = Path(str(files("service"))) / "static"
-    yield Mount("/static", StaticFiles(directory=folder), name="static")
+    static = Mount("/static", StaticFiles(directory=folder), name="static")
+    return (*with_heads(route for router in routers for route in router.routes), static)
 
 
 @asynccontextmanager

@@ -6,10 +6,13 @@ from functools import cache
 from html import escape
 from typing import Final
 
-from fastapi import APIRouter
+import orjson
+from fastapi import APIRouter, Request
+from starlette.concurrency import run_in_threadpool
 from starlette.responses import HTMLResponse, Response
 
 from service.api.access import OPEN
+from service.api.deps import JSON
 from service.changes.cautions import CAUTIONS
 from service.errors import RimewardError, every_problem
 
@@ -57,6 +60,13 @@ async def api_page() -> Response:
     """Show the API as a page on which it can be tried."""
     page = _PAGE.format(title="Rimeward API", head=_SWAGGER_HEAD, body=_SWAGGER_BODY)
     return _page(page)
+
+
+@router.get("/openapi.json", dependencies=[OPEN], include_in_schema=False)
+async def api_description(request: Request) -> Response:
+    """Give the description of the API (OpenAPI 3.1)."""
+    document = await run_in_threadpool(request.app.openapi)
+    return Response(orjson.dumps(document), 200, {"Cache-Control": "no-cache"}, JSON)
 
 
 @router.get("/docs/start.js", dependencies=[OPEN], include_in_schema=False)
