@@ -20,7 +20,7 @@ from service.audit.safeguards import (
     gas_heights,
 )
 from service.audit.severity import MAJOR, MINOR, worst_by_room
-from service.physics.arrays import Floats, Integers, Mask
+from service.physics.arrays import Floats, Mask
 
 _IN_SERVICE = DETECTOR_STATES.index("in-service")
 _OFF = DETECTOR_STATES.index("off")
@@ -80,35 +80,28 @@ def _watches(tables: Tables) -> Mask:
 
 
 def _heights_wanted(tables: Tables) -> tuple[Mask, Mask]:
-    """Whether each detector may hang low, and whether at the ceiling, for the gas it is for."""
+    """Whether each detector may hang low, and whether at the ceiling, for the gas it is for.
+
+    An oxygen detector watches every gas of its room, another one that gas where the room has it.
+    """
     table = tables.cases.table
     given, found = table.given, table.sources
-    low, high = gas_heights(given, found.fluid)
-    counted = np.ones(found.room.size, dtype=np.bool_)
-    counted[: table.stock.present.size] = table.stock.present
-    room_low, room_high = (
-        _rooms_with(found.room[counted & part], given.count) for part in (low, high)
-    )
-    fluid = _fluid_of_gas(tables)[given.detectors.gas]
-    own_low, own_high = gas_heights(given, fluid)
-    oxygen, named = given.detectors.gas == OXYGEN_GAS, fluid != UNKNOWN
-    return (
-        np.where(oxygen, room_low[given.detectors.room], own_low & named),
-        np.where(oxygen, room_high[given.detectors.room], own_high & named),
-    )
+    there = np.ones(found.room.size, dtype=np.bool_)
+    there[: table.stock.present.size] = table.stock.present
+    low, high = (part & there for part in gas_heights(given, found.fluid))
+    named = found.fluid != UNKNOWN
+    gas = np.full(found.fluid.size, OXYGEN_GAS)
+    gas[named] = given.fluids.gas[found.fluid[named]]
+    detectors = given.detectors
 
+    def wanted(part: Mask) -> Mask:
+        of_gas = np.zeros((given.count, len(given.gases)), dtype=np.bool_)
+        of_gas[found.room[part], gas[part]] = True
+        of_gas[found.room[part], OXYGEN_GAS] = True
+        met: Mask = of_gas[detectors.room, detectors.gas]
+        return met
 
-def _rooms_with(rooms: Integers, count: int) -> Mask:
-    found = np.zeros(count, dtype=np.bool_)
-    found[rooms] = True
-    return found
-
-
-def _fluid_of_gas(tables: Tables) -> Integers:
-    given = tables.cases.table.given
-    fluid = np.full(len(given.gases), UNKNOWN)
-    fluid[given.fluids.gas] = np.arange(given.fluids.gas.size)
-    return fluid
+    return wanted(low), wanted(high)
 
 
 def _metres_off(tables: Tables) -> Floats:
