@@ -97,15 +97,15 @@ def test_a_filter_that_means_nothing_is_named(ask_one, query, parameter):
     assert answer.json()["errors"][0]["parameter"] == parameter
 
 
-@pytest.mark.parametrize("sort", ["id", "-id", "severity", "-opened_at", "rule"])
-def test_each_finding_is_on_one_page_now_and_in_the_past(ask, crowded, sort):
-    now = every_page(ask, f"/v1/findings?limit=500&sort={sort}")
-    paged = every_page(ask, f"/v1/findings?limit=3&sort={sort}")
-    assert paged == now
+def test_each_finding_is_on_one_page_now_and_in_the_past(ask, crowded):
     moment = ask.clock.now().isoformat().replace("+00:00", "Z")
     ask.clock.advance(timedelta(minutes=1))
-    past = every_page(ask, f"/v1/findings?limit=3&sort={sort}&as_of={moment}", key="auditor")
-    assert past == now
+    for sort in ("id", "-id", "severity", "-opened_at", "rule"):
+        now = every_page(ask, f"/v1/findings?limit=500&sort={sort}")
+        paged = every_page(ask, f"/v1/findings?limit=3&sort={sort}")
+        assert paged == now
+        path = f"/v1/findings?limit=3&sort={sort}&as_of={moment}"
+        assert every_page(ask, path, key="auditor") == now
 
 
 def test_a_cleared_finding_is_left_out_until_asked_for_and_stands_in_the_past(ask, estate):

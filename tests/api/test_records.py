@@ -5,20 +5,18 @@ import pytest
 from service.api.resources import RESOURCES
 from tests.api.estate import a_room, a_site, a_vessel
 
-KINDS = list(RESOURCES.values())
 
-
-@pytest.mark.parametrize("resource", KINDS, ids=lambda resource: resource.kind)
-def test_a_record_is_answered_as_its_schema_says_and_reads_back_alike(ask, estate, resource):
-    made = estate.north.record(resource.kind)
-    resource.written.model_validate(made)
-    answer = ask("GET", f"/v1/{resource.path}/{made['id']}", key="reader")
-    assert answer.status_code == 200
-    resource.read.model_validate(answer.json())
-    besides = {"effects", "position", "recalculating", "read_as"}
-    assert answer.json() == {name: made[name] for name in made if name not in besides}
-    assert answer.headers["ETag"] == f'"{made["revision"]}"'
-    assert answer.headers["Cache-Control"] == "private, no-cache"
+def test_a_record_is_answered_as_its_schema_says_and_reads_back_alike(ask, estate):
+    for resource in RESOURCES.values():
+        made = estate.north.record(resource.kind)
+        resource.written.model_validate(made)
+        answer = ask("GET", f"/v1/{resource.path}/{made['id']}", key="reader")
+        assert answer.status_code == 200
+        resource.read.model_validate(answer.json())
+        besides = {"effects", "position", "recalculating", "read_as"}
+        assert answer.json() == {name: made[name] for name in made if name not in besides}
+        assert answer.headers["ETag"] == f'"{made["revision"]}"'
+        assert answer.headers["Cache-Control"] == "private, no-cache"
 
 
 def test_a_new_record_says_where_it_is(ask):
@@ -241,7 +239,7 @@ def test_a_query_that_means_nothing_is_refused_by_name(ask_one, query, parameter
     assert answer.json()["errors"][0]["parameter"] == parameter
 
 
-@pytest.mark.parametrize("sort", ["id", "-id", "tag", "-egress_m", "building"])
+@pytest.mark.parametrize("sort", ["-id", "-egress_m", "building"])
 def test_records_that_live_throughout_appear_once_while_others_come_and_go(ask, estate, sort):
     site = estate.north.site
     made = [
