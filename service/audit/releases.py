@@ -156,11 +156,7 @@ def largest_vessel(given: Columns, found: Sources, code: int, hazard: Hazard) ->
     np.minimum.at(first, group, np.arange(member.size))
     room = found.room[member][first]
     fluid = _only_fluid(found.fluid[member], group, groups.size)
-    order = np.lexsort((first, -diluting, fluid, room))
-    leading = np.ones(order.size, dtype=np.bool_)
-    leading[1:] = (np.diff(room[order]) != 0) | (np.diff(fluid[order]) != 0)
-    # In an order that no amount can change, so that rooms with other amounts line up.
-    chosen = order[leading]
+    chosen = _leaders(room, fluid, diluting, first)
     row_of_group = np.full(groups.size, -1)
     row_of_group[chosen] = np.arange(chosen.size)
     kept = np.flatnonzero(row_of_group[group] >= 0)
@@ -175,6 +171,21 @@ def largest_vessel(given: Columns, found: Sources, code: int, hazard: Hazard) ->
         member_row=row_of_group[group[kept]],
         member_source=member[kept],
     )
+
+
+def _leaders(room: Integers, fluid: Integers, diluting: Floats, first: Integers) -> Integers:
+    """The group of each room and fluid with the most gas, by room and then as first recorded.
+
+    The order goes by the first vessel of the fluid and not of the group, so that no amount can
+    change it, and rooms with other amounts line up row by row.
+    """
+    order = np.lexsort((first, -diluting, fluid, room))
+    leading = np.ones(order.size, dtype=np.bool_)
+    leading[1:] = (np.diff(room[order]) != 0) | (np.diff(fluid[order]) != 0)
+    starts = np.flatnonzero(leading)
+    earliest = np.minimum.reduceat(first[order], starts) if starts.size else starts
+    chosen = order[starts]
+    return chosen[np.lexsort((earliest, room[chosen]))]
 
 
 def _only_fluid(fluid: Integers, group: Integers, count: int) -> Integers:

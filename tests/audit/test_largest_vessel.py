@@ -262,3 +262,17 @@ def test_methane_is_judged_for_oxygen_and_said_to_need_more():
     found = assessed(a_room(70, vessels=(still(20, METHANE),)))[0]
     assert "records/hazard-not-computed" in [each.rule for each in found.judgements]
     assert {case.hazard for case in found.cases} == {"oxygen-low"}
+
+
+def test_without_margins_each_case_stands_beside_the_same_fluid():
+    """With filling loss the first is the larger nitrogen vessel (11 L), without it the second."""
+    vessels = (
+        still(10, filled_by="attended", tag="A"),
+        still(3, HELIUM),
+        still(10.5, tag="B"),
+    )
+    found = {case.fluids: case for case in assessed(a_room(90, vessels=vessels))[0].cases}
+    nitrogen, helium = found[("nitrogen",)], found[("helium",)]
+    assert nitrogen.gas_m3 == pytest.approx(11 * NITROGEN_GAS, rel=1e-9)
+    assert nitrogen.without_margins["gas_m3"] == pytest.approx(10.5 * NITROGEN_GAS, rel=1e-9)
+    assert helium.without_margins["gas_m3"] == pytest.approx(helium.gas_m3, rel=1e-9)
