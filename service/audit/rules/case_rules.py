@@ -94,7 +94,7 @@ def _statement(tables: Tables, row: int) -> str:
     mark = 100.0 * float(table.oxygen_marks[row, place])
     name = (LOW_MARKS if low else HIGH_MARKS)[place]
     return (
-        f"{_event(tables, row)}, oxygen would {'fall' if low else 'rise'} to {level} "
+        f"{_event(tables, row)} would bring oxygen {'down' if low else 'up'} to {level} "
         f"({pressure:.1f} kPa), {'below' if low else 'above'} the {name} mark of {mark:.4g} %; "
         f"{_times(tables, row)}{_caution(tables, row)}."
     )
@@ -105,10 +105,10 @@ def _event(tables: Tables, row: int) -> str:
     vessels = [record.tag for record in tables.records.vessels[row]]
     source, gas = listed(vessels or ["the purge"]), listed(tables.records.fluids[row])
     if RELEASES[int(table.release[row])].slug != BOIL_OFF:
-        return f"If {source} let go of all {gas} at once"
+        return f"All {gas} of {source} let go at once"
     lost = AIRFLOWS[int(table.airflow[row])] == LOST
-    air = "with its power lost" if lost else "as measured"
-    return f"By what {source} give off of {gas} in normal use, with the ventilation {air}"
+    air = "without power for its fans" if lost else "with the ventilation as measured"
+    return f"Normal evaporation and use of {gas} from {source}, {air},"
 
 
 def _times(tables: Tables, row: int) -> str:
@@ -116,12 +116,14 @@ def _times(tables: Tables, row: int) -> str:
     table, results = tables.cases.table, tables.cases.results
     passed, back = float(results.to_marks[row, 0]), float(results.recovered[row])
     first = 100.0 * float(table.oxygen_marks[row, 0])
-    start = "" if table.at_once[row] else f"it passes {first:.4g} % after {duration_text(passed)} "
+    start = (
+        "" if table.at_once[row] else f"it would pass {first:.4g} % after {duration_text(passed)} "
+    )
     if np.isnan(back):
-        end = f"and is not back within {duration_text(float(results.course.times[row, -1]))}"
+        end = f"and would not be back within {duration_text(float(results.course.times[row, -1]))}"
     else:
-        end = f"and is back at {first:.4g} % after {duration_text(back)}"
-    return f"{start}{end}" if start else f"it {end.removeprefix('and ')}"
+        end = f"and would be back at {first:.4g} % after {duration_text(back)}"
+    return f"it {end.removeprefix('and ')}" if table.at_once[row] else f"{start}{end}"
 
 
 def _caution(tables: Tables, row: int) -> str:

@@ -41,7 +41,7 @@ def duration_text(seconds: float) -> str:
         return f"{seconds:.0f} s"
     if seconds < 7200.0:
         return f"{seconds / 60.0:.0f} min"
-    return f"{seconds / 3600.0:.1f} h"
+    return f"{seconds / 3600.0:.1f} h".replace(".0 h", " h")
 
 
 def moment_text(moment: np.datetime64) -> str:
