@@ -18,13 +18,13 @@ from fastapi.telemetry import TelemetryConfig
 from starlette.concurrency import run_in_threadpool
 from starlette.routing import BaseRoute, Mount
 from starlette.staticfiles import StaticFiles
-from starlette.types import ASGIApp
+from starlette.types import ASGIApp, Receive, Scope, Send
 
 from service.api.access import check_declared
 from service.api.keyring import USE_NOTED_EVERY, KeyRing
 from service.api.limits import Limits
 from service.api.openapi import described
-from service.api.poll import PollLayer
+from service.api.poll import LENGTH, PollLayer, answered_outermost, send_answer
 from service.api.problems import install_problem_handlers
 from service.api.routes import changes, docs, findings, health, keys, room_answers
 from service.api.routes.declared import with_heads
@@ -65,6 +65,16 @@ class Application(FastAPI):
     """The framework's application with our layers around it and our description of it."""
 
     largest_body: int
+    service: Service | None = None
+
+    async def __call__(self, scope: Scope, receive: Receive, send: Send) -> None:
+        """Answer a plain poll at once, before any layer is asked; all else goes through them."""
+        if self.service is not None and scope["type"] == "http" and len(scope["path"]) == LENGTH:
+            answer = await answered_outermost(self.service, scope)
+            if answer is not None:
+                await send_answer(send, answer)
+                return
+        await super().__call__(scope, receive, send)
 
     def build_middleware_stack(self) -> ASGIApp:
         """Put the poll layer before the framework, and the limits before both."""
@@ -123,13 +133,13 @@ def _routes() -> tuple[BaseRoute, ...]:
 
 @asynccontextmanager
 async def _running(
-    settings: Settings, clock: Clock, given: Database | None, app: FastAPI
+    settings: Settings, clock: Clock, given: Database | None, app: Application
 ) -> AsyncIterator[None]:
     database = Database(settings.database_url) if given is None else given
     try:
         await run_in_threadpool(check_schema, database)
         service = await _started(settings, clock, database)
-        app.state.service = service
+        app.service = app.state.service = service
         jobs = [asyncio.create_task(job) for job in _jobs(settings, service)]
         try:
             yield

@@ -43,7 +43,7 @@ class KeyRing:
         self._alone = database.dialect == SQLITE
         self._reading = threading.Lock()
         self._position = _NOT_READ
-        self._by_digest: Mapping[str, Key] = {}
+        self._by_digest: Mapping[str, tuple[Key, Scope]] = {}
         self._used: dict[str, datetime] = {}
         self._noted: dict[str, datetime] = {}
 
@@ -57,14 +57,19 @@ class KeyRing:
         """
         if not self._is_current():
             await run_in_threadpool(self._database.read, self._refresh)
-        scope = self._scope(text)
+        scope = self._scope(text.encode("latin-1"))
         if scope is None:
             raise KeyUnknown
         return scope
 
-    def scope_at_once(self, text: str) -> Scope | None:
+    def scope_at_once(self, text: bytes) -> Scope | None:
         """Give what a key may see, where that can be told without asking the database."""
         return self._scope(text) if self._is_current() else None
+
+    def scope_in(self, connection: Connection, text: bytes) -> Scope | None:
+        """Give what a key may see in a snapshot of the database."""
+        self._refresh(connection)
+        return self._scope(text)
 
     def used(self) -> dict[str, datetime]:
         """Give the keys whose use is to be noted, each at most once a minute, and forget them."""
@@ -81,15 +86,15 @@ class KeyRing:
                 del self._used[key_id]
         return due
 
-    def _scope(self, text: str) -> Scope | None:
-        digest = hashlib.sha256(text.encode()).hexdigest()
-        key = self._by_digest.get(digest)
-        same = hmac.compare_digest(_NO_DIGEST if key is None else key.digest, digest)
+    def _scope(self, text: bytes) -> Scope | None:
+        digest = hashlib.sha256(text).hexdigest()
+        found = self._by_digest.get(digest)
+        same = hmac.compare_digest(_NO_DIGEST if found is None else found[0].digest, digest)
         now = self._clock.now()
-        if key is None or not same or not is_valid(key, now):
+        if found is None or not same or not is_valid(found[0], now):
             return None
-        self._used[key.id] = now
-        return Scope(key.id, key.role, key.sites)
+        self._used[found[0].id] = now
+        return found[1]
 
     def _is_current(self) -> bool:
         return self._alone and self._position == self._memory.known_position(INSTALLATION)
@@ -106,9 +111,9 @@ class KeyRing:
             self._position = told if self._alone else position
 
 
-def by_digest(keys: Iterable[Key]) -> dict[str, Key]:
-    """Arrange keys for looking up."""
-    return {key.digest: key for key in keys}
+def by_digest(keys: Iterable[Key]) -> dict[str, tuple[Key, Scope]]:
+    """Arrange keys for looking up, each with what it may see."""
+    return {key.digest: (key, Scope(key.id, key.role, key.sites)) for key in keys}
 
 
 def is_valid(key: Key, now: datetime) -> bool:

@@ -61,14 +61,23 @@ def polled(stored: StoredStatus, wanted: int, now: datetime) -> Poll:
 
 
 def polled_from_memory(service: Service, scope: Scope, room_id: str) -> Poll | None:
-    """Give the status of a room if it is in memory and this process alone writes."""
-    if service.database.dialect != SQLITE:
-        return None
+    """Give the status of a room as memory has it: true where this process alone writes."""
     stored = service.memory.get(room_id)
     if stored is None or not scope.sees(stored.site_id):
         return None
     head = service.memory.head(stored.site_id)
     return None if head is None else polled(stored, head.wanted_position, service.clock.now())
+
+
+def polled_if_held(
+    service: Service, scope: Scope, connection: Connection, room_id: str
+) -> Poll | None:
+    """Give the status of a room if what memory has of it is what the database has."""
+    held = service.memory.get(room_id)
+    place = None if held is None else room_position(scope, connection, room_id)
+    if held is None or place is None or held.position != place.position:
+        return None
+    return polled(held, place.wanted_position, service.clock.now())
 
 
 async def poll_of(service: Service, scope: Scope, room_id: str) -> Poll:
@@ -79,7 +88,8 @@ async def poll_of(service: Service, scope: Scope, room_id: str) -> Poll:
     RecordNotFound
         There is no such room for this key.
     """
-    poll = polled_from_memory(service, scope, room_id)
+    alone = service.database.dialect == SQLITE
+    poll = polled_from_memory(service, scope, room_id) if alone else None
     if poll is None:
         poll = await run_in_threadpool(_read, service, scope, room_id)
     if poll is None:
