@@ -29,6 +29,9 @@ class DeadlineProtocol(HttpToolsProtocol):
 
     def __init__(self, *arguments: Any, **options: Any) -> None:
         super().__init__(*arguments, **options)
+        # One timer a connection, which looks at this: to set one for each request costs more than
+        # all else here.
+        self._waiting_since: float | None = None
         self._timer: asyncio.TimerHandle | None = None
         self._in_headers = True
         self._header_bytes = 0
@@ -37,11 +40,13 @@ class DeadlineProtocol(HttpToolsProtocol):
     def connection_made(self, transport: asyncio.Transport) -> None:  # type: ignore[override]
         """Begin to count when the connection opens: it may never say a word."""
         super().connection_made(transport)
-        self._start()
+        self._waiting_since = self.loop.time()
+        self._look_in(self.deadline.total_seconds())
 
     def connection_lost(self, exc: Exception | None) -> None:
         """Stop counting."""
-        self._stop()
+        if self._timer is not None:
+            self._timer.cancel()
         super().connection_lost(exc)
 
     def data_received(self, data: bytes) -> None:
@@ -57,7 +62,7 @@ class DeadlineProtocol(HttpToolsProtocol):
         super().on_message_begin()
         self._in_headers, self._header_bytes = True, 0
         if self.cycle is None or self.cycle.response_complete:
-            self._start()
+            self._waiting_since = self.loop.time()
 
     def on_headers_complete(self) -> None:
         """Go on with the request if its headers are small enough."""
@@ -70,7 +75,7 @@ class DeadlineProtocol(HttpToolsProtocol):
 
     def on_message_complete(self) -> None:
         """Stop counting: the request is here."""
-        self._stop()
+        self._waiting_since = None
         super().on_message_complete()
 
     def send_400_response(self, msg: str) -> None:
@@ -80,26 +85,21 @@ class DeadlineProtocol(HttpToolsProtocol):
         elif not self.transport.is_closing():
             self._refuse(400, b"Bad Request")
 
-    def _start(self) -> None:
-        self._stop()
-        self._timer = self.loop.call_later(self.deadline.total_seconds(), self._late)
+    def _look_in(self, seconds: float) -> None:
+        self._timer = self.loop.call_later(seconds, self._look)
 
-    def _stop(self) -> None:
-        if self._timer is not None:
-            self._timer.cancel()
-            self._timer = None
-
-    def _late(self) -> None:
-        self._timer = None
-        answering = self.cycle is not None and not self.cycle.response_complete
-        if answering:
+    def _look(self) -> None:
+        limit = self.deadline.total_seconds()
+        waited = 0.0 if self._waiting_since is None else self.loop.time() - self._waiting_since
+        if waited < limit:
+            self._look_in(limit - waited)
+        elif self.cycle is not None and not self.cycle.response_complete:
             # The application waits for the body and hears now that nobody sends it.
             self.transport.close()
         else:
             self._refuse(*_TOO_SLOW)
 
     def _refuse(self, status: int, phrase: bytes) -> None:
-        self._stop()
         if self.transport.is_closing():
             return
         body = b'{"type":"about:blank","title":"%s","status":%d,"detail":"%s."}' % (
