@@ -30,9 +30,7 @@ def run(arguments: Namespace, settings: Settings) -> int:
     done, batch = 0, settings.sweep_batch
     with opened_to_write(settings) as writer:
         for start in range(0, len(rooms), batch):
-            job = partial(
-                recalculate, room_ids=rooms[start : start + batch], operation=RECALCULATE
-            )
+            job = partial(recalculate, room_ids=rooms[start : start + batch], operation=RECALCULATE)
             done += writer.run_now(job, BY_COMMAND)
     print(f"{done} rooms computed again.")
     return 0
