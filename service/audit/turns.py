@@ -28,7 +28,9 @@ def _ageing(tables: Tables) -> Iterator[tuple[Integers, Moments]]:
     """Moments at which an input ages; only where that can make a difference."""
     table = tables.cases.table
     vessels, units, detectors = table.given.vessels, table.given.units, table.given.detectors
-    relied_on = table.given.bases.as_recorded[vessels.room] | (vessels.state == _EMPTY)
+    # Both readings of the contents are shown, so a recorded amount counts whatever the basis says.
+    recorded = ~np.isnan(vessels.contents_volume) | ~np.isnan(vessels.contents_mass)
+    relied_on = table.given.bases.as_recorded[vessels.room] | (vessels.state == _EMPTY) | recorded
     relied_on &= table.stock.count_holds & table.stock.present
     yield vessels.room[relied_on], vessels.count_due[relied_on]
     measured = table.air.units.measurement_holds & table.air.units.runs

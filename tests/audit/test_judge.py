@@ -524,6 +524,15 @@ def test_what_does_not_age_never_turns(room):
     assert assessed(room)[0].turns_at is None
 
 
+def test_a_count_that_lapses_turns_the_reading_that_is_shown_beside_the_capacity():
+    room = a_room(vessels=(a_vessel(10, contents_volume=LITRE, count_due=LATER),))
+    before, after = (assessed(room, at=moment)[0] for moment in (NOW, LATER))
+    assert before.turns_at == LATER
+    assert after.figures["gas_as_recorded_m3"] == pytest.approx(
+        10 * before.figures["gas_as_recorded_m3"]
+    )
+
+
 def test_an_overdue_finding_says_the_same_until_something_turns():
     room = a_room(detectors=(a_detector(calibration_due=EARLIER),))
     first, second = (
