@@ -23,6 +23,12 @@ settings.register_profile("ci", deadline=None, derandomize=True, print_blob=True
 settings.load_profile("ci" if os.environ.get("CI") else "here")
 
 
+def pytest_collection_modifyitems(items):
+    """Begin with the files that take long, so that no worker ends alone with one of them."""
+    long_files = {item.path for item in items if item.get_closest_marker("slow")}
+    items.sort(key=lambda item: item.path not in long_files)
+
+
 @pytest.fixture(scope="session")
 def postgresql_cluster():
     """A server of our own; one a worker, started by the first test that needs it."""

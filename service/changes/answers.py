@@ -8,13 +8,18 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import asdict
 from datetime import datetime
 from typing import Any, Final
 
 import orjson
 
-from service.audit.assessment import METHOD_VERSION, Assessment, Case, Judgement
+from service.audit.assessment import (
+    METHOD_VERSION,
+    Assessment,
+    Case,
+    Judgement,
+    Ventilation,
+)
 from service.audit.findings import counts
 from service.changes.assess import Assessed
 from service.changes.cautions import CAUTIONS
@@ -82,7 +87,7 @@ def status_bytes(assessed: Assessed, position: int) -> bytes:
         "worst_oxygen_pct": assessed.worst_oxygen_pct,
         "worst": _worst(assessment),
         "highest_oxygen": _highest_oxygen(assessment),
-        "ventilation": None if assessment.ventilation is None else asdict(assessment.ventilation),
+        "ventilation": None if assessment.ventilation is None else _fields(assessment.ventilation),
         "findings": counts(assessed.findings),
         "turns_at": None if assessment.turns_at is None else text_of(assessment.turns_at),
         "method_version": assessment.method_version,
@@ -193,8 +198,13 @@ def results_document(assessment: Assessment) -> bytes:
     )
 
 
+def _fields(value: Case | Judgement | Ventilation) -> dict[str, Any]:
+    # `asdict` would copy all that is inside, which nobody alters.
+    return {name: getattr(value, name) for name in value.__slots__}
+
+
 def _case_document(case: Case) -> dict[str, Any]:
-    document = asdict(case)
+    document = _fields(case)
     document["vessels"] = [plain(vessel) for vessel in case.vessels]
     document["vessel_ids"] = [vessel.id for vessel in case.vessels]
     document["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
@@ -203,7 +213,7 @@ def _case_document(case: Case) -> dict[str, Any]:
 
 
 def _judgement_document(judged: Judgement) -> dict[str, Any]:
-    document = asdict(judged)
+    document = _fields(judged)
     document["subject"] = plain(judged.subject)
     return document
 

@@ -168,7 +168,7 @@ def finite(name: str, value: ArrayLike) -> Floats:
 
 
 def _held(name: str, array: Floats, holds: Mask, wanted: str) -> Floats:
-    if not bool(np.all(holds)):
+    if not holds.all():
         raise OutOfRange(name, wanted)
     return array
 

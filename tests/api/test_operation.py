@@ -158,13 +158,21 @@ def served_page(estate_in_a_file, started, tmp_path):
         page = f"http://127.0.0.1:{listener.getsockname()[1]}{path}"
         run = subprocess.run(
             [browser, "--headless=new", "--no-sandbox", "--disable-gpu", "--dump-dom",
-             "--disable-background-networking", "--virtual-time-budget=8000",
+             "--disable-background-networking", "--disable-component-update", "--disable-sync",
+             "--no-first-run", "--disable-quic", "--virtual-time-budget=8000",
              "--host-resolver-rules=MAP * ~NOTFOUND, EXCLUDE 127.0.0.1",
              f"--user-data-dir={tmp_path / 'profile'}", f"--log-net-log={log}", page],
             capture_output=True, text=True, timeout=60, check=True,
         )  # fmt: skip
-        hosts = set(re.findall(r'"url": ?"(https?://[^"/]+)', log.read_text()))
-        return run.stdout, sorted(h for h in hosts if not h.startswith("http://127.0.0.1"))
+        # What the browser asks for by itself has no page as its initiator.
+        started = [event.get("params", {}) for event in json.loads(log.read_text())["events"]]
+        asked = {
+            params["url"]
+            for params in started
+            if "url" in params and str(params.get("initiator", "")).startswith("http")
+        }
+        assert any(url.endswith(".js") for url in asked), "the log tells what the page asked for"
+        return run.stdout, sorted(url for url in asked if not url.startswith("http://127.0.0.1"))
 
     yield opened
     server.should_exit = True
