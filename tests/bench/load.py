@@ -63,6 +63,12 @@ def connect(port):
     return connection
 
 
+def asked_once(port, request):
+    """Ask on a connection of its own."""
+    with connect(port) as connection:
+        return reply_to(connection, request)
+
+
 def load(port, request, *, seconds, connections=CONNECTIONS):
     """Ask the same over and over on several connections, each waiting for its answer."""
     opened = [connect(port) for _ in range(connections)]

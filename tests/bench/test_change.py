@@ -4,6 +4,8 @@ import json
 import sqlite3
 import statistics
 import time
+from contextlib import closing, contextmanager
+from functools import partial
 
 import psycopg
 import pytest
@@ -27,8 +29,13 @@ def _times(step):
     return statistics.median(taken)
 
 
+@contextmanager
 def _bare_sqlite(file):
-    connection = sqlite3.connect(file, isolation_level=None)
+    with closing(sqlite3.connect(file, isolation_level=None)) as connection:
+        yield _step_on_sqlite(connection)
+
+
+def _step_on_sqlite(connection):
     connection.execute("PRAGMA journal_mode=WAL")
     connection.execute("PRAGMA synchronous=FULL")
     connection.execute("CREATE TABLE bare (id INTEGER PRIMARY KEY, value REAL)")
@@ -42,8 +49,13 @@ def _bare_sqlite(file):
     return step
 
 
+@contextmanager
 def _bare_postgresql(url):
-    connection = psycopg.connect(url, autocommit=True)
+    with closing(psycopg.connect(url, autocommit=True)) as connection:
+        yield _step_on_postgresql(connection)
+
+
+def _step_on_postgresql(connection):
     connection.execute("CREATE TABLE bare (id INTEGER PRIMARY KEY, value double precision)")
     connection.execute("INSERT INTO bare VALUES (1, 0.0)")
 
@@ -53,23 +65,21 @@ def _bare_postgresql(url):
     return step
 
 
+def _change(connection, path, number):
+    body = json.dumps({"contents_l": 10.0 + number % 17}).encode()
+    status, _, answer = reply_to(connection, request_bytes("PATCH", path, key=KEY, body=body))
+    assert status == 200, answer
+
+
 def test_change_of_a_vessel_against_a_bare_row_update(durable_url, tmp_path, report):
     kind, url = durable_url
     with served(url) as port:
         _, vessel = a_room_with_a_dewar(port)
-        connection = connect(port)
-
-        def change(number):
-            body = json.dumps({"contents_l": 10.0 + number % 17}).encode()
-            status, _, answer = reply_to(
-                connection, request_bytes("PATCH", f"/v1/vessels/{vessel}", key=KEY, body=body)
-            )
-            assert status == 200, answer
-
-        changed = _times(change)
-    bare = _times(
-        _bare_sqlite(tmp_path / "bare.sqlite") if kind == "sqlite" else _bare_postgresql(url)
-    )
+        with connect(port) as connection:
+            changed = _times(partial(_change, connection, f"/v1/vessels/{vessel}"))
+    on_sqlite = kind == "sqlite"
+    with _bare_sqlite(tmp_path / "bare.sqlite") if on_sqlite else _bare_postgresql(url) as step:
+        bare = _times(step)
     report(
         f"change on {kind}: {changed / bare:.1f} x a bare durable update"
         f" ({changed * 1e3:.2f} ms against {bare * 1e3:.2f} ms, medians of {TIMES})"

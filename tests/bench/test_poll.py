@@ -5,7 +5,7 @@ import json
 import pytest
 
 from tests.bench.conftest import KEY, free_port, process, served
-from tests.bench.load import connect, load, reply_to, request_bytes
+from tests.bench.load import asked_once, load, request_bytes
 
 pytestmark = pytest.mark.bench
 SECONDS = 4.0
@@ -13,7 +13,7 @@ SECONDS = 4.0
 
 def _made(port, path, fields):
     body = json.dumps(fields).encode()
-    status, _, answer = reply_to(connect(port), request_bytes("POST", path, key=KEY, body=body))
+    status, _, answer = asked_once(port, request_bytes("POST", path, key=KEY, body=body))
     assert status == 201, answer
     return json.loads(answer)
 
@@ -38,7 +38,7 @@ def test_poll_of_a_room_against_a_bare_function(durable_url, tmp_path, report):
         room, _ = a_room_with_a_dewar(port)
         path = f"/v1/rooms/{room}/status"
         full = request_bytes("GET", path, key=KEY)
-        status, head, body = reply_to(connect(port), full)
+        status, head, body = asked_once(port, full)
         assert status == 200
         etag = next(
             line.split(b": ", 1)[1].decode()
