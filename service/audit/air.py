@@ -5,7 +5,7 @@ from typing import Final
 
 import numpy as np
 
-from service.audit.columns import ARRANGEMENTS, UNIT_STATES, Columns
+from service.audit.columns import ARRANGEMENTS, UNIT_STATES, Columns, is_one_of
 from service.audit.conditions import Conditions, known
 from service.physics.arrays import Floats, Integers, Mask, quotient, sum_by_group
 
@@ -93,7 +93,7 @@ def _combined(
     given: Columns, room: Conditions, units: UnitAir, counted: Mask, with_nature: bool
 ) -> tuple[Floats, Floats, Floats, Floats, Mask, Floats]:
     """Supply and exhaust as counted, air as moved, air by fans, whether natural, and the factor."""
-    blows = np.isin(given.units.arrangement, (_SUPPLY, _BALANCED))
+    blows = is_one_of(given.units.arrangement, (_SUPPLY, _BALANCED))
     draws = given.units.arrangement != _SUPPLY
     moved = np.where(counted, units.flow, 0.0)
     credited = moved / units.mixing_factor

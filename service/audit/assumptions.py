@@ -25,6 +25,7 @@ from service.audit.columns import (
     VESSEL_STATES,
     Columns,
     all_of,
+    is_one_of,
 )
 from service.audit.conditions import SEA_LEVEL, is_enclosed
 from service.audit.inventory import CYLINDER, ICE
@@ -240,7 +241,7 @@ def _loss_of_ice(table: CaseTable) -> Floats:
 
 def _no_filling(table: CaseTable) -> Mask:
     vessels = table.given.vessels
-    filled = ~np.isin(vessels.kind, (ICE, CYLINDER))
+    filled = ~is_one_of(vessels.kind, (ICE, CYLINDER))
     return all_of(vessels.filled_by == UNKNOWN, filled, table.stock.present)
 
 

@@ -76,11 +76,12 @@ def cases_of(given: Columns, at: np.datetime64, failed: tuple[str | None, ...] =
     stock = inventory(given, room, at)
     flows = air(given, room, at)
     found = sources(given, stock, room)
+    built = all_rows(given, found)
     blocks = [
         (release, code, airflow, rows)
         for code, release in enumerate(RELEASES)
-        for built, rows in all_rows(given, found)
-        if built is release
+        for of_release, rows in built
+        if of_release is release
         for airflow in AIRFLOWS
         if airflow != PROVEN or not release.at_once
     ]

@@ -245,6 +245,14 @@ def members(room: Integers, index: Integers, count: int) -> tuple[Integers, Inte
     return within + np.repeat(starts[index], wanted), asked
 
 
+def is_one_of(codes: Integers, wanted: Sequence[int]) -> Mask:
+    """Tell which codes are among a few; numpy's own search is made for many, and slow for these."""
+    found: Mask = codes == wanted[0]
+    for code in wanted[1:]:
+        found = found | (codes == code)
+    return found
+
+
 def all_of(*conditions: Mask) -> Mask:
     """Tell where every condition holds."""
     held: Mask = np.logical_and.reduce(conditions)

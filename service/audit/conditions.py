@@ -5,7 +5,7 @@ from typing import Final
 
 import numpy as np
 
-from service.audit.columns import ROOM_KINDS, Columns
+from service.audit.columns import ROOM_KINDS, Columns, is_one_of
 from service.physics.ambient import oxygen_critical_mark, oxygen_danger_mark, station_pressure
 from service.physics.arrays import Floats, Mask
 from service.physics.constants import OXYGEN_IN_AIR, ROOM_TEMPERATURE
@@ -72,7 +72,7 @@ def way_out_of_floor(given: Columns) -> Floats:
 
 def is_enclosed(given: Columns) -> Mask:
     """Tell which rooms have no natural air at all."""
-    return np.isin(given.rooms.kind, ENCLOSED_KINDS)
+    return is_one_of(given.rooms.kind, ENCLOSED_KINDS)
 
 
 def known(values: Floats, otherwise: Floats | float) -> Floats:

@@ -13,6 +13,7 @@ from service.audit.columns import (
     VESSEL_STATES,
     Columns,
     Moments,
+    is_one_of,
 )
 from service.audit.conditions import Conditions, known
 from service.physics.arrays import Floats, Integers, Mask
@@ -77,7 +78,7 @@ def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
         _evaporation(given, capacity, density, full),
     )
     use = np.where(empty | ~present, 0.0, known(vessels.use, 0.0) * density)
-    refilled = (vessels.filled_by != _EXCHANGED) & ~np.isin(vessels.kind, (ICE, CYLINDER))
+    refilled = (vessels.filled_by != _EXCHANGED) & ~is_one_of(vessels.kind, (ICE, CYLINDER))
     mass_rate = evaporation + use
     return Inventory(
         present=present,
@@ -106,7 +107,7 @@ def count_holds(count_due: Moments, filled_by: Integers, at: np.datetime64) -> M
 
 def is_filled_by_transfer(kind: Integers) -> Mask:
     """Tell which kinds lose gas in the room while they are filled."""
-    return ~np.isin(kind, (ICE, CYLINDER, MAGNET))
+    return ~is_one_of(kind, (ICE, CYLINDER, MAGNET))
 
 
 def poorer(oxygen: Floats) -> Mask:
@@ -117,7 +118,7 @@ def poorer(oxygen: Floats) -> Mask:
 def _by_kind(given: Columns) -> Mask:
     vessels = given.vessels
     nothing = np.isnan(vessels.measured_evaporation) & np.isnan(vessels.rated_evaporation)
-    return nothing & ~np.isin(vessels.kind, (ICE, CYLINDER))
+    return nothing & ~is_one_of(vessels.kind, (ICE, CYLINDER))
 
 
 def _evaporation(given: Columns, capacity: Floats, density: Floats, full: Floats) -> Floats:

@@ -89,9 +89,28 @@ def sources(given: Columns, stock: Inventory, room: Conditions) -> Sources:
     )
 
 
+def _none(code: int) -> Rows:
+    """No rows: nothing of the kind raises the hazard in any room."""
+    no_rows, no_numbers = np.empty(0, dtype=np.int64), np.empty(0)
+    table = np.empty((0, 1))
+    return Rows(
+        room=no_rows,
+        hazard=np.full(0, code),
+        instant=no_numbers,
+        instant_diluting=no_numbers,
+        durations=table,
+        rates=table,
+        rates_diluting=table,
+        member_row=no_rows,
+        member_source=no_rows,
+    )
+
+
 def boil_off(given: Columns, found: Sources, code: int, hazard: Hazard) -> Rows:
     """Normal evaporation, use and purge gas, each until it is gone, for the sustained time."""
     member = np.flatnonzero(hazard.raised_by(found.oxygen) & (found.rate > 0.0))
+    if not member.size:
+        return _none(code)
     rooms, row = np.unique(found.room[member], return_inverse=True)
     row = row.reshape(-1)
     sustained = given.bases.sustained[rooms]
@@ -147,6 +166,8 @@ def largest_vessel(given: Columns, found: Sources, code: int, hazard: Hazard) ->
     same safeguards count. A group of several fluids is a case of its own.
     """
     member = np.flatnonzero(hazard.raised_by(found.oxygen) & (found.at_once > 0.0))
+    if not member.size:
+        return _none(code)
     groups, group = np.unique(found.group[member], return_inverse=True)
     group = group.reshape(-1)
     volume = sum_by_group(found.at_once[member], group, groups.size)

@@ -14,6 +14,7 @@ from service.audit.columns import (
     SETTLES,
     UNKNOWN,
     Columns,
+    is_one_of,
     members,
 )
 from service.audit.conditions import Conditions, known
@@ -113,9 +114,9 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
         detectors=found,
         detection=(has_low | ~needs_low) & (has_high | ~needs_high) & (needs_low | needs_high),
         ventilation=_ventilation(table, results),
-        nobody_inside=alone & np.isin(kind, [*_SEALED, _PIT]),
-        alone_suffices=alone & np.isin(kind, _SEALED),
-        nobody_counts=np.isin(kind, [*_SEALED, _PIT]),
+        nobody_inside=alone & is_one_of(kind, [*_SEALED, _PIT]),
+        alone_suffices=alone & is_one_of(kind, _SEALED),
+        nobody_counts=is_one_of(kind, [*_SEALED, _PIT]),
         alarm=rounded(first),
         margin=rounded(second - first - out_after),
         late=~table.at_once & ~np.isnan(second) & ~out,
@@ -129,7 +130,7 @@ def gas_heights(given: Columns, fluid: Integers) -> tuple[Mask, Mask]:
     settles = np.full(fluid.shape, _LOW)
     named = fluid != UNKNOWN
     settles[named] = given.fluids.settles[fluid[named]]
-    return np.isin(settles, (_LOW, _METHANE)), np.isin(settles, (_HIGH, _METHANE))
+    return is_one_of(settles, (_LOW, _METHANE)), is_one_of(settles, (_HIGH, _METHANE))
 
 
 def _heights_needed(table: CaseTable) -> tuple[Mask, Mask]:
