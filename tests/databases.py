@@ -7,7 +7,7 @@ import signal
 import subprocess
 import tempfile
 import time
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 
@@ -99,7 +99,7 @@ class Cluster:
 
 
 @contextmanager
-def cluster() -> Iterator[Cluster]:
+def cluster(flags: Sequence[str] = FAST) -> Iterator[Cluster]:
     """Start a PostgreSQL server for a block, with a migrated template in it."""
     programs = server_programs()
     if programs is None:
@@ -118,7 +118,7 @@ def cluster() -> Iterator[Cluster]:
              "--encoding=UTF8", "--locale=C"],
             check=True, stdout=subprocess.DEVNULL, timeout=60, **as_user,
         )  # fmt: skip
-        settings = [f"-c{setting}" for setting in FAST]
+        settings = [f"-c{setting}" for setting in flags]
         with (folder / "log").open("w") as log:
             server = subprocess.Popen(
                 [programs / "postgres", "-D", data, "-clisten_addresses=",

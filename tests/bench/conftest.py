@@ -10,7 +10,7 @@ from contextlib import contextmanager
 
 import pytest
 
-from tests.databases import TEMPLATE
+from tests.databases import TEMPLATE, cluster
 
 KEY = "rw_benchkey_" + "k" * 43
 ROOT = __file__.rsplit("/tests/", 1)[0]
@@ -75,12 +75,7 @@ def durable_url(request, tmp_path, migrated_sqlite_file):
         shutil.copy(migrated_sqlite_file, file)
         yield request.param, f"sqlite:///{file}"
         return
-    running = request.getfixturevalue("postgresql_cluster")
-    running.run("ALTER SYSTEM SET synchronous_commit = on")
-    running.run("ALTER SYSTEM SET fsync = on")
-    running.run("ALTER SYSTEM SET full_page_writes = on")
-    running.run("SELECT pg_reload_conf()")
-    with running.copy_of(TEMPLATE) as url:
+    with cluster(flags=()) as running, running.copy_of(TEMPLATE) as url:
         yield request.param, url
 
 
