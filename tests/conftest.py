@@ -23,8 +23,17 @@ settings.register_profile("ci", deadline=None, derandomize=True, print_blob=True
 settings.load_profile("ci" if os.environ.get("CI") else "here")
 
 
+# What crosses the whole service is run on SQLite while one works, and on both in deploy/test.sh.
+QUICK_ON_BOTH = {"store", "migrations"}
+
+
+@pytest.hookimpl(tryfirst=True)
 def pytest_collection_modifyitems(items):
     """Begin with the files that take long, so that no worker ends alone with one of them."""
+    for item in items:
+        on_postgresql = item.get_closest_marker("postgresql") is not None
+        if on_postgresql and not QUICK_ON_BOTH.intersection(item.path.parts):
+            item.add_marker(pytest.mark.slow)
     long_files = {item.path for item in items if item.get_closest_marker("slow")}
     items.sort(key=lambda item: item.path not in long_files)
 

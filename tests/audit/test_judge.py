@@ -315,6 +315,7 @@ def with_fewer_records(room):
             yield replace(room, detectors=(*rest[:place], worse, *rest[place + 1 :]))
 
 
+@pytest.mark.slow
 @thorough
 @given(rooms)
 def test_adding_a_safeguard_never_raises_a_severity(room):
@@ -322,6 +323,7 @@ def test_adding_a_safeguard_never_raises_a_severity(room):
     assert all(each[rule] <= before[rule] for each in after for rule in CASE_RULES)
 
 
+@pytest.mark.slow
 @thorough
 @given(rooms)
 def test_removing_the_record_of_a_safeguard_never_lowers_a_severity(room):
@@ -363,6 +365,7 @@ def test_more_outdoor_air_never_lowers_the_lowest_oxygen(room, factor):
     assert no_better(before, after)
 
 
+@pytest.mark.slow
 @thorough
 @given(rooms, st.floats(1.0, 20.0))
 def test_more_contents_never_raise_it(room, factor):
@@ -421,6 +424,7 @@ def a_neighbour(number):
 NEIGHBOURS = tuple(a_neighbour(number) for number in range(50))
 
 
+@pytest.mark.slow
 @thorough
 @given(rooms, st.integers(0, 50))
 def test_a_room_judged_alone_is_judged_the_same_among_others(room, place):
@@ -428,11 +432,13 @@ def test_a_room_judged_alone_is_judged_the_same_among_others(room, place):
     assert assessed(room) == (assessed(*many)[place],)
 
 
+@pytest.mark.slow
 def test_rooms_judged_together_are_judged_as_each_alone():
     together = assessed(*NEIGHBOURS)
     assert together == tuple(assessed(room)[0] for room in NEIGHBOURS)
 
 
+@pytest.mark.slow
 @thorough
 @given(rooms)
 def test_any_room_can_be_judged_and_its_answer_hangs_together(room):
@@ -456,6 +462,7 @@ def test_any_room_can_be_judged_and_its_answer_hangs_together(room):
     assert len({each.identity for each in findings_of(room)}) == len(found.judgements)
 
 
+@pytest.mark.slow
 @thorough
 @given(rooms)
 def test_a_room_turns_later_and_then_says_something_else(room):

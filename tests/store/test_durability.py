@@ -83,6 +83,7 @@ def test_a_full_database_refuses_writes_keeps_reads_and_recovers(sqlite_url, clo
         assert len(bases(database)) == 3
 
 
+@pytest.mark.slow
 def test_a_full_disk_refuses_writes_keeps_reads_and_recovers(sqlite_url):
     """A limit on the size of files makes the system refuse to write, as a full disk does."""
     child = program(
