@@ -41,6 +41,7 @@ class FluidValues:
     solid: bool
     hazards: frozenset[str]  # of asphyxiant, oxidiser, toxic, flammable
     settles: str  # low, high or methane (judging.md 6)
+    flammable_limit: float | None = None  # [1] lower limit of a site's own fluid, by volume
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,8 +66,26 @@ class VesselValues:
     insulation: str | None = None
     vent_to: str | None = None  # room, outdoors; None: unknown
     filled_by: str | None = None  # automatic, attended, exchanged; None: unknown
+    fill_flow: float | None = None  # [m3/s] of liquid
+    independent_high_level: bool | None = None
+    closes_in: float | None = None  # [s] from the independent high level to the shut valve
+    shut_off_test_due: datetime | None = None  # None: never tested
+    gross_volume: float | None = None  # [m3]
+    charge_pressure: float | None = None  # [Pa] absolute; of a cylinder kept by volume
+    neck_plug: str | None = None  # vented, sealed
+    relief_fitted: bool | None = None
+    relief_inspection_due: datetime | None = None  # None: never inspected or no interval
+    relief_inspected: bool = False
     manifold: str | None = None
     mobile: bool | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Outage:
+    """A planned time in which a unit stands still or a detector sees nothing."""
+
+    begins: datetime
+    ends: datetime
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,6 +104,10 @@ class UnitValues:
     standby_power: bool | None = None
     flow_proved: bool | None = None
     fail_alarm: bool | None = None
+    boost_flow: float | None = None  # [m3/s] of the whole unit once boosted
+    boost_trigger: str | None = None  # id of a detector, or manual
+    terminal_height: str | None = None  # low, high
+    outages: tuple[Outage, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -105,6 +128,30 @@ class DetectorValues:
     display_outside: bool | None = None
     power_backed: bool | None = None
     monitored: bool | None = None
+    zeroed_at: float | None = None  # [Pa] absolute
+    outages: tuple[Outage, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class ControlValues:
+    """An administrative measure of a room, or of a vessel in it."""
+
+    record: Reference
+    kind: str  # signage, procedure, training, …
+    vessel_id: str | None = None  # None: of the room
+    reference: str | None = None
+    area: float | None = None  # [m2] of a bund
+    check_due: datetime | None = None  # None: never checked or no interval
+    checked: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class PitValues:
+    """A pit, trench or shaft in the floor of a room."""
+
+    area: float  # [m2]
+    depth: float  # [m]
+    entered: bool | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -134,3 +181,5 @@ class RoomValues:
     vessels: tuple[VesselValues, ...] = ()
     units: tuple[UnitValues, ...] = ()
     detectors: tuple[DetectorValues, ...] = ()
+    controls: tuple[ControlValues, ...] = ()
+    pit: PitValues | None = None
