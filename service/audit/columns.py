@@ -12,7 +12,7 @@ import numpy as np
 import numpy.typing as npt
 
 from service.audit.assessment import SEVERITIES
-from service.audit.inputs import FluidValues, RoomValues
+from service.audit.inputs import FluidValues, Outage, RoomValues
 from service.physics.arrays import Floats, Integers, Mask
 from service.physics.constants import SECONDS_PER_DAY, SECONDS_PER_HOUR
 
@@ -21,6 +21,8 @@ Moments: TypeAlias = npt.NDArray[np.datetime64]
 PERCENT: Final = 0.01
 KILOPASCAL: Final = 1000.0  # [Pa]
 UNKNOWN: Final = -1
+_FLAMMABLE: Final = ("methane", "hydrogen")  # those whose lower limit the basis names
+_LITRES_A_MINUTE: Final = 1e-3 / 60.0  # [m3/s]
 OXYGEN: Final = "oxygen"  # the gas of an oxygen detector; row 0 of the gases
 
 ROOM_KINDS: Final = ("room", "corridor", "walk-in", "pit", "lift", "vehicle")
@@ -42,6 +44,25 @@ UNIT_STATES: Final = ("running", "stopped", "failed")
 DETECTOR_STATES: Final = ("in-service", "fault", "off")
 PLACES: Final = ("inside", "entrance")
 SETTLES: Final = ("low", "high", "methane")
+NECK_PLUGS: Final = ("vented", "sealed")
+CONTROL_KINDS: Final = (
+    "signage",
+    "procedure",
+    "training",
+    "personal-monitor",
+    "alarm-response",
+    "rescue",
+    "lone-working",
+    "protective-equipment",
+    "access",
+    "delivery-route",
+    "bund",
+)
+MANUAL: Final = "manual"  # a boost that a person starts
+BY_HAND: Final = -2  # the row of its detector
+CARBON_DIOXIDE: Final = "carbon-dioxide"
+NITROUS_OXIDE: Final = "nitrous-oxide"
+HELIUM: Final = "helium"
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,6 +84,10 @@ class Bases:
     by_displacement: Mask  # C1; else C2
     as_recorded: Mask  # contents as recorded; else capacity
     fill_loss: Floats
+    fill_margin: Floats  # of what is let go at once from a vessel filled in the room
+    fill_flow: Floats  # [m3/s] of liquid, where none is recorded
+    warm_fill_loss: Floats
+    helium_fill_loss: Floats
     evaporation_factor: Floats
     evaporation_by_kind: Floats  # share of capacity a second, (rooms, kinds of vessel)
     sustained: Floats  # [s]
@@ -72,6 +97,13 @@ class Bases:
     net_volume_share: Floats
     never_measured_share: Floats
     ice_share: Floats  # [1/h]
+    loose_ice_share: Floats  # [1/h]
+    many_vessels: Floats
+    carbon_dioxide: Floats  # (rooms, 3) fractions: mean of 8 h, of 15 min, peak
+    nitrous_oxide: Floats  # (rooms, 2) fractions: mean of 8 h, of 15 min
+    nitrous_oxide_accident: Floats
+    flammable_limits: Floats  # (rooms, 2) fractions: methane, hydrogen
+    flammable_shares: Floats  # (rooms, 3) of the lower limit
     severity: Integers  # (rooms, 3 marks, 3 columns), index in SEVERITIES
 
 
@@ -91,6 +123,7 @@ class Rooms:
     below_ground: Integers
     purge_flow: Floats
     purge_fluid: Integers  # row of the fluids
+    attended: Integers
     unaccompanied: Integers
     way_out: Floats
 
@@ -115,6 +148,18 @@ class Vessels:
     use: Floats
     vent_to: Integers
     filled_by: Integers
+    fill_flow: Floats  # [m3/s] of liquid
+    high_level: Integers  # an independent one, that closes the supply
+    closes_in: Floats  # [s]
+    shut_off_test_due: Moments
+    gross_volume: Floats
+    charge_pressure: Floats  # [Pa] absolute; of a cylinder kept by volume
+    neck_plug: Integers
+    relief_fitted: Integers
+    relief_inspected: Mask
+    relief_due: Moments
+    mobile: Integers
+    on_manifold: Mask  # names one
     group: Integers  # vessels of one manifold share one; unique to its room
 
 
@@ -132,8 +177,13 @@ class Units:
     outdoor_air_fraction: Floats
     mixing_factor: Floats
     state: Integers
+    outage_begins: Moments  # (units, most outages); not-a-time where there is none
+    outage_ends: Moments
     standby_power: Integers
+    flow_proved: Integers
     fail_alarm: Integers
+    boost_flow: Floats
+    boost_detector: Integers  # row of the detectors; -1 where unknown, BY_HAND by a person
 
 
 @dataclass(frozen=True, slots=True)
@@ -150,10 +200,27 @@ class Detectors:
     alarms: Floats  # (detectors, most alarms) as fractions; not-a-number where there is none
     calibration_due: Moments
     state: Integers
+    outage_begins: Moments
+    outage_ends: Moments
     silenced_since: Moments
     heard_outside: Integers
     display_outside: Integers
     power_backed: Integers
+    monitored: Integers
+    zeroed_at: Floats
+
+
+@dataclass(frozen=True, slots=True)
+class Controls:
+    """One row an administrative measure of a room or of a vessel in it."""
+
+    room: Integers
+    source: Integers
+    kind: Integers
+    vessel: Integers  # row of the vessels; -1 where it is of the room
+    area: Floats
+    checked: Mask
+    check_due: Moments
 
 
 @dataclass(frozen=True, slots=True)
@@ -166,6 +233,11 @@ class Fluids:
     settles: Integers
     toxic: Mask
     flammable: Mask
+    carbon_dioxide: Mask
+    nitrous_oxide: Mask
+    helium: Mask
+    limit_named: Integers  # column of the basis's flammable limits; -1 where it has none
+    own_limit: Floats  # lower flammable limit recorded with the fluid
     gas: Integers  # row of the names of gases
 
 
@@ -178,6 +250,7 @@ class Columns:
     vessels: Vessels
     units: Units
     detectors: Detectors
+    controls: Controls
     fluids: Fluids
     gases: tuple[str, ...]  # names that detectors and fluids point at
 
@@ -216,7 +289,14 @@ def columns(rooms: Sequence[RoomValues]) -> Columns:
     detectors = _detectors(rooms, gases)
     fluid_table = _fluids(tuple(fluids.rows), gases)
     return Columns(
-        table, _bases(rooms), vessels, _units(rooms), detectors, fluid_table, tuple(gases.rows)
+        rooms=table,
+        bases=_bases(rooms),
+        vessels=vessels,
+        units=_units(rooms),
+        detectors=detectors,
+        controls=_controls(rooms),
+        fluids=fluid_table,
+        gases=tuple(gases.rows),
     )
 
 
@@ -225,13 +305,26 @@ def taken(given: Columns, index: Integers) -> Columns:
     vessels, vessel_room = members(given.vessels.room, index, given.count)
     units, unit_room = members(given.units.room, index, given.count)
     detectors, detector_room = members(given.detectors.room, index, given.count)
+    controls, control_room = members(given.controls.room, index, given.count)
+    picked_units = replace(_picked(given.units, units), room=unit_room)
+    picked_controls = replace(_picked(given.controls, controls), room=control_room)
     return replace(
         given,
         rooms=_picked(given.rooms, index),
         bases=_picked(given.bases, index),
         vessels=_regrouped(replace(_picked(given.vessels, vessels), room=vessel_room)),
-        units=replace(_picked(given.units, units), room=unit_room),
+        # A row that points at another table follows what stood there in the same room.
+        units=replace(
+            picked_units,
+            boost_detector=_followed(
+                picked_units.boost_detector, picked_units.room, detectors, detector_room
+            ),
+        ),
         detectors=replace(_picked(given.detectors, detectors), room=detector_room),
+        controls=replace(
+            picked_controls,
+            vessel=_followed(picked_controls.vessel, control_room, vessels, vessel_room),
+        ),
     )
 
 
@@ -259,7 +352,23 @@ def all_of(*conditions: Mask) -> Mask:
     return held
 
 
-_Table = TypeVar("_Table", Rooms, Bases, Vessels, Units, Detectors)
+def _followed(
+    target: Integers, room: Integers, taken_rows: Integers, taken_room: Integers
+) -> Integers:
+    """Where the rows pointed at stand once some were taken, each asked for by its own room."""
+    found = target.copy()
+    points = np.flatnonzero(target >= 0)
+    if points.size:
+        place = {
+            key: row
+            for row, key in enumerate(zip(taken_room.tolist(), taken_rows.tolist(), strict=True))
+        }
+        pairs = zip(room[points].tolist(), target[points].tolist(), strict=True)
+        found[points] = [place.get(pair, UNKNOWN) for pair in pairs]
+    return found
+
+
+_Table = TypeVar("_Table", Rooms, Bases, Vessels, Units, Detectors, Controls)
 
 
 def _picked(table: _Table, rows: Integers) -> _Table:
@@ -289,6 +398,7 @@ def _rooms(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Rooms
         purge_fluid=_integers(
             UNKNOWN if room.purge_fluid is None else fluids.row(room.purge_fluid) for room in rooms
         ),
+        attended=_flags(room.attended for room in rooms),
         unaccompanied=_flags(room.unaccompanied for room in rooms),
         way_out=_floats(room.way_out for room in rooms),
     )
@@ -314,6 +424,18 @@ def _vessels(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Ves
         use=_floats(vessel.use for vessel in all_of),
         vent_to=_codes((vessel.vent_to for vessel in all_of), VENTS),
         filled_by=_codes((vessel.filled_by for vessel in all_of), FILLED_BY),
+        fill_flow=_floats(vessel.fill_flow for vessel in all_of),
+        high_level=_flags(vessel.independent_high_level for vessel in all_of),
+        closes_in=_floats(vessel.closes_in for vessel in all_of),
+        shut_off_test_due=moments(vessel.shut_off_test_due for vessel in all_of),
+        gross_volume=_floats(vessel.gross_volume for vessel in all_of),
+        charge_pressure=_floats(vessel.charge_pressure for vessel in all_of),
+        neck_plug=_codes((vessel.neck_plug for vessel in all_of), NECK_PLUGS),
+        relief_fitted=_flags(vessel.relief_fitted for vessel in all_of),
+        relief_inspected=_mask(vessel.relief_inspected for vessel in all_of),
+        relief_due=moments(vessel.relief_inspection_due for vessel in all_of),
+        mobile=_flags(vessel.mobile for vessel in all_of),
+        on_manifold=_mask(vessel.manifold is not None for vessel in all_of),
         group=_integers(
             group.rows.setdefault((row, vessel.manifold or place), len(group.rows))
             for row, room in enumerate(rooms)
@@ -324,6 +446,7 @@ def _vessels(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Ves
 
 def _units(rooms: Sequence[RoomValues]) -> Units:
     all_of = [unit for room in rooms for unit in room.units]
+    begins, ends = _outages([unit.outages for unit in all_of])
     return Units(
         room=_owners([room.units for room in rooms]),
         source=_positions([room.units for room in rooms]),
@@ -335,13 +458,69 @@ def _units(rooms: Sequence[RoomValues]) -> Units:
         outdoor_air_fraction=_floats(unit.outdoor_air_fraction for unit in all_of),
         mixing_factor=_floats(unit.mixing_factor for unit in all_of),
         state=_codes((unit.state for unit in all_of), UNIT_STATES),
+        outage_begins=begins,
+        outage_ends=ends,
         standby_power=_flags(unit.standby_power for unit in all_of),
+        flow_proved=_flags(unit.flow_proved for unit in all_of),
         fail_alarm=_flags(unit.fail_alarm for unit in all_of),
+        boost_flow=_floats(unit.boost_flow for unit in all_of),
+        boost_detector=_boost_detectors(rooms),
+    )
+
+
+def _boost_detectors(rooms: Sequence[RoomValues]) -> Integers:
+    """Row of the detector that starts the boost of each unit; one of another room is unknown."""
+    starts: list[int] = []
+    first = 0
+    for room in rooms:
+        rows = {detector.record.id: first + place for place, detector in enumerate(room.detectors)}
+        rows[MANUAL] = BY_HAND
+        starts += [
+            UNKNOWN if unit.boost_trigger is None else rows.get(unit.boost_trigger, UNKNOWN)
+            for unit in room.units
+        ]
+        first += len(room.detectors)
+    return _integers(starts)
+
+
+def _outages(of_each: Sequence[Sequence[Outage]]) -> tuple[Moments, Moments]:
+    """When planned outages begin and end, (rows, most outages)."""
+    width = max((len(outages) for outages in of_each), default=0)
+    shape = (len(of_each), width)
+    begins = np.full(shape, np.datetime64("NaT", "us"))
+    ends = begins.copy()
+    for row, outages in enumerate(of_each):
+        if outages:
+            begins[row, : len(outages)] = moments(outage.begins for outage in outages)
+            ends[row, : len(outages)] = moments(outage.ends for outage in outages)
+    return begins, ends
+
+
+def _controls(rooms: Sequence[RoomValues]) -> Controls:
+    all_of = [control for room in rooms for control in room.controls]
+    vessels: list[int] = []
+    first = 0
+    for room in rooms:
+        rows = {vessel.record.id: first + place for place, vessel in enumerate(room.vessels)}
+        vessels += [
+            UNKNOWN if control.vessel_id is None else rows.get(control.vessel_id, UNKNOWN)
+            for control in room.controls
+        ]
+        first += len(room.vessels)
+    return Controls(
+        room=_owners([room.controls for room in rooms]),
+        source=_positions([room.controls for room in rooms]),
+        kind=_codes((control.kind for control in all_of), CONTROL_KINDS),
+        vessel=_integers(vessels),
+        area=_floats(control.area for control in all_of),
+        checked=_mask(control.checked for control in all_of),
+        check_due=moments(control.check_due for control in all_of),
     )
 
 
 def _detectors(rooms: Sequence[RoomValues], gases: _Distinct[str]) -> Detectors:
     all_of = [detector for room in rooms for detector in room.detectors]
+    begins, ends = _outages([detector.outages for detector in all_of])
     return Detectors(
         room=_owners([room.detectors for room in rooms]),
         source=_positions([room.detectors for room in rooms]),
@@ -353,10 +532,14 @@ def _detectors(rooms: Sequence[RoomValues], gases: _Distinct[str]) -> Detectors:
         alarms=_padded([detector.alarms for detector in all_of]) / 100.0,
         calibration_due=moments(detector.calibration_due for detector in all_of),
         state=_codes((detector.state for detector in all_of), DETECTOR_STATES),
+        outage_begins=begins,
+        outage_ends=ends,
         silenced_since=moments(detector.silenced_since for detector in all_of),
         heard_outside=_flags(detector.heard_outside for detector in all_of),
         display_outside=_flags(detector.display_outside for detector in all_of),
         power_backed=_flags(detector.power_backed for detector in all_of),
+        monitored=_flags(detector.monitored for detector in all_of),
+        zeroed_at=_floats(detector.zeroed_at for detector in all_of),
     )
 
 
@@ -368,6 +551,14 @@ def _fluids(fluids: Sequence[FluidValues], gases: _Distinct[str]) -> Fluids:
         settles=_codes((fluid.settles for fluid in fluids), SETTLES),
         toxic=_mask("toxic" in fluid.hazards for fluid in fluids),
         flammable=_mask("flammable" in fluid.hazards for fluid in fluids),
+        carbon_dioxide=_mask(fluid.record.tag == CARBON_DIOXIDE for fluid in fluids),
+        nitrous_oxide=_mask(fluid.record.tag == NITROUS_OXIDE for fluid in fluids),
+        helium=_mask(fluid.record.tag == HELIUM for fluid in fluids),
+        limit_named=_integers(
+            _FLAMMABLE.index(tag) if (tag := fluid.record.tag) in _FLAMMABLE else UNKNOWN
+            for fluid in fluids
+        ),
+        own_limit=_floats(fluid.flammable_limit for fluid in fluids),
         gas=_integers(gases.row(fluid.record.tag) for fluid in fluids),
     )
 
@@ -385,6 +576,10 @@ def _bases(rooms: Sequence[RoomValues]) -> Bases:
 def _basis_table(bases: Sequence[Mapping[str, Any]]) -> Bases:
     def number(name: str, scale: float = 1.0) -> Floats:
         return _floats(values[name] for values in bases) * scale
+
+    def named(name: str, parts: Sequence[str]) -> Floats:
+        rows = [[values[name][part] for part in parts] for values in bases]
+        return np.array(rows, dtype=np.float64).reshape(len(bases), len(parts)) * PERCENT
 
     def air_changes(where: str) -> Floats:
         changes = _floats(values["natural_air_changes_per_h"][where] for values in bases)
@@ -406,6 +601,10 @@ def _basis_table(bases: Sequence[Mapping[str, Any]]) -> Bases:
         by_displacement=_mask(values["instant_mixing"] == "displacement" for values in bases),
         as_recorded=_mask(values["contents"] == "recorded" for values in bases),
         fill_loss=number("fill_loss_fraction"),
+        fill_margin=number("fill_loss_fraction"),
+        fill_flow=number("default_fill_flow_l_min", _LITRES_A_MINUTE),
+        warm_fill_loss=number("warm_fill_loss"),
+        helium_fill_loss=number("helium_fill_loss"),
         evaporation_factor=number("evaporation_factor"),
         evaporation_by_kind=_by_kind([values["evaporation_pct_day"] for values in bases]),
         sustained=number("sustained_h", SECONDS_PER_HOUR),
@@ -415,6 +614,15 @@ def _basis_table(bases: Sequence[Mapping[str, Any]]) -> Bases:
         net_volume_share=number("net_volume_share"),
         never_measured_share=number("never_measured_share"),
         ice_share=number("ice_share_per_h"),
+        loose_ice_share=number("loose_ice_share_per_h"),
+        many_vessels=number("many_vessels"),
+        carbon_dioxide=named("carbon_dioxide_pct", ("mean_8h", "mean_15min", "peak")),
+        nitrous_oxide=named("nitrous_oxide_pct", ("mean_8h", "mean_15min")),
+        nitrous_oxide_accident=number("nitrous_oxide_accident_pct", PERCENT),
+        flammable_limits=named("lfl_pct", _FLAMMABLE),
+        flammable_shares=np.array(
+            [values["lfl_shares"] for values in bases], dtype=np.float64
+        ).reshape(len(bases), 3),
         severity=_severities([values["severity_table"] for values in bases]),
     )
 
@@ -472,10 +680,6 @@ def moments(values: Iterable[datetime | None]) -> Moments:
         None if value is None else value.astimezone(UTC).replace(tzinfo=None) for value in values
     ]
     return np.array(naive, dtype="datetime64[us]")
-
-
-def _naive(value: datetime | None) -> datetime | None:
-    return None if value is None else value.astimezone(UTC).replace(tzinfo=None)
 
 
 def _padded(lists: Sequence[Sequence[float]]) -> Floats:

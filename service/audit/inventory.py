@@ -71,7 +71,7 @@ def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
         temperature=room.temperature[vessels.room],
     )
     filled_here = is_filled_by_transfer(vessels.kind) & (vessels.filled_by != _EXCHANGED)
-    loss = np.where(filled_here, given.bases.fill_loss[vessels.room], 0.0)
+    loss = np.where(filled_here, given.bases.fill_margin[vessels.room], 0.0)
     evaporation = np.where(
         (vessels.vent_to == _OUTDOORS) | empty | ~present,
         0.0,

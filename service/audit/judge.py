@@ -195,6 +195,7 @@ def records_read(room: RoomValues) -> tuple[Reference, ...]:
         read |= {vessel.record, vessel.fluid.record}
     read |= {unit.record for unit in room.units}
     read |= {detector.record for detector in room.detectors}
+    read |= {control.record for control in room.controls}
     return tuple(sorted(read))
 
 

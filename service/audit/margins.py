@@ -19,7 +19,7 @@ def without_margins(given: Columns) -> Columns:
     return replace(
         given,
         rooms=replace(given.rooms, occupied_fraction=none),
-        bases=replace(given.bases, fill_loss=none, evaporation_factor=ones, mixing_factor=ones),
+        bases=replace(given.bases, fill_margin=none, evaporation_factor=ones, mixing_factor=ones),
         units=replace(
             units,
             mixing_factor=np.full(units.room.size, np.nan),

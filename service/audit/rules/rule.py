@@ -2,10 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from enum import StrEnum
-from typing import Any, Protocol
+from typing import Any, Final, Protocol
 
 import numpy as np
 
@@ -23,6 +23,9 @@ class Subject(StrEnum):
     CASES = "cases"
     ROOMS = "rooms"
     DETECTORS = "detectors"
+    VESSELS = "vessels"
+    UNITS = "ventilation-units"  # a row a unit and room that it serves
+    CONTROLS = "controls"
     ASSUMED = "assumed"  # a row a field that was assumed
     GIVEN = "given"  # every room asked for, also those that cannot be computed
 
@@ -115,10 +118,14 @@ def rooms_of(tables: Tables, subject: Subject) -> Integers:
     table = tables.cases.table
     if subject is Subject.GIVEN:
         return np.arange(len(tables.rooms))
+    given = table.given
     rows = {
         Subject.CASES: table.room,
-        Subject.ROOMS: np.arange(table.given.count),
-        Subject.DETECTORS: table.given.detectors.room,
+        Subject.ROOMS: np.arange(given.count),
+        Subject.DETECTORS: given.detectors.room,
+        Subject.VESSELS: given.vessels.room,
+        Subject.UNITS: given.units.room,
+        Subject.CONTROLS: given.controls.room,
         Subject.ASSUMED: tables.assumed.room,
     }[subject]
     positions: Integers = tables.sound[rows]
@@ -130,10 +137,8 @@ def record_of(tables: Tables, subject: Subject, row: int) -> Reference:
     table = tables.cases.table
     if subject is Subject.GIVEN:
         return tables.rooms[row].record
-    if subject is Subject.DETECTORS:
-        return detector_record(tables, row)
-    if subject is Subject.ASSUMED:
-        return assumed_record(tables, row)
+    if subject in _EQUIPMENT:
+        return _EQUIPMENT[subject](tables, row)
     return tables.room(int(table.room[row]) if subject is Subject.CASES else row).record
 
 
@@ -143,15 +148,42 @@ def detector_record(tables: Tables, row: int) -> Reference:
     return tables.room(int(detectors.room[row])).detectors[int(detectors.source[row])].record
 
 
+def vessel_record(tables: Tables, row: int) -> Reference:
+    """The record of a row of the vessels."""
+    vessels = tables.cases.table.given.vessels
+    return tables.room(int(vessels.room[row])).vessels[int(vessels.source[row])].record
+
+
+def unit_record(tables: Tables, row: int) -> Reference:
+    """The record of a row of the ventilation units."""
+    units = tables.cases.table.given.units
+    return tables.room(int(units.room[row])).units[int(units.source[row])].record
+
+
+def control_record(tables: Tables, row: int) -> Reference:
+    """The record of a row of the controls."""
+    controls = tables.cases.table.given.controls
+    return tables.room(int(controls.room[row])).controls[int(controls.source[row])].record
+
+
 def assumed_record(tables: Tables, place: int) -> Reference:
     """The record of a row of what was assumed."""
-    assumed, given = tables.assumed, tables.cases.table.given
+    assumed = tables.assumed
     room, row = tables.room(int(assumed.room[place])), int(assumed.row[place])
     kind = ASSUMPTIONS[int(assumed.code[place])].record
     if kind == "vessel":
-        return room.vessels[int(given.vessels.source[row])].record
+        return vessel_record(tables, row)
     if kind == "ventilation-unit":
-        return room.units[int(given.units.source[row])].record
+        return unit_record(tables, row)
     if kind == "detector":
-        return room.detectors[int(given.detectors.source[row])].record
+        return detector_record(tables, row)
     return room.site if kind == "site" else room.record
+
+
+_EQUIPMENT: Final[Mapping[Subject, Callable[[Tables, int], Reference]]] = {
+    Subject.DETECTORS: detector_record,
+    Subject.VESSELS: vessel_record,
+    Subject.UNITS: unit_record,
+    Subject.CONTROLS: control_record,
+    Subject.ASSUMED: assumed_record,
+}
