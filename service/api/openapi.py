@@ -28,9 +28,15 @@ and `Change-Stated-At`.
 TAGS: Final = (
     ("Sites", "Where rooms are: elevation, time zone, and the basis that they are judged by."),
     ("Rooms", "Rooms and other spaces that people enter, with their status and assessment."),
+    (
+        "Openings",
+        "Doors, hatches and other openings between rooms. They recalculate nothing yet, and keep "
+        "their rooms from being removed.",
+    ),
     ("VentilationUnits", "Fans and air handling units, and the rooms that they serve."),
     ("Vessels", "Vessels of cryogenic liquid, gas or ice; without a room they stand outdoors."),
     ("Detectors", "Gas detectors."),
+    ("Controls", "Administrative measures of rooms and vessels, with the day of their last check."),
     ("Bases", "The values that rooms are judged by, each with its source."),
     ("Fluids", "Reference data of fluids; a site may add its own mixtures."),
     ("Changes", "Several record changes in one transaction."),

@@ -9,6 +9,12 @@ from typing import Annotated, Any, Final, Literal, Union, get_args, get_origin
 
 from service.api.fields import Patch
 from service.api.schemas.bases import BasisCreate, BasisPatch, BasisRead, BasisWritten
+from service.api.schemas.controls import (
+    ControlCreate,
+    ControlPatch,
+    ControlRead,
+    ControlWritten,
+)
 from service.api.schemas.detectors import (
     DetectorCreate,
     DetectorPatch,
@@ -16,6 +22,12 @@ from service.api.schemas.detectors import (
     DetectorWritten,
 )
 from service.api.schemas.fluids import FluidCreate, FluidPatch, FluidRead, FluidWritten
+from service.api.schemas.openings import (
+    OpeningCreate,
+    OpeningPatch,
+    OpeningRead,
+    OpeningWritten,
+)
 from service.api.schemas.record import AnyRecordRead, RecordCreate
 from service.api.schemas.rooms import RoomCreate, RoomPatch, RoomRead, RoomWritten
 from service.api.schemas.sites import SiteCreate, SitePatch, SiteRead, SiteWritten
@@ -107,6 +119,10 @@ RESOURCES: Final[Mapping[str, Resource]] = {
         Resource("site", "sites", "Site", "Sites", SiteCreate, SitePatch, SiteRead, SiteWritten),
         Resource("room", "rooms", "Room", "Rooms", RoomCreate, RoomPatch, RoomRead, RoomWritten),
         Resource(
+            "opening", "openings", "Opening", "Openings",
+            OpeningCreate, OpeningPatch, OpeningRead, OpeningWritten,
+        ),
+        Resource(
             "ventilation-unit",
             "ventilation-units",
             "VentilationUnit",
@@ -123,6 +139,10 @@ RESOURCES: Final[Mapping[str, Resource]] = {
         Resource(
             "detector", "detectors", "Detector", "Detectors",
             DetectorCreate, DetectorPatch, DetectorRead, DetectorWritten,
+        ),
+        Resource(
+            "control", "controls", "Control", "Controls",
+            ControlCreate, ControlPatch, ControlRead, ControlWritten,
         ),
         Resource(
             "basis", "bases", "Basis", "Bases", BasisCreate, BasisPatch, BasisRead, BasisWritten

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
+from datetime import datetime
 from typing import Any
 
-from service.changes.kinds import KINDS, Link, blank_fields, reaches_far, rooms_reached
+from service.changes.kinds import KINDS, Link, blank_fields, reaches_far, refers_to, rooms_reached
 from service.changes.merge import merge_patch
 from service.changes.neighbourhood import OXYGEN, Neighbourhood, TagKey
 from service.changes.record_rules import derived_fields, record_problems
@@ -24,6 +25,7 @@ from service.errors import (
 )
 from service.store.records import Record, folded_tag
 from service.store.rows import instant_names, number_names
+from service.store.tables.ventilation_units import MANUAL
 
 
 @dataclass(frozen=True, slots=True)
@@ -71,7 +73,7 @@ def applied(before: Neighbourhood, places: Sequence[Placed]) -> Applied:
             records[place.record_id] = pair.after
     for place, pair in zip(places, pairs, strict=True):
         with pointing(place.pointer):
-            _check_whole(records, place, pair)
+            _check_whole(records, pair, before.moment)
     return Applied(tuple(pairs), records, _rooms_to_compute(before, records, places, pairs))
 
 
@@ -168,6 +170,8 @@ def _fields_after(
         sent["serves"] = list(_served_rooms(records, names, place, sent["serves"]))
     if kind == "detector" and sent.get("gas") not in (None, OXYGEN):
         sent["gas"] = _gas_tag(records, names, place, sent["gas"])
+    if kind == "ventilation-unit" and sent.get("boost_trigger") not in (None, MANUAL):
+        sent["boost_trigger"] = _detector_id(records, names, place, sent["boost_trigger"])
     unknown = sorted(sent.keys() - base.keys())
     if unknown:
         raise FieldsRefused(
@@ -273,6 +277,11 @@ def _gas_tag(records: Mapping[str, Record], names: _Names, place: Placed, gas: s
     return str(records[fluid_id].fields["tag"])
 
 
+def _detector_id(records: Mapping[str, Record], names: _Names, place: Placed, said: str) -> str:
+    detector_id = names.find("detector", place.site_id, said) or said
+    return _target(records, place, "detector", detector_id, "/boost_trigger")[0]
+
+
 def _refuse_fixed(present: Record, fields: Mapping[str, Any]) -> None:
     moved = sorted(
         name for name in KINDS[present.kind].fixed if fields[name] != present.fields[name]
@@ -286,13 +295,13 @@ def _refuse_fixed(present: Record, fields: Mapping[str, Any]) -> None:
         )
 
 
-def _check_whole(records: Mapping[str, Record], place: Placed, pair: Pair) -> None:
-    """Check a record against the others, all changes made."""
+def _check_whole(records: Mapping[str, Record], pair: Pair, moment: datetime) -> None:
+    """Check a record against the others and the moment, all changes made."""
     if pair.after is None:
         return
     if not pair.changed:
         return
-    problems = tuple(record_problems(pair.after, records))
+    problems = tuple(record_problems(pair.after, records, moment))
     if problems:
         raise FieldsRefused(errors=problems)
 
@@ -307,7 +316,7 @@ def _rooms_to_compute(
     for place, pair in zip(places, pairs, strict=True):
         if not pair.changed:
             continue
-        rooms |= rooms_reached(pair.before) | rooms_reached(pair.after)
+        rooms |= rooms_reached(pair.before, before.records) | rooms_reached(pair.after, records)
         if reaches_far(pair.before, pair.after):
             rooms |= before.far_rooms.get(place.record_id, frozenset())
         if pair.after is None:
@@ -341,6 +350,4 @@ def _refuse_referred(
 def _refers(record: Record, record_id: str) -> bool:
     if record.site_id == record_id and record.kind != "site":
         return True
-    if any(record.fields[link.field] == record_id for link in KINDS[record.kind].links):
-        return True
-    return record.kind != "room" and record_id in rooms_reached(record)
+    return refers_to(record, record_id)

@@ -41,10 +41,14 @@ class Kind:
     fixed: frozenset[str] = frozenset()
     #: The rooms that a record's fields reach directly.
     rooms: Callable[[Fields], frozenset[str]] = _no_rooms
+    #: The field with the vessel through which a record reaches the room where that stands.
+    room_by_vessel: str | None = None
+    #: Fields that may hold the id of another record, and are no link.
+    may_name: frozenset[str] = frozenset()
     #: Fields by which a record reaches every room of its site, of its sites, or of its vessels.
     reaches_far: frozenset[str] = frozenset()
-    #: Where the site comes from when it is not said.
-    site_from: str | None = None
+    #: Where the site comes from when it is not said: fields with a room's or vessel's id, or rooms.
+    site_from: tuple[str, ...] = ()
     #: May belong to no site: those come with the service and only it writes them.
     shared: bool = False
 
@@ -67,6 +71,7 @@ _ALL_FLUID_FIELDS: Final = frozenset(
         "solid",
         "hazards",
         "settles",
+        "lfl_pct",
         "name",
     }
 )
@@ -88,10 +93,27 @@ KINDS: Final[Mapping[str, Kind]] = {
             defaults={"kind": "room", "state": "in-service"},
         ),
         Kind(
+            # It reaches no room yet: what passes through it is not computed.
+            "opening",
+            links=(
+                Link("room_id", "room", "room"),
+                Link("other_room_id", "other_room", "room"),
+            ),
+            site_from=("room_id", "other_room_id"),
+        ),
+        Kind(
+            "detector",
+            links=(Link("room_id", "room", "room"),),
+            defaults={"state": "in-service", "alarms_pct": []},
+            rooms=_room_of,
+            site_from=("room_id",),
+        ),
+        Kind(
             "ventilation-unit",
             defaults={"state": "running", "serves": []},
             rooms=_rooms_served,
-            site_from="serves",
+            may_name=frozenset({"boost_trigger"}),
+            site_from=("serves",),
         ),
         Kind(
             "vessel",
@@ -101,14 +123,17 @@ KINDS: Final[Mapping[str, Kind]] = {
             ),
             defaults={"state": "in-service"},
             rooms=_room_of,
-            site_from="room",
+            site_from=("room_id",),
         ),
         Kind(
-            "detector",
-            links=(Link("room_id", "room", "room"),),
-            defaults={"state": "in-service", "alarms_pct": []},
+            "control",
+            links=(
+                Link("room_id", "room", "room"),
+                Link("vessel_id", "vessel", "vessel"),
+            ),
             rooms=_room_of,
-            site_from="room",
+            room_by_vessel="vessel_id",
+            site_from=("room_id", "vessel_id"),
         ),
         Kind(
             "basis",
@@ -129,13 +154,28 @@ KINDS: Final[Mapping[str, Kind]] = {
 }
 
 
-def rooms_reached(record: Record | None) -> frozenset[str]:
-    """Name the rooms a record reaches directly: itself, the one it stands in, those it serves."""
+def rooms_reached(record: Record | None, records: Mapping[str, Record]) -> frozenset[str]:
+    """Name the rooms a record reaches: itself, the one it or its vessel stands in, those it serves.
+
+    ``records`` holds the vessel.
+    """
     if record is None:
         return frozenset()
     if record.kind == "room":
         return frozenset({record.id})
-    return KINDS[record.kind].rooms(record.fields)
+    kind = KINDS[record.kind]
+    rooms = kind.rooms(record.fields)
+    if kind.room_by_vessel is not None:
+        vessel = records.get(record.fields[kind.room_by_vessel] or "")
+        rooms |= frozenset() if vessel is None else _room_of(vessel.fields)
+    return rooms
+
+
+def refers_to(record: Record, record_id: str) -> bool:
+    """Tell whether a record names another in its fields, so that this one cannot go."""
+    kind, fields = KINDS[record.kind], record.fields
+    named = {fields[link.field] for link in kind.links} | {fields[name] for name in kind.may_name}
+    return record_id in named | kind.rooms(fields)
 
 
 def reaches_far(before: Record | None, after: Record | None) -> bool:

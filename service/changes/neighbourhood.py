@@ -12,6 +12,7 @@ from service.changes.kinds import KINDS, blank_fields, rooms_reached
 from service.changes.requested import CHANGE, CREATE, REMOVE, Placed
 from service.store.findings import findings_of_rooms
 from service.store.live import (
+    controls_of_vessels,
     equipment_of,
     get_records,
     record_by_external_id,
@@ -20,11 +21,14 @@ from service.store.live import (
     rooms_of_site,
     rooms_with_fluid,
     sites_with_basis,
+    units_boosted_by,
 )
 from service.store.records import Record, folded_tag
+from service.store.rows import triggering_detector
 from service.store.scope import EVERYTHING
 from service.store.session import WriteSession
 from service.store.states import room_states
+from service.store.tables.ventilation_units import MANUAL
 
 OXYGEN: Final = "oxygen"
 
@@ -180,6 +184,7 @@ class _Loader:
                 by_kind.setdefault(place.change.kind, set()).add(place.record_id)
         for kind, ids in by_kind.items():
             self._take(kind, ids)
+        self._take_beside(by_kind)
         self._take("site", {place.site_id for place in places if place.site_id is not None})
         self._take(
             "basis",
@@ -190,13 +195,42 @@ class _Loader:
             },
         )
 
+    def _take_beside(self, changed: Mapping[str, set[str]]) -> None:
+        """Load what rules hold a changed record against, and what goes with it.
+
+        It stands in the rooms as well; these are not loaded where they are too many.
+        """
+        connection = self._session.connection
+        for detector in self._of("detector", changed):
+            self._take("room", {detector.fields["room_id"]})
+        for unit in self._of("ventilation-unit", changed):
+            detector_id = triggering_detector(unit)
+            self._take("detector", () if detector_id is None else {detector_id})
+        for control in self._of("control", changed):
+            vessel_id = control.fields["vessel_id"]
+            self._take("vessel", () if vessel_id is None else {vessel_id})
+        boosted = units_boosted_by(EVERYTHING, connection, changed.get("detector", ()))
+        controls = controls_of_vessels(EVERYTHING, connection, changed.get("vessel", ()))
+        for record in (*boosted, *controls):
+            self.records.setdefault(record.id, record)
+
+    def _of(self, kind: str, changed: Mapping[str, set[str]]) -> list[Record]:
+        ids = changed.get(kind, set())
+        return [record for record in self.records.values() if record.id in ids]
+
     def rooms_of(
         self, places: Sequence[Placed]
     ) -> tuple[frozenset[str], dict[str, frozenset[str]], frozenset[str]]:
         """Name the rooms a change may reach, those reached as a whole, and what is too much."""
         direct = {record.id for record in self.records.values() if record.kind == "room"}
+        # The room of a vessel that is changed, and of one that a control names.
+        direct |= {
+            record.fields["room_id"]
+            for record in self.records.values()
+            if record.kind == "vessel" and record.fields["room_id"] is not None
+        }
         for place in places:
-            direct |= rooms_reached(self.records.get(place.record_id))
+            direct |= rooms_reached(self.records.get(place.record_id), self.records)
         far = {
             place.record_id: self._far_rooms(place)
             for place in places
@@ -298,3 +332,7 @@ def _mentions(kind: str, site_id: str | None, fields: Mapping[str, Any]) -> Iter
     gas = fields.get("gas")
     if kind == "detector" and gas is not None and gas != OXYGEN:
         yield _Mention("fluid", site_id, tag=gas)
+    trigger = fields.get("boost_trigger")
+    if trigger is not None and trigger != MANUAL:
+        yield _Mention("detector", site_id, record_id=trigger)
+        yield _Mention("detector", site_id, tag=trigger)

@@ -11,7 +11,15 @@ from service.changes.apply import Pair, applied
 from service.changes.assess import assess, findings_of_gone
 from service.changes.neighbourhood import neighbourhood
 from service.changes.replace import Effect, Outcome, next_positions, replace
-from service.changes.requested import CHANGE, CREATE, REMOVE, Placed, RecordChange, placed
+from service.changes.requested import (
+    CHANGE,
+    CREATE,
+    REMOVE,
+    Placed,
+    RecordChange,
+    naming_its_site,
+    placed,
+)
 from service.errors import FieldsRefused
 from service.store.ids import new_record_id
 from service.store.live import get_record, record_by_external_id, record_by_tag
@@ -157,11 +165,10 @@ def _site_named(session: WriteSession, kind: str, fields: Mapping[str, Any]) -> 
         if site is None:
             raise FieldsRefused.at("/site", "not-found", "There is no site with this tag.")
         return site.id
-    rooms = [fields.get("room_id"), *(s.get("room_id") for s in fields.get("serves") or ())]
-    for room_id in rooms:
-        room = room_id and get_record(session.scope, session.connection, "room", room_id)
-        if room:
-            return room.site_id
+    for _name, named, record_id in naming_its_site(kind, fields):
+        record = get_record(session.scope, session.connection, named, record_id)
+        if record is not None:
+            return record.site_id
     if session.scope.sites is not None and len(session.scope.sites) == 1:
         return next(iter(session.scope.sites))
     raise FieldsRefused.at(

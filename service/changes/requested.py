@@ -123,12 +123,11 @@ def _site_of_new(
         if site is None:
             raise FieldsRefused.at("/site", "not-found", "There is no site with this tag.")
         return site.id
-    room_id = _room_that_places(change)
-    if room_id is not None:
-        room = get_record(session.scope, session.connection, "room", room_id)
-        if room is None or room.site_id is None:
-            raise FieldsRefused.at("/room_id", "not-found", "There is no such room.")
-        return room.site_id
+    for name, kind, record_id in naming_its_site(change.kind, fields):
+        record = get_record(session.scope, session.connection, kind, record_id)
+        if record is None or record.site_id is None:
+            raise FieldsRefused.at(f"/{name}", "not-found", f"There is no such {kind}.")
+        return record.site_id
     if session.scope.sites is not None and len(session.scope.sites) == 1:
         return next(iter(session.scope.sites))
     raise FieldsRefused.at(
@@ -145,12 +144,13 @@ def _known_site(
     return site_id
 
 
-def _room_that_places(change: RecordChange) -> str | None:
-    source = KINDS[change.kind].site_from
-    if source == "room":
-        return change.fields.get("room_id")
-    if source == "serves":
-        for served in change.fields.get("serves") or ():
-            if served.get("room_id") is not None:
-                return str(served["room_id"])
-    return None
+def naming_its_site(kind: str, fields: Mapping[str, Any]) -> Iterator[tuple[str, str, str]]:
+    """Name the records that tell the site of a new one: the field, the kind, the id."""
+    for name in KINDS[kind].site_from:
+        said = fields.get(name)
+        if name == "serves":
+            for number, served in enumerate(said or ()):
+                if served.get("room_id") is not None:
+                    yield f"serves/{number}/room_id", "room", str(served["room_id"])
+        elif said is not None:
+            yield name, "vessel" if name == "vessel_id" else "room", str(said)

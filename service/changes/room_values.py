@@ -10,20 +10,27 @@ from typing import Any, Final
 from service.audit.bases import effective
 from service.audit.inputs import (
     BasisValues,
+    ControlValues,
     DetectorValues,
     FluidValues,
+    Outage,
+    PitValues,
     Reference,
     RoomValues,
     UnitValues,
     VesselValues,
 )
+from service.changes.kinds import rooms_reached
 from service.clock import end_of_day, moment_of
 from service.store.records import Record
 
+ATMOSPHERE: Final = 101_325.0  # [Pa]; what gauge pressures are counted from
 LITRE: Final = 1e-3  # [m3]
+MINUTE: Final = 60.0  # [s]
 DAY: Final = 86_400.0  # [s]
 HOUR: Final = 3_600.0  # [s]
 KILOPASCAL: Final = 1e3  # [Pa]
+PERCENT: Final = 1e-2  # [1]
 ZERO_CELSIUS: Final = 273.15  # [K]
 
 
@@ -34,11 +41,12 @@ class _Placed:
     vessels: dict[str, list[Record]]
     units: dict[str, list[Record]]
     detectors: dict[str, list[Record]]
+    controls: dict[str, list[Record]]
 
 
 def values_of_rooms(records: Mapping[str, Record], room_ids: Iterable[str]) -> list[RoomValues]:
     """Give the values of rooms that are there, from a neighbourhood that holds all they need."""
-    standing = _placed(records.values())
+    standing = _placed(records)
     return [
         _room_values(records, standing, records[room_id])
         for room_id in sorted(room_ids)
@@ -46,9 +54,9 @@ def values_of_rooms(records: Mapping[str, Record], room_ids: Iterable[str]) -> l
     ]
 
 
-def _placed(records: Iterable[Record]) -> _Placed:
-    placed = _Placed({}, {}, {})
-    for record in sorted(records, key=lambda record: record.id):
+def _placed(records: Mapping[str, Record]) -> _Placed:
+    placed = _Placed({}, {}, {}, {})
+    for record in sorted(records.values(), key=lambda record: record.id):
         if record.kind == "vessel" and record.fields["room_id"] is not None:
             placed.vessels.setdefault(record.fields["room_id"], []).append(record)
         elif record.kind == "detector":
@@ -56,6 +64,9 @@ def _placed(records: Iterable[Record]) -> _Placed:
         elif record.kind == "ventilation-unit":
             for served in record.fields["serves"]:
                 placed.units.setdefault(served["room_id"], []).append(record)
+        elif record.kind == "control":
+            for room_id in rooms_reached(record, records):
+                placed.controls.setdefault(room_id, []).append(record)
     return placed
 
 
@@ -88,13 +99,17 @@ def _room_values(records: Mapping[str, Record], placed: _Placed, room: Record) -
         unaccompanied=fields["unaccompanied"],
         way_out=fields["egress_m"],
         vessels=tuple(
-            _vessel_values(vessel, records[vessel.fields["fluid_id"]], count_every)
+            _vessel_values(vessel, records[vessel.fields["fluid_id"]], count_every, zone)
             for vessel in placed.vessels.get(room.id, ())
         ),
         units=tuple(_unit_values(unit, room.id, zone) for unit in placed.units.get(room.id, ())),
         detectors=tuple(
             _detector_values(detector, zone) for detector in placed.detectors.get(room.id, ())
         ),
+        controls=tuple(
+            _control_values(control, zone) for control in placed.controls.get(room.id, ())
+        ),
+        pit=_pit_values(fields["pit"]),
     )
 
 
@@ -127,12 +142,20 @@ def fluid_values(fluid: Record) -> FluidValues:
         solid=fields["solid"],
         hazards=frozenset(fields["hazards"]),
         settles=fields["settles"],
+        flammable_limit=_scaled(fields["lfl_pct"], PERCENT),
     )
 
 
-def _vessel_values(vessel: Record, fluid: Record, count_every: timedelta) -> VesselValues:
+def _pit_values(pit: Mapping[str, Any] | None) -> PitValues | None:
+    return None if pit is None else PitValues(pit["area_m2"], pit["depth_m"], pit.get("entered"))
+
+
+def _vessel_values(
+    vessel: Record, fluid: Record, count_every: timedelta, zone: str
+) -> VesselValues:
     fields = vessel.fields
     counted_at = fields["counted_at"]
+    filling, relief = fields["filling"] or {}, fields["relief"] or {}
     return VesselValues(
         record=reference(vessel),
         fluid=fluid_values(fluid),
@@ -149,10 +172,29 @@ def _vessel_values(vessel: Record, fluid: Record, count_every: timedelta) -> Ves
         use=_scaled(fields["use_l_day"], LITRE / DAY),
         insulation=fields["insulation"],
         vent_to=fields["vent_to"],
-        filled_by=(fields["filling"] or {}).get("by"),
+        filled_by=filling.get("by"),
+        fill_flow=_scaled(filling.get("flow_l_min"), LITRE / MINUTE),
+        independent_high_level=filling.get("independent_high_level"),
+        closes_in=filling.get("closes_in_s"),
+        shut_off_test_due=_due(filling.get("tested_on"), filling.get("test_every_days"), zone),
+        gross_volume=_scaled(fields["gross_l"], LITRE),
+        charge_pressure=_charge_pressure(fields),
+        neck_plug=fields["neck_plug"],
+        relief_fitted=relief.get("fitted"),
+        relief_inspection_due=_due(
+            relief.get("inspected_on"), relief.get("inspect_every_days"), zone
+        ),
+        relief_inspected=relief.get("inspected_on") is not None,
         manifold=fields["manifold"],
         mobile=fields["mobile"],
     )
+
+
+def _charge_pressure(vessel: Mapping[str, Any]) -> float | None:
+    """Give the absolute pressure of a cylinder that is kept by its water volume."""
+    if vessel["kind"] != "cylinder" or vessel["capacity_l"] is None:
+        return None
+    return float(vessel["working_pressure_kpa"]) * KILOPASCAL + ATMOSPHERE
 
 
 def _unit_values(unit: Record, room_id: str, zone: str) -> UnitValues:
@@ -172,6 +214,10 @@ def _unit_values(unit: Record, room_id: str, zone: str) -> UnitValues:
         standby_power=fields["standby_power"],
         flow_proved=fields["flow_proved"],
         fail_alarm=fields["fail_alarm"],
+        boost_flow=_scaled(fields["boost_flow_m3_h"], 1.0 / HOUR),
+        boost_trigger=fields["boost_trigger"],
+        terminal_height=fields["terminal_height"],
+        outages=_outages(fields["outages"]),
     )
 
 
@@ -193,6 +239,31 @@ def _detector_values(detector: Record, zone: str) -> DetectorValues:
         display_outside=fields["display_outside"],
         power_backed=fields["power_backed"],
         monitored=fields["monitored"],
+        zeroed_at=_scaled(fields["zeroed_at_kpa_abs"], KILOPASCAL),
+        outages=_outages(fields["outages"]),
+    )
+
+
+def _control_values(control: Record, zone: str) -> ControlValues:
+    fields = control.fields
+    return ControlValues(
+        record=reference(control),
+        kind=fields["kind"],
+        vessel_id=fields["vessel_id"],
+        reference=fields["reference"],
+        area=fields["area_m2"],
+        check_due=_due(fields["checked_on"], fields["check_every_days"], zone),
+        checked=fields["checked_on"] is not None,
+    )
+
+
+def _outages(outages: Iterable[Mapping[str, Any]] | None) -> tuple[Outage, ...]:
+    """Give planned outages in the order of time."""
+    return tuple(
+        sorted(
+            (Outage(moment_of(each["from"]), moment_of(each["to"])) for each in outages or ()),
+            key=lambda outage: outage.begins,
+        )
     )
 
 

@@ -38,6 +38,7 @@ Changing = TypeVar("Changing", Update, Delete)
 
 _SHARED: Final = frozenset({"basis", "fluid"})
 _UNIT: Final = "ventilation-unit"
+_CONTROL: Final = "control"
 
 
 class Referrer(NamedTuple):
@@ -136,7 +137,7 @@ def count_records(
 
 
 def equipment_of(scope: Scope, connection: Connection, room_ids: Iterable[str]) -> list[Record]:
-    """Return the vessels and detectors that stand in rooms and the units that serve them.
+    """Return what stands in rooms, the units that serve them, and the controls of all that.
 
     They are in the order of their kinds, then in record order.
     """
@@ -144,11 +145,27 @@ def equipment_of(scope: Scope, connection: Connection, room_ids: Iterable[str]) 
     # A unit that serves two of the rooms is found once for each.
     found = {
         record.id: record
-        for kind in (_UNIT, "vessel", "detector")
+        for kind in (_UNIT, "vessel", "detector", _CONTROL)
         for record in _many(scope, connection, kind, _by_rooms(kind), rooms)
     }
     order = {kind: number for number, kind in enumerate(TABLES)}
     return sorted(found.values(), key=lambda record: (order[record.kind], record.id))
+
+
+def controls_of_vessels(
+    scope: Scope, connection: Connection, vessel_ids: Iterable[str]
+) -> list[Record]:
+    """Return the controls of vessels, in record order."""
+    found = _many(scope, connection, _CONTROL, _naming(_CONTROL, "vessel_id"), vessel_ids)
+    return sorted(found, key=_record_order)
+
+
+def units_boosted_by(
+    scope: Scope, connection: Connection, detector_ids: Iterable[str]
+) -> list[Record]:
+    """Return the ventilation units that detectors boost, in record order."""
+    found = _many(scope, connection, _UNIT, _naming(_UNIT, "boost_detector_id"), detector_ids)
+    return sorted(found, key=_record_order)
 
 
 def rooms_of_site(scope: Scope, connection: Connection, site_id: str) -> list[str]:
@@ -334,10 +351,21 @@ def _by_ids(kind: str) -> Select[*tuple[Any, ...]]:
 @cache
 def _by_rooms(kind: str) -> Select[*tuple[Any, ...]]:
     table, serving = TABLES[kind], VENTILATION_UNIT_ROOM
+    if kind == _CONTROL:
+        vessels = TABLES["vessel"]
+        standing = select(vessels.c["id"]).where(vessels.c["room_id"].in_(_SOME))
+        either = table.c["room_id"].in_(_SOME) | table.c["vessel_id"].in_(standing)
+        return select(table).where(either)
     if kind != _UNIT:
-        return select(table).where(table.c["room_id"].in_(_SOME))
+        return _naming(kind, "room_id")
     joined = table.join(serving, serving.c["unit_id"] == table.c["id"])
     return select(*table.c).select_from(joined).where(serving.c["room_id"].in_(_SOME))
+
+
+@cache
+def _naming(kind: str, column: str) -> Select[*tuple[Any, ...]]:
+    table = TABLES[kind]
+    return select(table).where(table.c[column].in_(_SOME))
 
 
 @cache
@@ -415,10 +443,17 @@ def _tagged(table: Table) -> Select[str, str]:
 
 _NAMED_BY: Final[Mapping[str, Mapping[str, tuple[str, ...]]]] = {
     "site": {kind: ("site_id",) for kind in TABLES if kind != "site"},
-    "room": {"vessel": ("room_id",), "detector": ("room_id",)},
+    "room": {
+        "opening": ("room_id", "other_room_id"),
+        "detector": ("room_id",),
+        "vessel": ("room_id",),
+        _CONTROL: ("room_id",),
+    },
     "basis": {"site": ("basis_id",), "basis": ("derived_from_id",)},
     "fluid": {"room": ("purge_fluid_id",), "vessel": ("fluid_id",)},
-    "ventilation-unit": {},
-    "vessel": {},
-    "detector": {},
+    "opening": {},
+    "detector": {_UNIT: ("boost_detector_id",)},
+    _UNIT: {},
+    "vessel": {_CONTROL: ("vessel_id",)},
+    _CONTROL: {},
 }

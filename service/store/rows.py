@@ -11,9 +11,21 @@ from sqlalchemy import RowMapping
 from service.clock import moment_of, text_of
 from service.store.records import COMMON_FIELDS, Record, folded_tag
 from service.store.tables.registry import TABLES
+from service.store.tables.ventilation_units import MANUAL
 from service.store.types import Instant, Number
 
-_NOT_FIELDS = frozenset({"id", "site_id", "revision", "created_at", "updated_at", "tag_folded"})
+_NOT_FIELDS = frozenset(
+    {
+        "id",
+        "site_id",
+        "revision",
+        "created_at",
+        "updated_at",
+        # What follows from another field, kept to be sought or joined by.
+        "tag_folded",
+        "boost_detector_id",
+    }
+)
 
 
 @cache
@@ -65,7 +77,15 @@ def row_of(record: Record) -> dict[str, Any]:
     }
     for name in instant_names(record.kind):
         row[name] = None if row[name] is None else moment_of(row[name])
+    if record.kind == "ventilation-unit":
+        row["boost_detector_id"] = triggering_detector(record)
     return row
+
+
+def triggering_detector(unit: Record) -> str | None:
+    """Return the detector that boosts a ventilation unit, where one does."""
+    trigger: str | None = unit.fields["boost_trigger"]
+    return None if trigger == MANUAL else trigger
 
 
 @cache

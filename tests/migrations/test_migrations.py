@@ -19,6 +19,9 @@ from service.store.tables.registry import METADATA
 from service.store.writer import Writer
 from tests.store.estate import AS_SERVICE, Estate, Shared
 
+REVISIONS = ("first_records", "complete_the_room")
+NEWEST = REVISIONS[-1]
+
 
 def tables_in(url):
     """Return all that says what the tables are, as each database itself tells it."""
@@ -50,7 +53,11 @@ def tables_in(url):
 
 
 def parts_of(sql):
-    """Split a statement into its lines, whose order means nothing in a table."""
+    """Split a statement into its lines, whose order means nothing in a table.
+
+    SQLite puts the name of a table that was copied in quotes.
+    """
+    sql = re.sub(r'^CREATE TABLE "(\w+)"', r"CREATE TABLE \1", sql)
     return sorted(line.strip().rstrip(",") for line in re.sub(r"\s*\n\s*", "\n", sql).split("\n"))
 
 
@@ -139,14 +146,14 @@ def test_a_file_that_another_writes_is_not_migrated(sqlite_url):
 
 
 def test_an_sqlite_file_that_holds_something_is_copied_before(sqlite_url, monkeypatch, tmp_path):
-    """With a second migration, made for this test."""
+    """With one more migration, made for this test."""
     estate = stored(sqlite_url)
     tree = tmp_path / "tree"
     add_migration(tree, monkeypatch, 'op.add_column("room", sa.Column("colour", sa.Text()))')
     assert schema_state(sqlite_url) == "older"
     upgrade(sqlite_url)
     assert schema_state(sqlite_url) == "current"
-    (copy,) = tmp_path.glob("rimeward.sqlite.before-migration-from-first_records")
+    (copy,) = tmp_path.glob(f"rimeward.sqlite.before-migration-from-{NEWEST}")
     with closing(sqlite3.connect(copy)) as kept, closing(sqlite3.connect(sqlite_url[10:])) as now:
         query = "SELECT id FROM vessel"
         assert kept.execute(query).fetchall() == [(estate.vessel.id,)]
@@ -174,9 +181,9 @@ def test_a_migration_that_fails_leaves_the_database_as_it_was(
 
 def add_migration(tree, monkeypatch, statement):
     shutil.copytree(Path(__file__).parents[2] / "migrations", tree)
-    (tree / "versions" / "second.py").write_text(
+    (tree / "versions" / "one_more.py").write_text(
         "import sqlalchemy as sa\nfrom alembic import op\n"
-        'revision, down_revision = "second", "first_records"\n'
+        f'revision, down_revision = "one_more", "{NEWEST}"\n'
         f"def upgrade():\n    {statement}\n"
     )
     monkeypatch.setattr(migrate, "_folder", lambda: tree)

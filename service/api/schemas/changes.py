@@ -11,7 +11,17 @@ from service.api.schemas.record import Answer, EffectRead, ReadAsRead
 
 MOST_CHANGES = 100
 
-Kind = Literal["site", "room", "ventilation-unit", "vessel", "detector", "basis", "fluid"]
+Kind = Literal[
+    "site",
+    "room",
+    "opening",
+    "ventilation-unit",
+    "vessel",
+    "detector",
+    "control",
+    "basis",
+    "fluid",
+]
 Operation = Literal["create", "change", "remove"]
 
 

@@ -6,11 +6,13 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
+from service import units
 from service.api.fields import (
     Day,
     Instant,
     Metres,
     Percent,
+    Quantity,
     RecordIdText,
     Seconds,
     Tag,
@@ -21,6 +23,7 @@ from service.api.schemas.record import (
     WORDED_ANEW,
     EveryDays,
     OfSite,
+    Outages,
     RecordPatch,
     RecordRead,
     Written,
@@ -28,6 +31,7 @@ from service.api.schemas.record import (
 )
 
 Placed = Literal["inside", "entrance"]
+ZeroingPressure = Annotated[float, Quantity(units.KILOPASCALS_ABSOLUTE, ge=30.0, le=120.0)]
 DetectorState = Literal["in-service", "fault", "off"]
 
 
@@ -39,7 +43,9 @@ class DetectorCreate(OfSite):
     )
     room: Tag | None = Field(default=None, description="The tag of the room, in place of its id.")
     gas: Tag = Field(description="'oxygen', or the tag of the fluid that it measures.")
-    height_m: Metres | None = Field(default=None, description="Above the floor.")
+    height_m: Metres | None = Field(
+        default=None, description="Above the floor; not above the ceiling of its room."
+    )
     placed: Placed | None = None
     t90_s: Seconds | None = Field(
         default=None, description="Seconds until it shows nine tenths of a step."
@@ -58,6 +64,12 @@ class DetectorCreate(OfSite):
     display_outside: bool | None = None
     power_backed: bool | None = None
     monitored: bool | None = None
+    zeroed_at_kpa_abs: ZeroingPressure | None = Field(
+        default=None, description="The air pressure at which its cell was zeroed."
+    )
+    outages: Outages | None = Field(
+        default=None, description="Planned times in which it sees nothing; they do not overlap."
+    )
 
 
 @patch_of(

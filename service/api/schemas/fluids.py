@@ -23,6 +23,7 @@ Settles = Literal["low", "high", "methane"]
 BoilingPoint = Annotated[float, Quantity(units.KELVINS, gt=0.0, le=400.0)]
 MolarMass = Annotated[float, Field(strict=True, gt=0.0, le=500.0)]
 CondensedDensity = Annotated[float, Field(strict=True, gt=0.0, le=10_000.0)]
+FlammableLimit = Annotated[float, Quantity(units.PERCENT, gt=0.0, lt=100.0)]
 PropertyName = Annotated[str, StringConstraints(strict=True, pattern=r"^[a-z][a-z0-9_]{0,62}$")]
 
 
@@ -38,6 +39,11 @@ class FluidCreate(OfSite):
     solid: bool = Field(description="Kept as a solid, such as dry ice.")
     hazards: Annotated[list[Hazard], Field(min_length=1, max_length=4)]
     settles: Settles = Field(description="Where the cold gas goes.")
+    lfl_pct: FlammableLimit | None = Field(
+        default=None,
+        description="The lower flammable limit in air, by volume; needed where the hazards hold "
+        "'flammable', and only there. Those that come with the service have theirs in the basis.",
+    )
     sources: Annotated[dict[PropertyName, ShortText], Field(max_length=40)] = Field(
         default={}, description="For each property where it comes from."
     )

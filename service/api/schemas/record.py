@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from types import UnionType
-from typing import Annotated, Any, Final, TypeVar, Union, get_args, get_origin
+from typing import TYPE_CHECKING, Annotated, Any, Final, TypeVar, Union, get_args, get_origin
 
 from pydantic import BaseModel, ConfigDict, Field, create_model
 
@@ -20,10 +20,31 @@ from service.api.fields import (
     Patch,
     Quantity,
     RecordIdText,
+    ShortText,
     Tag,
 )
 
 EveryDays = Annotated[int, Field(ge=1, le=36_525)]
+if TYPE_CHECKING:
+
+    class Outage(Edge):
+        """A planned time out of use; its first member is called 'from'."""
+
+else:
+    # A class statement cannot have a field of this name.
+    Outage = create_model(
+        "Outage",
+        __base__=Edge,
+        __module__=__name__,
+        __doc__="A planned time out of use.",
+        **{
+            "from": (Instant, Field(description="When it begins.")),
+            "to": (Instant, Field(description="When it ends; after it begins.")),
+            "reason": (ShortText | None, None),
+        },
+    )
+
+Outages = Annotated[list[Outage], Field(max_length=100)]
 Answered = TypeVar("Answered", bound="AnyRecordRead")
 
 
@@ -112,7 +133,7 @@ class SharedRecordRead(AnyRecordRead):
 
 
 _UNIONS: Final = (Union, UnionType)
-_NOT_ANSWERED: Final = frozenset({"site", "room"})
+_NOT_ANSWERED: Final = frozenset({"site", "room", "other_room", "vessel"})
 
 
 def read_of(created: type[RecordCreate]) -> Callable[[type[Answered]], type[Answered]]:

@@ -29,10 +29,18 @@ from service.api.schemas.record import (
 
 RoomKind = Literal["room", "corridor", "walk-in", "pit", "lift", "vehicle"]
 RoomState = Literal["planned", "in-service", "out-of-service"]
+Swing = Literal["inwards", "outwards", "sliding"]
 GrossVolume = Annotated[float, Quantity(units.CUBIC_METRES, gt=0.0, le=1e6)]
 FloorArea = Annotated[float, Quantity(units.SQUARE_METRES, gt=0.0, le=1e5)]
 Height = Annotated[float, Quantity(units.METRES, gt=0.0, le=200.0)]
 OccupiedFraction = Annotated[float, Quantity(units.FRACTION, ge=0.0, le=0.95)]
+PitArea = Annotated[float, Quantity(units.SQUARE_METRES, gt=0.0, le=1e5)]
+PitDepth = Annotated[float, Quantity(units.METRES, gt=0.0, le=100.0)]
+DoorLength = Annotated[float, Quantity(units.METRES, gt=0.0, le=20.0)]
+CloserForce = Annotated[float, Quantity(units.NEWTONS, ge=0.0, le=1000.0)]
+LeakageArea = Annotated[float, Quantity(units.SQUARE_METRES, ge=0.0, le=100.0)]
+ReliefOpening = Annotated[float, Quantity(units.SQUARE_METRES, ge=0.0, le=1000.0)]
+FloorRating = Annotated[float, Quantity(units.KILOPASCALS_OF_LOAD, gt=0.0, le=1000.0)]
 RoomTemperature = Annotated[float, Quantity(units.CELSIUS, ge=-200.0, le=60.0)]
 
 
@@ -42,6 +50,25 @@ class People(Edge):
     attended: bool | None = Field(default=None, description="Somebody works there.")
     most: Annotated[int, Field(ge=0, le=10_000)] | None = Field(
         default=None, description="The most people at once."
+    )
+
+
+class Pit(Edge):
+    """A pit, trench or shaft in the floor."""
+
+    area_m2: PitArea = Field(description="Of its opening; at most the floor of the room.")
+    depth_m: PitDepth
+    entered: bool | None = Field(default=None, description="People go down into it.")
+
+
+class Door(Edge):
+    """The door by which people leave."""
+
+    swing: Swing | None = Field(default=None, description="Seen from inside the room.")
+    width_m: DoorLength | None = None
+    height_m: DoorLength | None = None
+    closer_n: CloserForce | None = Field(
+        default=None, description="The force that its closer takes, at the handle."
     )
 
 
@@ -75,6 +102,17 @@ class RoomCreate(OfSite):
     )
     egress_m: Metres | None = Field(default=None, description="The way out, from the far end.")
     contact: ShortText | None = None
+    pit: Pit | None = None
+    door: Door | None = None
+    leakage_area_m2: LeakageArea | None = Field(
+        default=None, description="Of cracks and gaps, with the doors shut."
+    )
+    relief_opening_m2: ReliefOpening | None = Field(
+        default=None, description="Free area of openings that let over-pressure out."
+    )
+    floor_rating_kpa: FloorRating | None = Field(
+        default=None, description="The load that the floor is rated for, spread out."
+    )
 
 
 @patch_of(RoomCreate, never_null=NEVER_NULL, but=WORDED_ANEW)

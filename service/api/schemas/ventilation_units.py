@@ -22,6 +22,7 @@ from service.api.schemas.record import (
     WORDED_ANEW,
     EveryDays,
     OfSite,
+    Outages,
     RecordPatch,
     RecordRead,
     Written,
@@ -29,6 +30,7 @@ from service.api.schemas.record import (
 )
 
 Arrangement = Literal["supply", "exhaust", "balanced"]
+TerminalHeight = Literal["low", "high"]
 UnitState = Literal["running", "stopped", "failed"]
 MixingFactor = Annotated[float, Quantity(units.FRACTION, ge=1.0, le=10.0)]
 
@@ -63,6 +65,20 @@ class VentilationUnitCreate(OfSite):
     serves: Annotated[list[Served], Field(max_length=200)] = Field(
         description="The rooms it serves; the shares come to at most 1 together."
     )
+    outages: Outages | None = Field(
+        default=None, description="Planned times in which it stands still; they do not overlap."
+    )
+    boost_flow_m3_h: CubicMetresPerHour | None = Field(
+        default=None, description="Its flow once boosted; goes with 'boost_trigger'."
+    )
+    boost_trigger: Tag | None = Field(
+        default=None,
+        description="What boosts it: 'manual', or a detector in a room it serves, by tag or id; "
+        "answered as the id.",
+    )
+    terminal_height: TerminalHeight | None = Field(
+        default=None, description="Where it blows in or takes out: at the floor or the ceiling."
+    )
 
 
 @patch_of(
@@ -86,6 +102,7 @@ class VentilationUnitRead(RecordRead):
     """A ventilation unit."""
 
     serves: list[ServedRead]
+    boost_trigger: str | None = Field(description="'manual', or the id of a detector.")
 
 
 class VentilationUnitWritten(VentilationUnitRead, Written):

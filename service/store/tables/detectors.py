@@ -29,7 +29,7 @@ class Detector(Row):
         one_of("placed", PLACES),
         one_of("state", STATES),
         *not_negative("height_m", "t90_s", "delay_s"),
-        *above_zero("calibrate_every_days"),
+        *above_zero("calibrate_every_days", "zeroed_at_kpa_abs"),
         *a_day("calibrated_on"),
     )
 
@@ -49,3 +49,5 @@ class Detector(Row):
     display_outside: Mapped[bool | None]
     power_backed: Mapped[bool | None]
     monitored: Mapped[bool | None]
+    zeroed_at_kpa_abs: Mapped[float | None]
+    outages: Mapped[Json | None]

@@ -1,6 +1,6 @@
 """The table of fluids."""
 
-from sqlalchemy import ForeignKey, Index
+from sqlalchemy import CheckConstraint, ForeignKey, Index
 from sqlalchemy.orm import Mapped, mapped_column
 
 from service.store.tables.row import (
@@ -24,6 +24,7 @@ class Fluid(Row):
         *above_zero("molar_mass_g_mol", "boiling_k", "condensed_density_kg_m3"),
         between("oxygen_fraction", 0, 1),
         one_of("settles", SETTLES),
+        CheckConstraint("lfl_pct > 0 AND lfl_pct < 100", name="lfl_pct_in_range"),
     )
 
     site_id: Mapped[RecordId | None] = mapped_column(ForeignKey("site.id"))
@@ -35,6 +36,7 @@ class Fluid(Row):
     hazards: Mapped[Json]
     settles: Mapped[str]
     sources: Mapped[Json]
+    lfl_pct: Mapped[float | None]
 
 
 # A null site makes no pair equal, so the tags of what is shared need an index of their own.

@@ -7,6 +7,7 @@ from sqlalchemy import Table
 
 from service.store.tables.access import Answer, Installation, Key
 from service.store.tables.bases import Basis
+from service.store.tables.controls import Control
 from service.store.tables.detectors import Detector
 from service.store.tables.fluids import Fluid
 from service.store.tables.history import (
@@ -19,6 +20,7 @@ from service.store.tables.history import (
     RecordVersion,
     RoomState,
 )
+from service.store.tables.openings import Opening
 from service.store.tables.rooms import Room
 from service.store.tables.row import Base
 from service.store.tables.sites import Site
@@ -38,9 +40,11 @@ TABLES: Final[Mapping[str, Table]] = {
     "fluid": _table(Fluid),
     "site": _table(Site),
     "room": _table(Room),
+    "opening": _table(Opening),
+    "detector": _table(Detector),
     "ventilation-unit": _table(VentilationUnit),
     "vessel": _table(Vessel),
-    "detector": _table(Detector),
+    "control": _table(Control),
 }
 KINDS: Final = tuple(TABLES)
 

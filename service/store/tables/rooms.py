@@ -25,11 +25,11 @@ class Room(Row):
     __table_args__ = record_table(
         one_of("kind", KINDS),
         one_of("state", STATES),
-        *above_zero("floor_area_m2", "height_m"),
+        *above_zero("floor_area_m2", "height_m", "floor_rating_kpa"),
         CheckConstraint("volume_m3 > 0", name="volume_above_zero"),
         between("occupied_fraction", 0, 0.95),
         between("temperature_c", -200, 60),
-        *not_negative("purge_flow_m3_h", "egress_m"),
+        *not_negative("purge_flow_m3_h", "egress_m", "leakage_area_m2", "relief_opening_m2"),
     )
 
     site_id: Mapped[RecordId] = mapped_column(ForeignKey("site.id"))
@@ -51,3 +51,8 @@ class Room(Row):
     unaccompanied: Mapped[bool | None]
     egress_m: Mapped[float | None]
     contact: Mapped[str | None]
+    pit: Mapped[Json | None]
+    door: Mapped[Json | None]
+    leakage_area_m2: Mapped[float | None]
+    relief_opening_m2: Mapped[float | None]
+    floor_rating_kpa: Mapped[float | None]

@@ -18,6 +18,9 @@ from service.store.tables.row import (
 
 ARRANGEMENTS = ("supply", "exhaust", "balanced")
 STATES = ("running", "stopped", "failed")
+TERMINAL_HEIGHTS = ("low", "high")
+MANUAL = "manual"
+"""What a boost is triggered by where it is no detector."""
 
 
 class VentilationUnit(Row):
@@ -25,9 +28,18 @@ class VentilationUnit(Row):
 
     __tablename__ = "ventilation_unit"
     __table_args__ = record_table(
+        ForeignKeyConstraint(
+            ["site_id", "boost_detector_id"],
+            ["detector.site_id", "detector.id"],
+        ),
         one_of("arrangement", ARRANGEMENTS),
         one_of("state", STATES),
-        *not_negative("design_flow_m3_h", "measured_flow_m3_h"),
+        one_of("terminal_height", TERMINAL_HEIGHTS),
+        *not_negative("design_flow_m3_h", "measured_flow_m3_h", "boost_flow_m3_h"),
+        CheckConstraint(
+            "coalesce(boost_trigger, 'manual') = coalesce(boost_detector_id, 'manual')",
+            name="boost_trigger_manual_or_detector",
+        ),
         *above_zero("measure_every_days"),
         between("outdoor_air_fraction", 0, 1),
         between("mixing_factor", 1, 10),
@@ -48,6 +60,12 @@ class VentilationUnit(Row):
     flow_proved: Mapped[bool | None]
     fail_alarm: Mapped[bool | None]
     serves: Mapped[Json]
+    outages: Mapped[Json | None]
+    boost_flow_m3_h: Mapped[float | None]
+    boost_trigger: Mapped[str | None]
+    # The detector that `boost_trigger` names, in a form that can be joined and is kept from going.
+    boost_detector_id: Mapped[RecordId | None] = mapped_column(index=True)
+    terminal_height: Mapped[str | None]
 
 
 class VentilationUnitRoom(Base):

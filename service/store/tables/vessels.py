@@ -28,6 +28,7 @@ KINDS = (
 INSULATIONS = ("vacuum-multilayer", "vacuum-powder", "foam", "none")
 VENTS = ("room", "outdoors")
 STATES = ("in-service", "empty", "withdrawn")
+NECK_PLUGS = ("vented", "sealed")
 
 
 class Vessel(Row):
@@ -40,7 +41,15 @@ class Vessel(Row):
         one_of("insulation", INSULATIONS),
         one_of("vent_to", VENTS),
         one_of("state", STATES),
-        *above_zero("capacity_l", "capacity_kg", "gross_l"),
+        one_of("neck_plug", NECK_PLUGS),
+        *above_zero(
+            "capacity_l",
+            "capacity_kg",
+            "gross_l",
+            "tare_kg",
+            "footprint_m2",
+            "withdrawal_bore_mm",
+        ),
         CheckConstraint("(capacity_l IS NULL) <> (capacity_kg IS NULL)", name="one_capacity"),
         CheckConstraint("contents_l IS NULL OR capacity_l IS NOT NULL", name="contents_l_fits"),
         CheckConstraint("contents_kg IS NULL OR capacity_kg IS NOT NULL", name="contents_kg_fits"),
@@ -51,7 +60,9 @@ class Vessel(Row):
             "measured_evaporation_l_day",
             "measured_loss_kg_day",
             "use_l_day",
+            "cold_area_m2",
         ),
+        CheckConstraint("working_pressure_kpa > -101.325", name="working_pressure_above_vacuum"),
     )
 
     site_id: Mapped[RecordId] = mapped_column(ForeignKey("site.id"))
@@ -75,3 +86,11 @@ class Vessel(Row):
     manifold: Mapped[str | None]
     mobile: Mapped[bool | None]
     state: Mapped[str]
+    tare_kg: Mapped[float | None]
+    footprint_m2: Mapped[float | None]
+    cold_area_m2: Mapped[float | None]
+    working_pressure_kpa: Mapped[float | None]
+    withdrawal_bore_mm: Mapped[float | None]
+    neck_plug: Mapped[str | None]
+    relief: Mapped[Json | None]
+    quench: Mapped[Json | None]
