@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import asdict
-from typing import Any, Final
+from functools import cache
+from typing import Any, Final, get_args
 
 from sqlalchemy import Connection
 
@@ -12,6 +13,7 @@ from service.api.conditional import record_tag
 from service.api.deps import Answered
 from service.api.fields import ReadAs
 from service.api.resources import RESOURCES
+from service.api.schemas.record import Answer
 from service.changes.answers import rendered
 from service.changes.records import Written
 from service.changes.replace import Effect
@@ -24,11 +26,12 @@ from service.store.session import WriteSession
 
 FRESH: Final[Mapping[str, str]] = {"Cache-Control": "private, no-cache"}
 """Kept by the caller if it likes, but asked for again each time."""
+_MADE_HERE: Final = frozenset({"effective"})
 
 
 def document_of(scope: Scope, connection: Connection, record: Record) -> dict[str, Any]:
     """Give a record as it is answered."""
-    document = body(record)
+    document = _completed(record)
     if record.kind == "basis":
         origin_id = record.fields["derived_from_id"]
         origin = origin_id and get_record(scope, connection, "basis", origin_id)
@@ -40,13 +43,51 @@ def document_at(
     scope: Scope, connection: Connection, record: Record, moment: Any
 ) -> dict[str, Any]:
     """Give a record of the past as it was answered then."""
-    document = body(record)
+    document = _completed(record)
     if record.kind == "basis":
         origin_id = record.fields["derived_from_id"]
         position = position_at(scope, connection, INSTALLATION, moment)
         origin = origin_id and record_at(scope, connection, "basis", origin_id, position)
         document["effective"] = _effective(record, origin or None)
     return document
+
+
+def _completed(record: Record) -> dict[str, Any]:
+    """Give a record with every member of its objects: one that was never sent is null."""
+    document = body(record)
+    for name, model in _objects_of(RESOURCES[record.kind].read):
+        document[name] = _whole(document.get(name), model)
+    return document
+
+
+def _whole(value: Any, model: type[Answer]) -> Any:
+    if isinstance(value, list):
+        return [_whole(each, model) for each in value]
+    if not isinstance(value, Mapping):
+        return value
+    inner = dict(_objects_of(model))
+    return {
+        name: _whole(value.get(name), inner[name]) if name in inner else value.get(name)
+        for name in model.model_fields
+    }
+
+
+@cache
+def _objects_of(model: type[Answer]) -> tuple[tuple[str, type[Answer]], ...]:
+    """Name the fields that hold an object or a list of them, each with the form of one."""
+    found = (
+        (name, _object_in(field.annotation))
+        for name, field in model.model_fields.items()
+        if name not in _MADE_HERE
+    )
+    return tuple((name, inner) for name, inner in found if inner is not None)
+
+
+def _object_in(annotation: Any) -> type[Answer] | None:
+    if isinstance(annotation, type) and issubclass(annotation, Answer):
+        return annotation
+    inner = (_object_in(each) for each in get_args(annotation))
+    return next((each for each in inner if each is not None), None)
 
 
 def _effective(basis: Record, origin: Record | None) -> dict[str, Any]:

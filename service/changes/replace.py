@@ -17,7 +17,6 @@ from service.changes.answers import (
 )
 from service.changes.apply import Pair
 from service.changes.assess import Assessed
-from service.changes.kinds import KINDS
 from service.changes.neighbourhood import Prior
 from service.clock import text_of
 from service.store.events import StoredEvent, append_events
@@ -37,9 +36,10 @@ from service.store.live import delete_record, insert_record, revise_record
 from service.store.memory import Published
 from service.store.records import Record, body, canonical, digest
 from service.store.session import INSTALLATION, WriteSession
+from service.store.tables.registry import KINDS
 
 #: Parents first: what is referred to is written before what refers to it.
-_ORDER: Final = {kind: number for number, kind in enumerate(("basis", "fluid", *KINDS))}
+_ORDER: Final = {kind: number for number, kind in enumerate(KINDS)}
 #: Names of people stay out of the chain, which nothing may ever be taken from.
 _WITHHELD: Final = frozenset({"contact"})
 _IN_SERVICE: Final = "in-service"
@@ -89,7 +89,7 @@ def replace(
 
 
 def _write_records(session: WriteSession, changed: Sequence[Pair]) -> None:
-    ordered = sorted(changed, key=lambda pair: _ORDER[pair.record.kind])
+    ordered = sorted(changed, key=_rank)
     for pair in ordered:
         if pair.after is None:
             continue
@@ -101,6 +101,13 @@ def _write_records(session: WriteSession, changed: Sequence[Pair]) -> None:
     for pair in reversed(ordered):
         if pair.after is None and pair.before is not None:
             delete_record(session, pair.before)
+
+
+def _rank(pair: Pair) -> int:
+    # A site names its basis, and all else names the site: one that is only changed comes after
+    # its basis, one that is new before everything, and one that goes goes last.
+    comes_or_goes = pair.before is None or pair.after is None
+    return -1 if pair.record.kind == "site" and comes_or_goes else _ORDER[pair.record.kind]
 
 
 def _append_site(

@@ -19,6 +19,7 @@ from service.changes.room_values import values_of_rooms
 from service.store.engine import Database
 from service.store.heads import INSTALLATION, NO_HASH, Head, heads_of
 from service.store.history import (
+    SCHEMA,
     ChangeEntry,
     StoredAssessment,
     chained,
@@ -86,6 +87,8 @@ class _Walk:
         self._scope, self._connection = scope, connection
         self._head, self._report = head, report
         self._newest: dict[tuple[str, str], str | None] = {}
+        # The fields of records whose newest version is of an older form, by which it was hashed.
+        self._older: dict[tuple[str, str], frozenset[str]] = {}
         self._newest_findings: dict[str, str] = {}
 
     def go(self) -> None:
@@ -160,8 +163,11 @@ class _Walk:
             },
         )
         for row in rows:
-            hashed = None if row.body is None else digest(row.body)
-            self._newest[row.kind, row.record_id] = hashed
+            key = row.kind, row.record_id
+            self._newest[key] = None if row.body is None else digest(row.body)
+            self._older.pop(key, None)
+            if row.schema != SCHEMA and row.body is not None:
+                self._older[key] = frozenset(json.loads(row.body))
 
     def _check_findings(self, position: int, told: Sequence[Mapping[str, Any]]) -> None:
         rows = findings_from(self._scope, self._connection, self._head.site_id, position)
@@ -240,7 +246,7 @@ class _Walk:
 
     def _check_live(self) -> None:
         live = {
-            (record.kind, record.id): digest(canonical(body(record)))
+            (record.kind, record.id): digest(canonical(self._body_as_hashed(record)))
             for record in self._live_records()
         }
         kept = {key: hashed for key, hashed in self._newest.items() if hashed is not None}
@@ -252,6 +258,14 @@ class _Walk:
             self._newest_findings,
             {row["id"]: finding_digest(row) for row in rows},
         )
+
+    def _body_as_hashed(self, record: Record) -> dict[str, Any]:
+        """Give a live record in the form of its newest version: what came since is null."""
+        whole = body(record)
+        names = self._older.get((record.kind, record.id))
+        if names is None:
+            return whole
+        return {name: value for name, value in whole.items() if name in names or value is not None}
 
     def _live_records(self) -> Iterator[Record]:
         site_id = None if self._head.site_id == INSTALLATION else self._head.site_id

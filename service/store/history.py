@@ -17,7 +17,7 @@ from sqlalchemy import Connection, Row, Select, bindparam, func, insert, or_, se
 from service.store.heads import INSTALLATION, sees_head
 from service.store.parts import in_parts
 from service.store.records import Record, body, canonical, record_from_body
-from service.store.rows import columns_of
+from service.store.rows import columns_of, field_names
 from service.store.scope import Scope, within
 from service.store.session import WriteSession
 from service.store.tables.registry import (
@@ -32,8 +32,8 @@ from service.store.upsert import insert_or_replace
 
 _CHAINED: Final = b"rimeward-change-1\n"
 
-SCHEMA: Final = 1
-"""The form of the record bodies that are written now."""
+SCHEMA: Final = 2
+"""The form of the record bodies that are written now; 2 has openings, controls and more fields."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -254,6 +254,7 @@ class RecordVersion:
     site_id: str | None
     revision: int
     from_position: int
+    schema: int
     body: bytes | None
 
 
@@ -299,12 +300,17 @@ def _version(row: Row[Any]) -> RecordVersion:
         site_id=row.site_id,
         revision=row.revision,
         from_position=row.from_position,
+        schema=row.schema,
         body=None if packed is None else zlib.decompress(packed),
     )
 
 
 def _record(row: Row[Any]) -> Record:
-    return record_from_body(row.kind, json.loads(zlib.decompress(row.body)))
+    record = record_from_body(row.kind, json.loads(zlib.decompress(row.body)))
+    if row.schema == SCHEMA:
+        return record
+    # Nothing was known of the fields that an older form lacks.
+    return replace(record, fields=dict.fromkeys(field_names(row.kind)) | dict(record.fields))
 
 
 def _record_seen(scope: Scope, row: Row[Any] | None) -> Record | None:
