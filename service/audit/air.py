@@ -5,17 +5,21 @@ from typing import Final
 
 import numpy as np
 
-from service.audit.columns import ARRANGEMENTS, UNIT_STATES, Columns, is_one_of
+from service.audit.columns import ARRANGEMENTS, UNIT_STATES, UNKNOWN, Columns, is_one_of
 from service.audit.conditions import Conditions, known
+from service.audit.outages import out_now
 from service.physics.arrays import Floats, Integers, Mask, quotient, sum_by_group
 
 AS_MEASURED: Final = "as-measured"
+DESIGN: Final = "design"
 LOST: Final = "lost"
+# As measured, until a detector or a person starts the boost of a unit.
+BOOSTED: Final = "boosted"
 # Only what was measured and is not overdue: what the safeguard "ventilation" may rest on. No
 # case of an answer; natural air has no part in it.
 PROVEN: Final = "proven"
 
-AIRFLOWS: Final = (AS_MEASURED, LOST, PROVEN)
+AIRFLOWS: Final = (AS_MEASURED, DESIGN, LOST, BOOSTED, PROVEN)
 
 _SUPPLY, _EXHAUST, _BALANCED = range(len(ARRANGEMENTS))
 _RUNNING = UNIT_STATES.index("running")
@@ -33,6 +37,9 @@ class UnitAir:
     measurement_holds: Mask
     whole_flow: Floats  # of the unit by its records [m3/s]
     flow: Floats  # the room's share of it, outdoor air only [m3/s]
+    design_flow: Floats  # the same, as designed [m3/s]
+    boosted_flow: Floats  # the same, once boosted [m3/s]
+    boosts: Mask  # runs, and is moved to more by its trigger
     mixing_factor: Floats
     runs: Mask
 
@@ -54,9 +61,11 @@ def air(given: Columns, room: Conditions, at: np.datetime64) -> Air:
     """Work out the air that counts."""
     units = _unit_air(given, at)
     counted = {
-        AS_MEASURED: units.runs,
-        LOST: units.runs & (given.units.standby_power == 1),
-        PROVEN: units.runs & units.measurement_holds,
+        AS_MEASURED: np.where(units.runs, units.flow, 0.0),
+        DESIGN: units.design_flow,
+        LOST: np.where(units.runs & (given.units.standby_power == 1), units.flow, 0.0),
+        BOOSTED: np.where(units.runs, units.boosted_flow, 0.0),
+        PROVEN: np.where(units.runs & units.measurement_holds, units.flow, 0.0),
     }
     flows = [_combined(given, room, units, counted[name], name != PROVEN) for name in AIRFLOWS]
     return Air(units, *(np.stack(parts) for parts in zip(*flows, strict=True)))
@@ -73,13 +82,19 @@ def _unit_air(given: Columns, at: np.datetime64) -> UnitAir:
         np.where(holds, units.measured_flow, np.fmin(units.design_flow, units.measured_flow)),
     )
     outdoor = known(units.outdoor_air_fraction, unknown_outdoor_share(units.arrangement))
+    reaches = outdoor * units.share
+    runs = (units.state == _RUNNING) & ~out_now(units.outage_begins, units.outage_ends, at)
+    boosted = np.maximum(flow, known(units.boost_flow, 0.0))
     return UnitAir(
         never_measured=never,
         measurement_holds=holds,
         whole_flow=flow,
-        flow=flow * outdoor * units.share,
+        flow=flow * reaches,
+        design_flow=known(units.design_flow, 0.0) * reaches,
+        boosted_flow=np.where(units.boost_detector != UNKNOWN, boosted, flow) * reaches,
+        boosts=runs & (units.boost_detector != UNKNOWN) & (boosted * reaches > flow * reaches),
         mixing_factor=known(units.mixing_factor, given.bases.mixing_factor[units.room]),
-        runs=units.state == _RUNNING,
+        runs=runs,
     )
 
 
@@ -90,12 +105,11 @@ def unknown_outdoor_share(arrangement: Integers) -> Floats:
 
 
 def _combined(
-    given: Columns, room: Conditions, units: UnitAir, counted: Mask, with_nature: bool
+    given: Columns, room: Conditions, units: UnitAir, moved: Floats, with_nature: bool
 ) -> tuple[Floats, Floats, Floats, Floats, Mask, Floats]:
     """Supply and exhaust as counted, air as moved, air by fans, whether natural, and the factor."""
     blows = is_one_of(given.units.arrangement, (_SUPPLY, _BALANCED))
     draws = given.units.arrangement != _SUPPLY
-    moved = np.where(counted, units.flow, 0.0)
     credited = moved / units.mixing_factor
 
     def total(flow: Floats, part: Mask) -> Floats:

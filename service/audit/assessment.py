@@ -10,7 +10,7 @@ from typing import Any, Final
 from service.audit.inputs import Reference
 
 # Goes up with every change that can alter a number, a severity or a statement.
-METHOD_VERSION: Final = "1"
+METHOD_VERSION: Final = "2"
 
 SEVERITIES: Final = ("observation", "minor", "major", "critical")
 STANDINGS: Final = ("in-order", "attention", "action", "stop")
@@ -30,21 +30,39 @@ class Assumed:
 
 
 @dataclass(frozen=True, slots=True)
+class Mark:
+    """A mark of a case, what it is set against, and whether the case is beyond it."""
+
+    place: int  # 1 first, 2 second, 3 third
+    measure: str  # oxygen, peak, mean-15min, mean-8h, lower-limit
+    limit_pct: float
+    value_pct: float
+    crossed: bool
+    at_s: float | None
+
+
+@dataclass(frozen=True, slots=True)
 class Case:
     """One release of one room under one airflow, for one hazard. None: never, or no such number."""
 
     release: str
     airflow: str
-    hazard: str  # oxygen-low, oxygen-high
+    hazard: str  # oxygen-low, oxygen-high, toxic, flammable
+    gas: str  # the gas judged
     counts: bool  # towards the standing
     fluids: tuple[str, ...]
     vessels: tuple[Reference, ...]
     oxygen_pct: float  # lowest, or highest for oxygen-high
     oxygen_kpa: float
+    peak_pct: float | None  # of the gas itself; None where oxygen is judged
+    mean_15min_pct: float | None
+    mean_8h_pct: float | None
+    lower_limit_pct: float | None  # share of the lower flammable limit
     at_s: float
-    to_deficient_s: float | None  # seconds to the first mark
+    to_deficient_s: float | None  # of oxygen that falls
     to_danger_s: float | None
     to_critical_s: float | None
+    marks: tuple[Mark, ...]  # first, second and third, as far as there are any
     recovered_s: float | None
     gas_m3: float  # released at room conditions over the case
     required_m3_h: float | None

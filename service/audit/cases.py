@@ -1,30 +1,39 @@
 """Rooms become one table of cases: a row for each release, airflow and hazard of a network."""
 
+from __future__ import annotations
+
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import datetime
+from typing import Final
 
 import numpy as np
 
-from service.audit.air import AIRFLOWS, PROVEN, Air, air
-from service.audit.columns import Columns, columns, moments, taken
+from service.audit.air import AIRFLOWS, AS_MEASURED, BOOSTED, PROVEN, Air, air
+from service.audit.columns import SETTLES, Columns, columns, is_one_of, moments, taken
 from service.audit.conditions import Conditions, conditions
 from service.audit.failures import failures
-from service.audit.hazards import HAZARDS
+from service.audit.hazards import ABOUT_OXYGEN, FLAMMABLE, HAZARDS, SIGN
 from service.audit.inputs import RoomValues
 from service.audit.inventory import Inventory, inventory
-from service.audit.releases import BOIL_OFF, RELEASES, Release, Rows, Sources, all_rows, sources
-from service.physics.arrays import Floats, Integers, Mask
+from service.audit.release_rows import Rows
+from service.audit.releases import BOIL_OFF, RELEASES, all_rows
+from service.audit.sources import Sources, sources
+from service.physics.arrays import Floats, Integers, Mask, quotient, sum_by_group
 
-CLEAN_AIR = -1
+CLEAN_AIR: Final = -1
+
+_LOW, _HIGH, _METHANE = range(len(SETTLES))
+_SUSTAINED: Final = np.array([release.sustained for release in RELEASES])
+_FLAMMABLE: Final = [hazard.slug for hazard in HAZARDS].index(FLAMMABLE)
 
 
 @dataclass(frozen=True, slots=True)
 class CaseTable:
     """A structure of arrays, one row a case; rooms are rows of ``given``.
 
-    A network is one room in this release. Fractions are levels of the hazard: 0 in clean air, and
-    rising as it worsens.
+    A network is one room in this release. Fractions are levels of the hazard: that of clean air at
+    the start, and rising as it worsens.
     """
 
     given: Columns
@@ -42,24 +51,42 @@ class CaseTable:
     counts: Mask  # towards the standing
     at_once: Mask
     starts_from: Integers  # row of the case whose worst point it starts from; -1: clean air
-    volume: Floats  # [m3]
-    supply: Floats  # [m3/s]
+    measured: Integers  # row of the same release in as-measured
+    volume: Floats  # that the gas mixes in [m3]
+    supply: Floats  # (rows, 1 or segments) [m3/s]
     exhaust: Floats
     instant: Floats  # [m3]
-    instant_diluting: Floats
+    instant_level: Floats
     durations: Floats  # (rows, segments) [s]
     rates: Floats  # [m3/s]
-    rates_diluting: Floats
-    marks: Floats  # (rows, 3) levels
-    oxygen_marks: Floats  # (rows, 3) oxygen fractions
+    rates_level: Floats
+    marks: Floats  # (rows, 3) levels; infinite where there is none
+    measured_on: Integers  # (rows, 3) row of MEASURES
+    gas_by_level: Floats  # fraction of the gas that a level of 1 is
+    oxygen_taken: Floats  # share of the oxygen in air that a level of 1 takes
     member_start: Integers  # where the sources of each case begin; one more for the end
     member_source: Integers
     member_row: Integers  # which case each of them belongs to, never falling
+    member_gas: Floats  # let go by each [m3]
 
     @property
     def size(self) -> int:
         """How many cases."""
         return int(self.room.size)
+
+    @property
+    def sustained(self) -> Mask:
+        """Which cases go on without any accident."""
+        sustained: Mask = _SUSTAINED[self.release]
+        return sustained
+
+    @property
+    def first_mark(self) -> Floats:
+        """Level of the first mark that there is."""
+        finite = np.isfinite(self.marks)
+        place = np.argmax(finite, axis=1)
+        first: Floats = np.take_along_axis(self.marks, place[:, np.newaxis], axis=1)[:, 0]
+        return first
 
 
 def case_table(rooms: Sequence[RoomValues], at: datetime) -> CaseTable:
@@ -71,21 +98,27 @@ def case_table(rooms: Sequence[RoomValues], at: datetime) -> CaseTable:
 
 
 def cases_of(given: Columns, at: np.datetime64, failed: tuple[str | None, ...] = ()) -> CaseTable:
-    """Make the cases of rooms already flattened and sound."""
+    """Make the cases of rooms already flattened and sound; those of a boost come later."""
     room = conditions(given)
     stock = inventory(given, room, at)
     flows = air(given, room, at)
-    found = sources(given, stock, room)
-    built = all_rows(given, found)
+    found = sources(given, stock)
     blocks = [
-        (release, code, airflow, rows)
-        for code, release in enumerate(RELEASES)
-        for of_release, rows in built
-        if of_release is release
+        _Block(release, AIRFLOWS.index(airflow), rows)
+        for release, rows in all_rows(given, found)
         for airflow in AIRFLOWS
-        if airflow != PROVEN or not release.at_once
+        if airflow != BOOSTED and (airflow != PROVEN or RELEASES[release].sustained)
     ]
-    return _joined(given, room, stock, found, flows, blocks, failed)
+    return _joined(given, room, stock, found, flows, blocks, failed or (None,) * given.count)
+
+
+@dataclass(frozen=True, slots=True)
+class _Block:
+    """A release of one hazard in one airflow."""
+
+    release: int
+    airflow: int
+    rows: Rows
 
 
 def _joined(
@@ -94,62 +127,80 @@ def _joined(
     stock: Inventory,
     found: Sources,
     flows: Air,
-    blocks: Sequence[tuple[Release, int, str, Rows]],
+    blocks: Sequence[_Block],
     failed: tuple[str | None, ...],
 ) -> CaseTable:
-    sizes = [rows.room.size for *_, rows in blocks]
-    width = max((rows.durations.shape[1] for *_, rows in blocks), default=1)
+    sizes = [block.rows.room.size for block in blocks]
+    width = max((block.rows.durations.shape[1] for block in blocks), default=1)
 
     def by_block(values: Sequence[int | bool]) -> Integers:
         return np.repeat(np.array(values, dtype=np.int64), sizes)
 
     def joined(name: str) -> Floats:
-        return np.concatenate([getattr(rows, name) for *_, rows in blocks])
+        return np.concatenate([np.empty(0), *(getattr(block.rows, name) for block in blocks)])
+
+    def codes(name: str) -> Integers:
+        parts = [getattr(block.rows, name) for block in blocks]
+        return np.concatenate([np.empty(0, dtype=np.int64), *parts])
 
     def padded(name: str) -> Floats:
-        return np.concatenate([_padded(getattr(rows, name), width) for *_, rows in blocks])
+        parts = [_padded(getattr(block.rows, name), width) for block in blocks]
+        return np.concatenate([np.empty((0, width)), *parts])
 
-    rooms = joined("room").astype(np.int64)
-    hazard = joined("hazard").astype(np.int64)
-    release = by_block([code for _, code, _, _ in blocks])
-    airflow = by_block([AIRFLOWS.index(name) for _, _, name, _ in blocks])
-    offsets = np.cumsum(sizes) - sizes
-    oxygen_marks = np.stack([each.marks(room) for each in HAZARDS])[hazard, rooms]
-    levels = np.stack([each.level(each.marks(room)) for each in HAZARDS])[hazard, rooms]
+    rooms, hazard = codes("room"), codes("hazard")
+    release = by_block([block.release for block in blocks])
+    airflow = by_block([block.airflow for block in blocks])
+    offsets = np.cumsum(sizes, dtype=np.int64) - np.array(sizes, dtype=np.int64)
     member_row = np.concatenate(
-        [rows.member_row + offset for (*_, rows), offset in zip(blocks, offsets, strict=True)]
-    ).astype(np.int64)
+        [np.empty(0, dtype=np.int64)]
+        + [block.rows.member_row + start for block, start in zip(blocks, offsets, strict=True)]
+    )
     by_case = np.argsort(member_row, kind="stable")
-    from_boil_off = by_block([each.from_boil_off for each, *_ in blocks]) == 1
+    member_row = member_row[by_case]
+    member_source = codes("member_source")[by_case]
+    member_gas = joined("member_gas")[by_case]
+    marks, measured_on = _marks(given, room, release, hazard, rooms)
+    weight = found.weight[hazard[member_row], member_source]
+    gas_by_level = quotient(
+        sum_by_group(member_gas, member_row, rooms.size),
+        sum_by_group(member_gas * weight, member_row, rooms.size),
+        where_zero=1.0,
+    )
+    instant = joined("instant")
+    counts = [AIRFLOWS[block.airflow] in RELEASES[block.release].counts_in for block in blocks]
     return CaseTable(
         given=given,
         conditions=room,
         stock=stock,
         sources=found,
         air=flows,
-        failed=failed or (None,) * given.count,
+        failed=failed,
         network=rooms,
         room=rooms,
         release=release,
         airflow=airflow,
         hazard=hazard,
         shown=airflow != AIRFLOWS.index(PROVEN),
-        counts=by_block([name in each.counts_in for each, _, name, _ in blocks]) == 1,
-        at_once=by_block([each.at_once for each, *_ in blocks]) == 1,
-        starts_from=_starts_from(rooms, release, airflow, hazard, from_boil_off, given.count),
-        volume=room.volume[rooms],
-        supply=flows.supply[airflow, rooms],
-        exhaust=flows.exhaust[airflow, rooms],
-        instant=joined("instant"),
-        instant_diluting=joined("instant_diluting"),
+        counts=by_block(counts) == 1,
+        at_once=instant > 0.0,
+        starts_from=_starts_from(rooms, release, airflow, hazard, given.count),
+        measured=_same_as_measured(blocks, offsets),
+        volume=_volume(given, room, found, hazard, rooms, member_row, member_source),
+        supply=flows.supply[airflow, rooms][:, np.newaxis],
+        exhaust=flows.exhaust[airflow, rooms][:, np.newaxis],
+        instant=instant,
+        instant_level=joined("instant_level"),
         durations=padded("durations"),
         rates=padded("rates"),
-        rates_diluting=padded("rates_diluting"),
-        marks=levels,
-        oxygen_marks=oxygen_marks,
-        member_start=np.searchsorted(member_row[by_case], np.arange(rooms.size + 1)),
-        member_source=joined("member_source").astype(np.int64)[by_case],
-        member_row=member_row[by_case],
+        rates_level=padded("rates_level"),
+        marks=marks,
+        measured_on=measured_on,
+        gas_by_level=gas_by_level,
+        oxygen_taken=np.where(ABOUT_OXYGEN[hazard], SIGN[hazard], gas_by_level),
+        member_start=np.searchsorted(member_row, np.arange(rooms.size + 1)),
+        member_source=member_source,
+        member_row=member_row,
+        member_gas=member_gas,
     )
 
 
@@ -159,17 +210,68 @@ def _padded(table: Floats, width: int) -> Floats:
     return filled
 
 
-def _starts_from(
-    room: Integers,
-    release: Integers,
-    airflow: Integers,
+def _marks(
+    given: Columns, room: Conditions, release: Integers, hazard: Integers, rooms: Integers
+) -> tuple[Floats, Integers]:
+    """Levels of the marks of each case, and what each is measured on."""
+    levels = np.empty((rooms.size, 3))
+    measured_on = np.empty((rooms.size, 3), dtype=np.int64)
+    lasts = _SUSTAINED[release]
+    for code in np.unique(hazard).tolist():
+        for sustained in (False, True):
+            rows = np.flatnonzero((hazard == code) & (lasts == sustained))
+            if rows.size:
+                marks = HAZARDS[code].marks(given, room, sustained)
+                levels[rows] = marks.levels[rooms[rows]]
+                measured_on[rows] = marks.measured_on
+    return levels, measured_on
+
+
+def _volume(
+    given: Columns,
+    room: Conditions,
+    found: Sources,
     hazard: Integers,
-    from_boil_off: Mask,
-    rooms: int,
+    rooms: Integers,
+    member_row: Integers,
+    member_source: Integers,
+) -> Floats:
+    """Volume that the gas of each case mixes in.
+
+    A flammable gas is judged by the highest of room, floor and ceiling figure: it may all stay in
+    the zone where it goes, with the same air passing through.
+    """
+    volume = room.volume[rooms]
+    burns = np.flatnonzero(hazard[member_row] == _FLAMMABLE)
+    if burns.size:
+        settles = given.fluids.settles[found.fluid[member_source[burns]]]
+        rows = member_row[burns]
+        for kinds, zone in (
+            ((_LOW, _METHANE), room.floor_zone),
+            ((_HIGH, _METHANE), room.ceiling_zone),
+        ):
+            goes = rows[is_one_of(settles, kinds)]
+            np.minimum.at(volume, goes, zone[rooms[goes]])
+    return volume
+
+
+def _same_as_measured(blocks: Sequence[_Block], offsets: Integers) -> Integers:
+    """Row of the same release in as-measured; the first airflow of each release is that one."""
+    rows: list[Integers] = [np.empty(0, dtype=np.int64)]
+    first: Integers = rows[0]
+    for block, start in zip(blocks, offsets, strict=True):
+        if AIRFLOWS[block.airflow] == AS_MEASURED:
+            first = np.arange(start, start + block.rows.room.size)
+        rows.append(first)
+    return np.concatenate(rows)
+
+
+def _starts_from(
+    room: Integers, release: Integers, airflow: Integers, hazard: Integers, rooms: int
 ) -> Integers:
     """Row of the room's boil-off in as-measured for the same hazard, where a case starts there."""
     slugs = [each.slug for each in RELEASES]
-    base = (release == slugs.index(BOIL_OFF)) & (airflow == 0)
+    base = (release == slugs.index(BOIL_OFF)) & (airflow == AIRFLOWS.index(AS_MEASURED))
     rows = np.full((len(HAZARDS), rooms), CLEAN_AIR)
     rows[hazard[base], room[base]] = np.flatnonzero(base)
-    return np.where(from_boil_off, rows[hazard, room], CLEAN_AIR)
+    return np.where(_SUSTAINED[release], CLEAN_AIR, rows[hazard, room])

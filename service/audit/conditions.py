@@ -9,6 +9,7 @@ from service.audit.columns import ROOM_KINDS, Columns, is_one_of
 from service.physics.ambient import oxygen_critical_mark, oxygen_danger_mark, station_pressure
 from service.physics.arrays import Floats, Mask
 from service.physics.constants import OXYGEN_IN_AIR, ROOM_TEMPERATURE
+from service.physics.layering import breathing_zone_volume, ceiling_zone_volume
 
 # Height taken to turn a volume into a floor where neither floor nor height is known: a low
 # ceiling makes a large floor, and so a long way out. [m]  Common practice, no source.
@@ -29,6 +30,8 @@ class Conditions:
     temperature: Floats  # [K]
     volume: Floats  # net [m3]
     height: Floats  # [m]; not-a-number where it does not follow from the records
+    floor_zone: Floats  # net volume that people breathe in [m3], at most the room
+    ceiling_zone: Floats  # net volume above it [m3], at most the room
     low_marks: Floats  # (rooms, 3) oxygen fractions: deficient, danger, critical
     high_marks: Floats  # (rooms, 3) oxygen fractions: enriched and the two marks beyond
     natural_flow: Floats  # [m3/s]
@@ -50,16 +53,31 @@ def conditions(given: Columns) -> Conditions:
     volume = rooms.gross_volume * free_share
     height = known(rooms.height, rooms.gross_volume / rooms.floor_area)
     way_out = known(rooms.way_out, way_out_of_floor(given))
+    floor, ceiling = _zones(given, height, free_share)
     return Conditions(
         pressure=pressure,
         temperature=known(rooms.temperature, ROOM_TEMPERATURE),
         volume=volume,
         height=height,
+        floor_zone=np.minimum(floor, volume),
+        ceiling_zone=np.minimum(ceiling, volume),
         low_marks=_low_marks(given, pressure),
         high_marks=np.stack([bases.enriched, bases.rich_second, bases.rich_third], axis=1),
         natural_flow=_air_changes(given) * volume,
         way_out=way_out,
         out_after_alarm=bases.react + way_out / bases.walk,
+    )
+
+
+def _zones(given: Columns, height: Floats, free_share: Floats) -> tuple[Floats, Floats]:
+    """Net volume below and above the height that people breathe at, by the two-zone bound."""
+    rooms = given.rooms
+    # A high room has a small floor, which is the cautious side here.
+    tall = known(height, np.cbrt(rooms.gross_volume))
+    floor = known(rooms.floor_area, rooms.gross_volume / tall)
+    return (
+        breathing_zone_volume(floor, tall, net_share=free_share),
+        ceiling_zone_volume(floor, tall, net_share=free_share),
     )
 
 

@@ -10,6 +10,7 @@ import numpy as np
 
 from service.audit.assessment import METHOD_VERSION, SEVERITIES, Assessment, Judgement
 from service.audit.assumptions import assumptions
+from service.audit.boost import with_boost
 from service.audit.cases import CaseTable, case_table, cases_of
 from service.audit.columns import UNKNOWN, moments
 from service.audit.evaluation import deciding, evaluate
@@ -43,9 +44,10 @@ def assess_rooms(rooms: Sequence[RoomValues], *, at: datetime) -> tuple[Assessme
     table = tables.cases.table
     judged = [(rule, rule.judge(tables, moment)) for rule in RULES]
     judgements = _judgements(tables, judged)
+    bare = cases_of(without_margins(table.given), moment)
     told = Told(
         tables=tables,
-        without=cases_of(without_margins(table.given), moment),
+        without=with_boost(bare, moment),
         leading=_leading(tables, judged),
     )
     turns = next_turns(tables, [(rule.subject, answer) for rule, answer in judged], moment)
@@ -58,7 +60,7 @@ def assess_rooms(rooms: Sequence[RoomValues], *, at: datetime) -> tuple[Assessme
 
 
 def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) -> Tables:
-    table = case_table(rooms, at)
+    table = with_boost(case_table(rooms, at), moment)
     cases = evaluate(table, moment)
     assumed = assumptions(table)
     sound = _sound(table)

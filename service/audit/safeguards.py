@@ -1,5 +1,7 @@
 """Which safeguards hold in each case, and whether people are out in time (judging 4 and 6)."""
 
+from __future__ import annotations
+
 from dataclasses import dataclass
 from typing import Final
 
@@ -18,9 +20,11 @@ from service.audit.columns import (
     members,
 )
 from service.audit.conditions import Conditions, known
-from service.audit.hazards import HAZARDS
+from service.audit.hazards import ABOUT_OXYGEN, SIGN
+from service.audit.outages import out_now
+from service.audit.releases import OVERFILL, RELEASES
 from service.audit.solve import Results, proven_to_hold
-from service.physics.arrays import Floats, Integers, Mask, rounded
+from service.physics.arrays import Floats, Integers, Mask, quotient, rounded, sum_by_group
 from service.physics.constants import OXYGEN_IN_AIR
 from service.physics.detector import alarm_time
 from service.physics.ventilation import flow_to_restore
@@ -41,6 +45,10 @@ _ENTRANCE = PLACES.index("entrance")
 _LOW, _HIGH, _METHANE = range(len(SETTLES))
 _SEALED = [ROOM_KINDS.index(kind) for kind in ("lift", "vehicle")]
 _PIT = ROOM_KINDS.index("pit")
+_OVERFILL = [release.slug for release in RELEASES].index(OVERFILL)
+
+# A mark that is not there, as a level that no course reaches.
+_BEYOND_ALL: Final = 1e9
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,6 +71,7 @@ class Safeguards:
     detectors: Detection
     detection: Mask
     ventilation: Mask
+    shut_off: Mask
     nobody_inside: Mask
     alone_suffices: Mask  # nobody inside counts as all
     nobody_counts: Mask  # a kind of room where nobody inside is a safeguard
@@ -71,6 +80,16 @@ class Safeguards:
     late: Mask  # the second mark comes before people are out
     needs_low: Mask
     needs_high: Mask
+    alarms: Alarms
+
+
+@dataclass(frozen=True, slots=True)
+class Alarms:
+    """One row a case and a detector that would warn of it."""
+
+    case: Integers
+    detector: Integers
+    time: Floats  # [s]; not-a-number where it is never reached
 
 
 def detection(given: Columns, room: Conditions, at: np.datetime64) -> Detection:
@@ -84,6 +103,7 @@ def detection(given: Columns, room: Conditions, at: np.datetime64) -> Detection:
         calibrated=calibrated,
         silenced=silenced,
         works=(detectors.state == _IN_SERVICE)
+        & ~out_now(detectors.outage_begins, detectors.outage_ends, at)
         & calibrated
         & ~silenced
         & (detectors.placed != _ENTRANCE),
@@ -99,7 +119,8 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
     found = detection(table.given, table.conditions, at)
     needs_low, needs_high = _heights_needed(table)
     second = _time_to_second(table, results)
-    case, detector, alarm = _alarms(table, results, found, needs_low, needs_high)
+    alarms = _alarms(table, results, found, needs_low, needs_high)
+    case, detector, alarm = alarms.case, alarms.detector, alarms.time
     first = _first(alarm, case, table.size)
     out_after = table.conditions.out_after_alarm[table.room]
     kind = table.given.rooms.kind[table.room]
@@ -114,6 +135,7 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
         detectors=found,
         detection=(has_low | ~needs_low) & (has_high | ~needs_high) & (needs_low | needs_high),
         ventilation=_ventilation(table, results),
+        shut_off=_shut_off(table, results),
         nobody_inside=alone & is_one_of(kind, [*_SEALED, _PIT]),
         alone_suffices=alone & is_one_of(kind, _SEALED),
         nobody_counts=is_one_of(kind, [*_SEALED, _PIT]),
@@ -122,6 +144,7 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
         late=~table.at_once & ~np.isnan(second) & ~out,
         needs_low=needs_low,
         needs_high=needs_high,
+        alarms=alarms,
     )
 
 
@@ -141,15 +164,17 @@ def _heights_needed(table: CaseTable) -> tuple[Mask, Mask]:
 
 def _time_to_second(table: CaseTable, results: Results) -> Floats:
     """Time to the mark that people must be out by; on high sites between first and third."""
-    same = table.marks[:, 1] == table.marks[:, 0]
-    level = np.where(same, 0.5 * (table.marks[:, 0] + table.marks[:, 2]), table.marks[:, 1])
+    second = np.where(np.isfinite(table.marks[:, 1]), table.marks[:, 1], _BEYOND_ALL)
+    same = (table.marks[:, 1] == table.marks[:, 0]) & ABOUT_OXYGEN[table.hazard]
+    level = np.where(same, 0.5 * (table.marks[:, 0] + table.marks[:, 2]), second)
     reached = results.course.first_time_above(level)
-    return np.where(results.level > level, reached, np.nan)
+    crossed = np.where(same, results.level > level, results.crossed[:, 1])
+    return np.where(crossed, reached, np.nan)
 
 
 def _alarms(
     table: CaseTable, results: Results, found: Detection, needs_low: Mask, needs_high: Mask
-) -> tuple[Integers, Integers, Floats]:
+) -> Alarms:
     """Time of alarm for each case and detector that works at a height where the gas goes."""
     given = table.given
     detector, case = members(given.detectors.room, table.room, given.count)
@@ -159,9 +184,8 @@ def _alarms(
     powered = (table.airflow[case] != AIRFLOWS.index(LOST)) | (
         given.detectors.power_backed[detector] == 1
     )
-    right = given.detectors.gas[detector] == OXYGEN_GAS
     # Only a case that passes a mark has anything to be warned of.
-    kept = found.works[detector] & placed & powered & right & (results.mark[case] > 0)
+    kept = found.works[detector] & placed & powered & (results.mark[case] > 0)
     case, detector = case[kept], detector[kept]
     level = _alarm_level(table, case, detector)
     set_to = ~np.isnan(level)
@@ -173,23 +197,47 @@ def _alarms(
         t90=known(given.detectors.t90[detector], UNKNOWN_T90),
         delay=known(given.detectors.delay[detector], 0.0),
     )
-    return case, detector, alarm
+    return Alarms(case, detector, alarm)
 
 
 def _alarm_level(table: CaseTable, case: Integers, detector: Integers) -> Floats:
     """Lowest level at which a detector alarms for the hazard; not-a-number where it does not.
 
-    Without any recorded alarm an oxygen detector is taken to warn late, at the second mark, and of
-    enrichment not at all.
+    Without any recorded alarm a detector is taken to warn late, at the second mark, and an oxygen
+    detector of enrichment not at all. A detector of one gas is none for another.
     """
     alarms = table.given.detectors.alarms[detector]
-    sign = np.array([hazard.sign for hazard in HAZARDS])[table.hazard[case]]
-    levels = sign[:, np.newaxis] * (OXYGEN_IN_AIR - alarms) / OXYGEN_IN_AIR
+    by_oxygen = SIGN[table.hazard[case]][:, np.newaxis] * (OXYGEN_IN_AIR - alarms) / OXYGEN_IN_AIR
+    about_oxygen = ABOUT_OXYGEN[table.hazard[case]]
+    fraction = _level_of_gas(table, case, detector)
+    levels = np.where(about_oxygen[:, np.newaxis], by_oxygen, alarms * fraction[:, np.newaxis])
     counted = np.where(levels > 0.0, levels, np.inf)
     lowest = counted.min(axis=1, initial=np.inf)
-    unrecorded = np.isnan(alarms).all(axis=1) & (sign > 0.0)
+    unrecorded = np.isnan(alarms).all(axis=1) & (SIGN[table.hazard[case]] >= 0.0)
     set_to = np.where(unrecorded, table.marks[case, 1], lowest)
-    return np.where(np.isinf(set_to), np.nan, set_to)
+    right = np.where(
+        about_oxygen,
+        table.given.detectors.gas[detector] == OXYGEN_GAS,
+        fraction > 0.0,
+    )
+    return np.where(np.isinf(set_to) | ~right, np.nan, set_to)
+
+
+def _level_of_gas(table: CaseTable, case: Integers, detector: Integers) -> Floats:
+    """Level of the case's hazard for each fraction of the detector's gas; 0 where it has none.
+
+    Where other gases raise the same hazard, the detector sees its own share alone.
+    """
+    gases = len(table.given.gases)
+    fluid = table.sources.fluid[table.member_source]
+    named = fluid != UNKNOWN
+    row, amount = table.member_row[named], table.member_gas[named]
+    gas = table.given.fluids.gas[fluid[named]]
+    of_gas = sum_by_group(amount, row * gases + gas, table.size * gases)
+    whole = sum_by_group(table.member_gas, table.member_row, table.size)
+    mine = of_gas[case * gases + table.given.detectors.gas[detector]]
+    share = quotient(mine, whole[case], where_zero=0.0)
+    return quotient(1.0 / table.gas_by_level[case], share, where_zero=0.0)
 
 
 def _first(times: Floats, case: Integers, size: int) -> Floats:
@@ -210,9 +258,19 @@ def _ventilation(table: CaseTable, results: Results) -> Mask:
     flow = np.maximum(table.air.supply[proven], table.air.exhaust[proven])[table.room]
     wanted = flow_to_restore(
         results.level,
-        table.marks[:, 0],
+        table.first_mark,
         volume=table.volume,
         within=table.given.bases.restore[table.room],
     )
     holds: Mask = proven_to_hold(table, results)[table.room] & (flow > 0.0) & (flow >= wanted)
     return holds
+
+
+def _shut_off(table: CaseTable, results: Results) -> Mask:
+    """Closed by something that does not depend on what failed, tested, and in time."""
+    automatic = np.zeros(table.size, dtype=np.bool_)
+    overfills = table.release[table.member_row] == _OVERFILL
+    vessel = table.sources.vessel[table.member_source[overfills]]
+    rows = table.member_row[overfills]
+    automatic[rows] = table.stock.shut_off_holds[vessel]
+    return automatic & ~results.crossed[:, 1] & ~results.crossed[:, 2]

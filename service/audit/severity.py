@@ -8,50 +8,85 @@ from service.audit.air import AIRFLOWS, AS_MEASURED, LOST
 from service.audit.assessment import SEVERITIES
 from service.audit.cases import CaseTable
 from service.audit.columns import UNKNOWN
-from service.audit.releases import BOIL_OFF, RELEASES
+from service.audit.releases import (
+    ALL_VESSELS,
+    DETECTION,
+    NOBODY_INSIDE,
+    RELEASES,
+    SHUT_OFF,
+    VENTILATION,
+)
 from service.audit.safeguards import Safeguards
 from service.audit.solve import Results
-from service.physics.arrays import Floats, Integers, Mask
+from service.physics.arrays import Floats, Integers, Mask, sum_by_group
 
 NONE: Final = -1  # no mark is crossed
 OBSERVATION, MINOR, MAJOR, CRITICAL = range(len(SEVERITIES))
 
-# What evaporates by itself needs no accident: at least this by the marks crossed.
+# What goes on by itself needs no accident: at least this by the marks crossed.
 _WITHOUT_ACCIDENT: Final = np.array([NONE, MAJOR, CRITICAL, CRITICAL])
+
+# A vessel of less than this is carried or wheeled. [m3]  Judging 1.
+PORTABLE: Final = 0.060
+
+_SLUGS: Final = [release.slug for release in RELEASES]
 
 
 def case_severity(table: CaseTable, results: Results, guards: Safeguards) -> Integers:
     """Severity of each case as an index in SEVERITIES; -1 where no mark is crossed."""
-    boils = table.release == [release.slug for release in RELEASES].index(BOIL_OFF)
-    as_measured = boils & (table.airflow == AIRFLOWS.index(AS_MEASURED))
-    lost = boils & (table.airflow == AIRFLOWS.index(LOST))
+    by_itself = table.sustained & (table.airflow == AIRFLOWS.index(AS_MEASURED))
     row = np.where(guards.late & (results.mark > 0), 3, results.mark)
-    column = np.where(as_measured, 0, _column(table, guards, boils))
+    column = np.where(by_itself, 0, _column(table, guards))
     by_table = table.given.bases.severity[table.room, np.maximum(row - 1, 0), column]
-    lower = lost & _told_of_loss(table)[table.room]
-    by_table = np.where(lower, np.maximum(by_table - 1, OBSERVATION), by_table)
-    least = np.where(as_measured, _WITHOUT_ACCIDENT[results.mark], NONE)
+    lower = (table.airflow == AIRFLOWS.index(LOST)) & _told_of_loss(table)[table.room]
+    everything = table.release == _SLUGS.index(ALL_VESSELS)
+    by_table = np.where(lower | everything, np.maximum(by_table - 1, OBSERVATION), by_table)
+    unlikely = everything & ~_may_all_go(table)[table.room]
+    by_table = np.where(unlikely, OBSERVATION, by_table)
+    least = np.where(by_itself, _WITHOUT_ACCIDENT[results.mark], NONE)
     severity = np.maximum(by_table, least)
     shown_only = np.where(table.counts, severity, OBSERVATION)
     return np.where(results.mark > 0, shown_only, NONE)
 
 
-def _column(table: CaseTable, guards: Safeguards, boils: Mask) -> Integers:
+def without_safeguards(table: CaseTable, results: Results) -> Integers:
+    """Severity of each case that counts if no safeguard held; -1 where no mark is crossed."""
+    worst = table.given.bases.severity[table.room, np.maximum(results.mark - 1, 0), 0]
+    return np.where((results.mark > 0) & table.counts, worst, NONE)
+
+
+def _column(table: CaseTable, guards: Safeguards) -> Integers:
     """Column of the severity table: no safeguard, some, all of those that count."""
-    slugs = [set(release.safeguards) for release in RELEASES]
-    counts_detection = np.array(["detection" in names for names in slugs])[table.release]
-    counts_ventilation = np.array(["ventilation" in names for names in slugs])[table.release]
-    counts_nobody = guards.nobody_counts & ~boils
-    possible = (
-        counts_detection.astype(np.int64) + counts_ventilation + counts_nobody.astype(np.int64)
-    )
-    held = (
-        (counts_detection & guards.detection).astype(np.int64)
-        + (counts_ventilation & guards.ventilation)
-        + (counts_nobody & guards.nobody_inside)
-    )
+    holding = {
+        DETECTION: guards.detection,
+        VENTILATION: guards.ventilation,
+        SHUT_OFF: guards.shut_off,
+        NOBODY_INSIDE: guards.nobody_inside,
+    }
+    possible = np.zeros(table.size, dtype=np.int64)
+    held = np.zeros(table.size, dtype=np.int64)
+    for name, holds in holding.items():
+        counts = np.array([name in each.safeguards for each in RELEASES])[table.release]
+        if name == NOBODY_INSIDE:
+            counts &= guards.nobody_counts
+        possible += counts
+        held += counts & holds
     column = np.where(held == 0, 0, np.where(held == possible, 2, 1))
-    return np.where(guards.alone_suffices & ~boils, 2, column)
+    accident = np.array([NOBODY_INSIDE in each.safeguards for each in RELEASES])[table.release]
+    return np.where(guards.alone_suffices & accident, 2, column)
+
+
+def _may_all_go(table: CaseTable) -> Mask:
+    """Tell where all vessels may go together: a manifold is shared, or many are carried about."""
+    vessels, present = table.given.vessels, table.stock.present
+    portable = present & (vessels.capacity_volume < PORTABLE) & (vessels.mobile != 0)
+    many = sum_by_group(portable.astype(np.float64), vessels.room, table.given.count)
+    may = many > table.given.bases.many_vessels
+    joined = np.flatnonzero(present & vessels.on_manifold)
+    group, members = np.unique(vessels.group[joined], return_counts=True)
+    shared = np.isin(vessels.group, group[members > 1]) & present & vessels.on_manifold
+    may[vessels.room[shared]] = True
+    return may
 
 
 def _told_of_loss(table: CaseTable) -> Mask:

@@ -1,20 +1,33 @@
 """A table of cases becomes numbers: by way of physics, rounded once."""
 
+from __future__ import annotations
+
 from dataclasses import dataclass
+from typing import Final
 
 import numpy as np
 
 from service.audit.air import AIRFLOWS, AS_MEASURED, PROVEN
 from service.audit.cases import CLEAN_AIR, CaseTable
-from service.audit.hazards import HAZARDS
-from service.audit.releases import BOIL_OFF, RELEASES
+from service.audit.hazards import (
+    ABOUT_OXYGEN,
+    CLEAN,
+    HAS_MEANS,
+    MEAN_8H,
+    MEAN_15MIN,
+    REACHED,
+    SIGN,
+    WINDOWS,
+)
 from service.physics.ambient import oxygen_partial_pressure
 from service.physics.arrays import Floats, Integers, Mask, rounded
+from service.physics.averages import highest_mean
 from service.physics.course import Course
 from service.physics.mixing import (
     released_fraction_after_displacement,
     released_fraction_after_mixing,
 )
+from service.physics.roots import smallest_enough
 from service.physics.ventilation import (
     course,
     flow_to_restore,
@@ -23,56 +36,70 @@ from service.physics.ventilation import (
     smallest_supply_to_hold_course,
 )
 
-_SIGNS = np.array([hazard.sign for hazard in HAZARDS])
+# A mark that is not there, as a level that no course reaches.
+_BEYOND_ALL: Final = 1e9
 
 
 @dataclass(frozen=True, slots=True)
 class Results:
     """What became of each case; not-a-number where there is no such number."""
 
-    level: Floats  # worst level of the hazard, 0 in clean air [1]
+    level: Floats  # worst level of the hazard [1]
+    means: Floats  # (rows, 2) highest mean level of 15 min and of 8 h [1]
     oxygen: Floats  # lowest or highest, as a fraction [1]
     oxygen_pressure: Floats  # [Pa]
     at: Floats  # [s]
+    crossed: Mask  # (rows, 3)
     to_marks: Floats  # (rows, 3) [s]
     recovered: Floats  # back inside the first mark [s]
     gas: Floats  # released over the case [m3]
     mark: Integers  # worst mark crossed, 0 to 3
     nearness: Floats  # way from clean air to the first mark that was gone [1]
-    required: Floats  # outdoor air that a fan must move to hold the room's boil-off [m3/s]
+    required: Floats  # outdoor air that a fan must move to hold the case [m3/s]
     restore: Floats  # outdoor air that a fan must move to bring the room back in time [m3/s]
     course: Course  # of the level, unrounded
+
+    def measured(self, on: Integers) -> Floats:
+        """The number that each mark is set against, (rows, marks)."""
+        all_three = np.column_stack([self.level, self.means])
+        found: Floats = np.take_along_axis(all_three, on, axis=1)
+        return found
 
 
 def solve(table: CaseTable) -> Results:
     """Solve every case at once."""
     with np.errstate(all="raise", under="ignore"):
-        runs, start = _courses(table)
+        runs, start = courses(table)
         level = np.maximum(runs.highest, start)
-        oxygen = rounded(oxygen_from_fraction(_SIGNS[table.hazard] * level))
+        means = _means(table, runs)
+        oxygen = rounded(oxygen_from_fraction(table.oxygen_taken * level))
+        measured = np.take_along_axis(np.column_stack([level, means]), table.measured_on, axis=1)
+        crossed = _crossed(table, measured, oxygen)
+        mark = np.where(crossed.any(axis=1), 3 - np.argmax(crossed[:, ::-1], axis=1), 0)
+        limit = table.first_mark
         pressure = table.conditions.pressure[table.room]
-        mark = _worst_mark(table, oxygen)
-        required = _required(table)
-        limit = table.marks[:, 0]
+        clean = CLEAN[table.hazard]
         return Results(
             level=rounded(level),
+            means=rounded(means),
             oxygen=oxygen,
             oxygen_pressure=rounded(oxygen_partial_pressure(oxygen, pressure)),
             at=rounded(np.where(level > runs.highest, 0.0, runs.at)),
-            to_marks=_times_to_marks(table, runs, start, mark),
+            crossed=crossed,
+            to_marks=_times_to_marks(table, runs, start, crossed),
             recovered=rounded(np.where(mark > 0, runs.back_below(limit), np.nan)),
             gas=rounded(table.instant + (table.rates * table.durations).sum(axis=1)),
             mark=mark,
-            nearness=rounded(level / limit),
-            required=rounded(np.where(table.at_once, np.nan, required[table.room])),
+            nearness=rounded((_of_first(table, measured) - clean) / (limit - clean)),
+            required=_required(table, start),
             restore=rounded(_restore(table, level)),
             course=runs,
         )
 
 
-def _courses(table: CaseTable) -> tuple[Course, Floats]:
+def courses(table: CaseTable) -> tuple[Course, Floats]:
     """Solve what starts from clean air first, and then what starts from there."""
-    start = np.zeros(table.size)
+    start = CLEAN[table.hazard]
     waits = table.starts_from != CLEAN_AIR
     if waits.any():
         bases = np.unique(table.starts_from[waits])
@@ -86,83 +113,159 @@ def _run(table: CaseTable, rows: Integers, start: Floats) -> Course:
     return course(
         table.durations[rows],
         release=table.rates[rows],
-        dilution=table.rates_diluting[rows],
-        supply=table.supply[rows, np.newaxis],
-        exhaust=table.exhaust[rows, np.newaxis],
+        dilution=table.rates_level[rows],
+        supply=table.supply[rows],
+        exhaust=table.exhaust[rows],
         volume=table.volume[rows],
         start=_after_instant(table, rows, start),
     )
 
 
 def _after_instant(table: CaseTable, rows: Integers, start: Floats) -> Floats:
-    gas, diluting, volume = table.instant[rows], table.instant_diluting[rows], table.volume[rows]
+    gas, level, volume = table.instant[rows], table.instant_level[rows], table.volume[rows]
     pushed = released_fraction_after_displacement(
-        gas, volume, fraction_before=start, dilution_volume=diluting
+        gas, volume, fraction_before=start, dilution_volume=level
     )
     mixed = released_fraction_after_mixing(
-        gas, volume, fraction_before=start, dilution_volume=diluting
+        gas, volume, fraction_before=start, dilution_volume=level
     )
     displaces = table.given.bases.by_displacement[table.room[rows]]
     after = np.where(displaces, pushed, mixed)
     return np.where(gas > 0.0, after, start)
 
 
-def _worst_mark(table: CaseTable, oxygen: Floats) -> Integers:
-    """Number of marks crossed; not-a-number crosses all."""
-    sign = _SIGNS[table.hazard][:, np.newaxis]
-    inside = sign * oxygen[:, np.newaxis] >= sign * rounded(table.oxygen_marks)
-    crossed: Integers = (~inside).sum(axis=1)
-    return crossed
+def some_rows(run: Course, rows: Integers) -> Course:
+    """The course of some rows alone."""
+    return Course(run.times[rows], run.ends[rows], run.steady[rows], run.rates[rows])
 
 
-def _times_to_marks(table: CaseTable, runs: Course, start: Floats, mark: Integers) -> Floats:
+def _means(table: CaseTable, runs: Course) -> Floats:
+    """Highest means of 15 min and of 8 h, for the hazards that have such limits."""
+    means = np.full((table.size, 2), np.nan)
+    rows = np.flatnonzero(HAS_MEANS[table.hazard])
+    if rows.size:
+        run = some_rows(runs, rows)
+        for place, measure in enumerate((MEAN_15MIN, MEAN_8H)):
+            means[rows, place] = highest_mean(run, WINDOWS[measure])
+    return means
+
+
+def _crossed(table: CaseTable, measured: Floats, oxygen: Floats) -> Mask:
+    """Marks that each case is beyond; not-a-number is beyond all."""
+    sign = SIGN[table.hazard][:, np.newaxis]
+    there = np.where(np.isfinite(table.marks), table.marks, 0.0)
+    limits = rounded(oxygen_from_fraction(sign * there))
+    by_oxygen = sign * oxygen[:, np.newaxis] >= sign * limits
+    value, mark = rounded(measured), table.marks
+    by_gas = np.where(REACHED[table.hazard], value < mark, value <= mark)
+    inside = np.where(ABOUT_OXYGEN[table.hazard][:, np.newaxis], by_oxygen, by_gas)
+    return ~inside
+
+
+def _times_to_marks(table: CaseTable, runs: Course, start: Floats, crossed: Mask) -> Floats:
+    """Time to each mark that is crossed.
+
+    A mean comes to its limit some time after the fraction has passed it: that earlier moment is
+    told, the cautious side.
+    """
     times = []
     for place in range(3):
-        level = table.marks[:, place]
+        level = np.minimum(table.marks[:, place], _BEYOND_ALL)
         reached = np.where(start >= level, 0.0, runs.first_time_above(level))
-        times.append(np.where(mark > place, reached, np.nan))
+        times.append(np.where(crossed[:, place], reached, np.nan))
     return rounded(np.stack(times, axis=1))
+
+
+def _of_first(table: CaseTable, measured: Floats) -> Floats:
+    """The number that the first mark there is of each case is set against."""
+    place = np.argmax(np.isfinite(table.marks), axis=1)
+    return np.take_along_axis(measured, place[:, np.newaxis], axis=1)[:, 0]
 
 
 def _restore(table: CaseTable, level: Floats) -> Floats:
     factor = table.air.mixing_factor[AIRFLOWS.index(AS_MEASURED), table.room]
     within = table.given.bases.restore[table.room]
-    counted = flow_to_restore(level, table.marks[:, 0], volume=table.volume, within=within)
+    counted = flow_to_restore(level, table.first_mark, volume=table.volume, within=within)
     moved: Floats = counted * factor
     return moved
 
 
-def _required(table: CaseTable) -> Floats:
-    """Smallest flow of a fan that holds a room's boil-off, for every hazard; 0 without any.
+def _required(table: CaseTable, start: Floats) -> Floats:
+    """Smallest flow of a fan that holds each case that lasts inside its first mark.
 
     Where a room has both supply and exhaust, the larger is the one that is asked for, as if the
-    other were not there: the cautious side.
+    other were not there: the cautious side. Not-a-number for a case at once, and for one that
+    starts beyond its mark.
     """
-    boils = RELEASES[0].slug == BOIL_OFF and table.release == 0
-    rows = np.flatnonzero(boils & (table.airflow == AIRFLOWS.index(AS_MEASURED)))
-    blows = table.supply[rows] >= table.exhaust[rows]
-    blows &= table.supply[rows] > 0.0
-    counted = np.zeros(rows.size)
-    for chosen, smallest in (
-        (blows, smallest_supply_to_hold_course),
-        (~blows, smallest_exhaust_to_hold_course),
-    ):
+    required = np.full(table.size, np.nan)
+    rows = np.flatnonzero((table.measured == np.arange(table.size)) & ~table.at_once)
+    measured_on = table.measured_on[rows]
+    place = np.argmax(np.isfinite(table.marks[rows]), axis=1)
+    on = np.take_along_axis(measured_on, place[:, np.newaxis], axis=1)[:, 0]
+    supply, exhaust = table.supply[rows, 0], table.exhaust[rows, 0]
+    blows = (supply >= exhaust) & (supply > 0.0)
+    for by_supply in (True, False):
+        some = rows[blows == by_supply]
+        if some.size:
+            required[some] = _smallest(table, some, start[some], by_supply=by_supply)
+    for window in WINDOWS:
+        for by_supply in (True, False):
+            some = rows[(on == window) & (blows == by_supply)]
+            some = some[np.isfinite(required[some])]
+            if some.size:
+                required[some] = _smallest_for_mean(
+                    table, some, start[some], required[some], WINDOWS[window], by_supply=by_supply
+                )
+    moved = required * table.air.mixing_factor[AIRFLOWS.index(AS_MEASURED), table.room]
+    return rounded(moved[table.measured])
+
+
+def _smallest(table: CaseTable, rows: Integers, start: Floats, *, by_supply: bool) -> Floats:
+    """Smallest flow that keeps the fraction itself at the first mark or below."""
+    smallest = smallest_supply_to_hold_course if by_supply else smallest_exhaust_to_hold_course
+    return smallest(
+        table.first_mark[rows],
+        durations=table.durations[rows],
+        release=table.rates[rows],
+        dilution=table.rates_level[rows],
+        volume=table.volume[rows],
+        start=start,
+    )
+
+
+def _smallest_for_mean(
+    table: CaseTable,
+    rows: Integers,
+    start: Floats,
+    enough: Floats,
+    window: float,
+    *,
+    by_supply: bool,
+) -> Floats:
+    """Smallest flow that keeps the highest mean of a window at the first mark or below."""
+    limit = table.first_mark[rows]
+
+    def excess(chosen: Integers, flow: Floats) -> Floats:
         some = rows[chosen]
-        counted[chosen] = smallest(
-            table.marks[some, 0],
-            durations=table.durations[some],
+        blown = flow[:, np.newaxis] if by_supply else np.zeros((some.size, 1))
+        drawn = np.zeros((some.size, 1)) if by_supply else flow[:, np.newaxis]
+        run = course(
+            table.durations[some],
             release=table.rates[some],
-            dilution=table.rates_diluting[some],
+            dilution=table.rates_level[some],
+            supply=blown,
+            exhaust=drawn,
             volume=table.volume[some],
+            start=start[chosen],
         )
-    moved = counted * table.air.mixing_factor[AIRFLOWS.index(AS_MEASURED), table.room[rows]]
-    required = np.zeros(table.given.count)
-    np.maximum.at(required, table.room[rows], moved)
-    return required
+        above: Floats = highest_mean(run, window) - limit[chosen]
+        return above
+
+    return smallest_enough(excess, enough)
 
 
 def proven_to_hold(table: CaseTable, results: Results) -> Mask:
-    """Tell which rooms' boil-off stays inside every first mark with the air that is proven."""
+    """Tell which rooms' sustained releases stay inside every first mark with proven air."""
     proven = table.airflow == AIRFLOWS.index(PROVEN)
     holds = np.ones(table.given.count, dtype=np.bool_)
     holds[table.room[proven & (results.mark > 0)]] = False

@@ -12,15 +12,14 @@ from service.audit.air import AIRFLOWS, AS_MEASURED
 from service.audit.assessment import Assumed, Case, Ventilation
 from service.audit.assumptions import ASSUMPTIONS
 from service.audit.cases import CaseTable
-from service.audit.releases import BOIL_OFF, RELEASES
+from service.audit.releases import RELEASES
 from service.audit.rules.rule import Tables, assumed_record
 from service.audit.rules.words import number
 from service.audit.solve import solve
 from service.audit.told_cases import told_cases
-from service.physics.arrays import Floats, Integers, rounded, sum_by_group
+from service.physics.arrays import Floats, Integers, Mask, rounded, sum_by_group
 from service.physics.constants import SECONDS_PER_HOUR, ZERO_CELSIUS
 
-_BOIL_OFF: Final = [release.slug for release in RELEASES].index(BOIL_OFF)
 _AS_MEASURED: Final = AIRFLOWS.index(AS_MEASURED)
 _PERCENT: Final = 100.0
 _KILOPASCAL: Final = 1000.0  # [Pa]
@@ -42,7 +41,7 @@ class Told:
     def __post_init__(self) -> None:
         """Lay out once what every room is told from."""
         for name, value in (
-            ("_all_cases", told_cases(self.tables, solve(self.without), self.without.volume)),
+            ("_all_cases", told_cases(self.tables, self.without, solve(self.without))),
             ("_cases", _rows_by_room(self.tables)),
             ("_assumed", _by_room(self.tables.assumed.room, self.tables)),
             ("_ventilation", _ventilation(self.tables)),
@@ -66,7 +65,7 @@ class Told:
     def ventilation(self, row: int) -> Ventilation:
         """The air of a room."""
         found = self._ventilation
-        boils = bool(found["boils"][row])
+        decides = int(found["decides"][row])
         return Ventilation(
             outdoor_air_m3_h=float(found["moved"][row]),
             credited_m3_h=float(found["credited"][row]),
@@ -75,7 +74,7 @@ class Told:
             required_m3_h=float(found["required"][row]),
             shortfall_m3_h=float(found["shortfall"][row]),
             restore_m3_h=float(found["restore"][row]),
-            deciding_case=f"{BOIL_OFF}/{AS_MEASURED}" if boils else None,
+            deciding_case=None if decides < 0 else f"{RELEASES[decides].slug}/{AS_MEASURED}",
         )
 
     def figures(self, row: int) -> Mapping[str, float | str | None]:
@@ -127,20 +126,14 @@ def _rows_by_room(tables: Tables) -> tuple[Integers, ...]:
 
 
 def _ventilation(tables: Tables) -> Mapping[str, Floats]:
-    """The air of every room; what holds its boil-off needs no more."""
+    """The air of every room; what holds its sustained releases needs no more."""
     table, results = tables.cases.table, tables.cases.results
     count = table.given.count
-    boils = (table.release == _BOIL_OFF) & (table.airflow == _AS_MEASURED)
-    required, restore, holds, any_boils = (
-        np.zeros(count),
-        np.zeros(count),
-        np.ones(count),
-        np.zeros(count),
-    )
-    np.maximum.at(required, table.room[boils], results.required[boils])
+    lasting = table.sustained & (table.airflow == _AS_MEASURED)
+    required, restore, holds = np.zeros(count), np.zeros(count), np.ones(count)
+    np.maximum.at(required, table.room[lasting], results.required[lasting])
     np.maximum.at(restore, table.room[table.counts], results.restore[table.counts])
-    holds[table.room[boils & (results.mark > 0)]] = 0.0
-    any_boils[table.room[boils]] = 1.0
+    holds[table.room[lasting & (results.mark > 0)]] = 0.0
     moved, by_fans = table.air.moved[_AS_MEASURED], table.air.by_fans[_AS_MEASURED]
     credited = np.maximum(table.air.supply[_AS_MEASURED], table.air.exhaust[_AS_MEASURED])
     short = np.where(holds > 0.0, 0.0, np.maximum(required - by_fans, 0.0))
@@ -155,7 +148,18 @@ def _ventilation(tables: Tables) -> Mapping[str, Floats]:
         "restore": restore,
     }
     answered = {name: rounded(flow * SECONDS_PER_HOUR) for name, flow in per_hour.items()}
-    return {**answered, "boils": any_boils}
+    return {**answered, "decides": _most_demanding(tables, lasting).astype(np.float64)}
+
+
+def _most_demanding(tables: Tables, lasting: Mask) -> Integers:
+    """Row of RELEASES whose case asks for the room's required air; -1 where none lasts."""
+    table, required = tables.cases.table, tables.cases.results.required
+    rows = np.flatnonzero(lasting)
+    order = rows[np.lexsort((rows, -required[rows], table.room[rows]))]
+    found = np.full(table.given.count, -1)
+    room, first = np.unique(table.room[order], return_index=True)
+    found[room] = table.release[order[first]]
+    return found
 
 
 def _figures(tables: Tables) -> Mapping[str, Floats]:

@@ -6,44 +6,85 @@ from typing import Any, Final
 import numpy as np
 
 from service.audit.air import AIRFLOWS
-from service.audit.assessment import Case
-from service.audit.hazards import HAZARDS
-from service.audit.releases import LARGEST_VESSEL, RELEASES, Release
+from service.audit.assessment import Case, Mark
+from service.audit.cases import CaseTable
+from service.audit.hazards import (
+    ABOUT_OXYGEN,
+    FLAMMABLE,
+    HAZARDS,
+    OXYGEN_HIGH,
+    OXYGEN_LOW,
+    REFERENCE_LIMIT,
+    TOXIC,
+)
+from service.audit.marks import mark_percent, measure_name
+from service.audit.releases import RELEASES, Release
 from service.audit.rules.rule import Tables
 from service.audit.solve import Results
 from service.physics.arrays import Floats, rounded
 from service.physics.constants import SECONDS_PER_HOUR
 
 _AT_ONCE: Final = "It is let go at once, so that no fan can hold it."
+_BEYOND: Final = "It starts beyond the mark, from what evaporates before."
+_HAZARD_SLUGS: Final = [hazard.slug for hazard in HAZARDS]
+_OXYGEN_LOW: Final = _HAZARD_SLUGS.index(OXYGEN_LOW)
+_FLAMMABLE: Final = _HAZARD_SLUGS.index(FLAMMABLE)
+_OF_HAZARD: Final = {
+    OXYGEN_LOW: ("marks/oxygen-by-pressure",),
+    OXYGEN_HIGH: ("marks/oxygen-by-pressure",),
+    TOXIC: ("toxic/time-weighted-means",),
+    FLAMMABLE: ("flammable/le-chatelier", "layering/two-zone-bound"),
+}
 
 _Fields = Mapping[str, Any]
 
 
-def told_cases(tables: Tables, without: Results, volume: Floats) -> Sequence[Case]:
-    """Tell every case of a table; results without margins and their net volume are row by row."""
-    guards = tables.cases.guards
-    found = {**_numbers(tables.cases.results), "alarm_s": guards.alarm, "margin_s": guards.margin}
-    bare = {**_numbers(without), "net_volume_m3": rounded(volume)}
+def told_cases(tables: Tables, bare: CaseTable, without: Results) -> Sequence[Case]:
+    """Tell every case of a table; the cases without margins are row by row."""
+    table, results, guards = tables.cases.table, tables.cases.results, tables.cases.guards
+    found = {
+        **_numbers(table, results),
+        **_oxygen_times(table, results),
+        "alarm_s": guards.alarm,
+        "margin_s": guards.margin,
+    }
+    plain = {**_numbers(bare, without), "net_volume_m3": rounded(bare.volume)}
     return [
-        Case(**what, **numbers, without_margins=plain)
-        for what, numbers, plain in zip(
-            _described(tables), _by_case(found), _by_case(bare), strict=True
+        Case(**what, **numbers, marks=marks, without_margins=of_bare)
+        for what, numbers, marks, of_bare in zip(
+            _described(tables), _by_case(found), _marks(tables), _by_case(plain), strict=True
         )
     ]
 
 
-def _numbers(results: Results) -> dict[str, Floats]:
+def _numbers(table: CaseTable, results: Results) -> dict[str, Floats]:
+    about_gas = ~ABOUT_OXYGEN[table.hazard]
+    percent = 100.0 * np.where(about_gas, table.gas_by_level, np.nan)
+    flammable = table.hazard == _FLAMMABLE
     return {
         "oxygen_pct": rounded(100.0 * results.oxygen),
         "oxygen_kpa": rounded(results.oxygen_pressure / 1000.0),
+        "peak_pct": rounded(percent * results.level),
+        "mean_15min_pct": rounded(percent * results.means[:, 0]),
+        "mean_8h_pct": rounded(percent * results.means[:, 1]),
+        "lower_limit_pct": rounded(
+            np.where(flammable, 100.0 * results.level / REFERENCE_LIMIT, np.nan)
+        ),
         "at_s": results.at,
-        "to_deficient_s": results.to_marks[:, 0],
-        "to_danger_s": results.to_marks[:, 1],
-        "to_critical_s": results.to_marks[:, 2],
         "recovered_s": results.recovered,
         "gas_m3": results.gas,
         "required_m3_h": rounded(results.required * SECONDS_PER_HOUR),
         "restore_m3_h": rounded(results.restore * SECONDS_PER_HOUR),
+    }
+
+
+def _oxygen_times(table: CaseTable, results: Results) -> dict[str, Floats]:
+    falls = (table.hazard == _OXYGEN_LOW)[:, np.newaxis]
+    times = np.where(falls, results.to_marks, np.nan)
+    return {
+        "to_deficient_s": times[:, 0],
+        "to_danger_s": times[:, 1],
+        "to_critical_s": times[:, 2],
     }
 
 
@@ -56,6 +97,34 @@ def _by_case(numbers: Mapping[str, Floats]) -> list[_Fields]:
     return [dict(zip(numbers, row, strict=True)) for row in zip(*columns, strict=True)]
 
 
+def _marks(tables: Tables) -> list[tuple[Mark, ...]]:
+    table, results = tables.cases.table, tables.cases.results
+    limits, values = mark_percent(table, results)
+    return [
+        tuple(
+            Mark(
+                place=place + 1,
+                measure=measure_name(hazard, on[place]),
+                limit_pct=limit[place],
+                value_pct=value[place],
+                crossed=crossed[place],
+                at_s=None if times[place] != times[place] else times[place],
+            )
+            for place in range(3)
+            if limit[place] == limit[place]
+        )
+        for hazard, on, limit, value, crossed, times in zip(
+            table.hazard.tolist(),
+            table.measured_on.tolist(),
+            limits.tolist(),
+            values.tolist(),
+            results.crossed.tolist(),
+            results.to_marks.tolist(),
+            strict=True,
+        )
+    ]
+
+
 def _described(tables: Tables) -> list[_Fields]:
     table = tables.cases.table
     pushed = table.given.bases.by_displacement[table.room]
@@ -64,19 +133,22 @@ def _described(tables: Tables) -> list[_Fields]:
             "release": RELEASES[release].slug,
             "airflow": AIRFLOWS[airflow],
             "hazard": HAZARDS[hazard].slug,
+            "gas": HAZARDS[hazard].gas,
             "counts": counts,
             "fluids": fluids,
             "vessels": vessels,
-            "required_reason": _AT_ONCE if RELEASES[release].at_once else None,
+            "required_reason": _why_none(at_once=at_once, held=held),
             "mark": mark,
-            "method": _method(RELEASES[release], by_displacement=displaces),
+            "method": methods(RELEASES[release], hazard, at_once=at_once, pushes=pushes),
         }
-        for release, airflow, hazard, counts, mark, displaces, fluids, vessels in zip(
+        for release, airflow, hazard, counts, mark, at_once, held, pushes, fluids, vessels in zip(
             table.release.tolist(),
             table.airflow.tolist(),
             table.hazard.tolist(),
             table.counts.tolist(),
             tables.cases.results.mark.tolist(),
+            table.at_once.tolist(),
+            np.isfinite(tables.cases.results.required).tolist(),
             pushed.tolist(),
             tables.records.fluids,
             tables.records.vessels,
@@ -85,8 +157,19 @@ def _described(tables: Tables) -> list[_Fields]:
     ]
 
 
-def _method(release: Release, *, by_displacement: bool) -> tuple[str, ...]:
-    if release.slug != LARGEST_VESSEL:
-        return release.method
-    mixing = "mixing/displacement" if by_displacement else "mixing/while-displacing"
-    return (*release.method, mixing)
+def _why_none(*, at_once: bool, held: bool) -> str | None:
+    if at_once:
+        return _AT_ONCE
+    return None if held else _BEYOND
+
+
+def methods(release: Release, hazard: int, *, at_once: bool, pushes: bool) -> tuple[str, ...]:
+    """Methods that a case rests on, by their slugs."""
+    mixing = "mixing/displacement" if pushes else "mixing/while-displacing"
+    return (
+        "gas/ideal-at-site",
+        "ventilation/piecewise-constant",
+        *release.method,
+        *((mixing,) if at_once else ()),
+        *_OF_HAZARD[HAZARDS[hazard].slug],
+    )

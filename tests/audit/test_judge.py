@@ -338,7 +338,7 @@ def extremes(*many):
         levels = {}
         for case in found.cases:
             key = (case.release, case.airflow, case.hazard)
-            sign = 1.0 if case.hazard == "oxygen-low" else -1.0
+            sign = -1.0 if case.hazard == "oxygen-high" else 1.0
             levels[key] = min(levels.get(key, 100.0), sign * case.oxygen_pct)
         answers.append(levels)
     return answers

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from service.audit.cases import CaseTable
 from service.audit.inputs import Reference, RoomValues
-from service.audit.releases import NO_VESSEL
+from service.audit.sources import NO_VESSEL
 from service.physics.arrays import Integers
 
 UNKNOWN_PURGE_GAS = "unknown purge gas"

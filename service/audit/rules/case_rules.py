@@ -8,34 +8,78 @@ from typing import Any, Final
 
 import numpy as np
 
-from service.audit.air import AIRFLOWS, LOST
+from service.audit.air import AIRFLOWS, AS_MEASURED, BOOSTED, DESIGN, LOST
 from service.audit.assessment import SEVERITIES
-from service.audit.hazards import HAZARDS, OXYGEN_LOW
-from service.audit.releases import BOIL_OFF, RELEASES
+from service.audit.cases import CaseTable
+from service.audit.hazards import (
+    ABOUT_OXYGEN,
+    FLAMMABLE,
+    HAZARDS,
+    MEAN_8H,
+    MEAN_15MIN,
+    OXYGEN_HIGH,
+    OXYGEN_LOW,
+    PEAK,
+    REFERENCE_LIMIT,
+    TOXIC,
+)
+from service.audit.marks import mark_percent, measure_name
+from service.audit.releases import (
+    BOIL_OFF,
+    DETECTION,
+    FILLING,
+    NOBODY_INSIDE,
+    OVERFILL,
+    RELEASES,
+    SHUT_OFF,
+    SPILL,
+    VENTILATION,
+)
 from service.audit.rules.kinds import never
-from service.audit.rules.remedies import boil_off_remedy, largest_vessel_remedy
+from service.audit.rules.remedies import remedy
 from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables
 from service.audit.rules.words import (
     as_record,
+    at_least,
     duration_text,
     listed,
     number,
     oxygen_text,
 )
-from service.audit.safeguards import Safeguards
-from service.physics.arrays import Mask
+from service.audit.solve import Results
+from service.physics.arrays import Floats, Mask
 
 LOW_MARKS: Final = ("deficient", "danger", "critical")
 HIGH_MARKS: Final = ("enriched", "second", "third")
+ORDINALS: Final = ("first", "second", "third")
+
+_MEASURED: Final = {
+    PEAK: "a peak of",
+    MEAN_15MIN: "a mean over 15 min of",
+    MEAN_8H: "a mean over 8 h of",
+}
+_AIR: Final = {
+    AS_MEASURED: "with the ventilation as measured",
+    DESIGN: "with every fan at its design flow",
+    LOST: "without power for its fans",
+    BOOSTED: "with the ventilation boosted by the alarm",
+}
+_METHOD: Final = {
+    BOIL_OFF: "ventilation/piecewise-constant",
+    FILLING: "filling/transfer-loss",
+    OVERFILL: "filling/overfill",
+    SPILL: "dry-ice/share-per-hour",
+}
 
 
 @dataclass(frozen=True, slots=True)
 class CaseRule:
-    """A release that takes a room beyond a mark of a hazard."""
+    """A release that takes a room beyond a mark of a hazard; one a family, release and gas."""
 
     slug: str
     release: str
     hazard: str
+    gas: str | None
     method: str
     source: str
 
@@ -45,28 +89,24 @@ class CaseRule:
         return Subject.CASES
 
     @property
-    def gas(self) -> str | None:
-        """The gas judged."""
-        return HAZARDS[self._hazard].gas
-
-    @property
     def worse_is(self) -> Direction:
-        """Less oxygen is worse, or more of it."""
+        """Less oxygen is worse, or more of anything else."""
         return Direction.LOWER if self.hazard == OXYGEN_LOW else Direction.HIGHER
 
     @property
     def _hazard(self) -> int:
-        return [hazard.slug for hazard in HAZARDS].index(self.hazard)
+        return [(each.slug, each.gas) for each in HAZARDS].index((self.hazard, self.gas or ""))
 
     def judge(self, tables: Tables, at: np.datetime64) -> Judged:
-        """Broken where a case of the release is beyond its first mark."""
+        """Broken where a case of the release is beyond a mark."""
         table, results = tables.cases.table, tables.cases.results
         release = [release.slug for release in RELEASES].index(self.release)
         chosen = (table.release == release) & (table.hazard == self._hazard) & table.shown
+        value, limit = decisive(table, results)
         return Judged(
             broken=chosen & (results.mark > 0),
-            measure=100.0 * results.oxygen,
-            limit=100.0 * table.oxygen_marks[:, 0],
+            measure=value,
+            limit=limit,
             consequence=tables.cases.severity,
             turns_at=never(table.size),
         )
@@ -74,7 +114,6 @@ class CaseRule:
     def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
         """Say how far the worst case goes, and what would keep it inside."""
         row = rows[0]
-        remedy = boil_off_remedy if self.release == BOIL_OFF else largest_vessel_remedy
         return Said(
             statement=_statement(tables, row),
             remedy=remedy(tables, row),
@@ -85,44 +124,105 @@ class CaseRule:
         )
 
 
+def decisive(table: CaseTable, results: Results) -> tuple[Floats, Floats]:
+    """Value and limit of the worst mark crossed, else of the first there is; in percent.
+
+    Oxygen is always held against its first mark, so that its measure is one number however low it
+    falls.
+    """
+    limits, values = mark_percent(table, results)
+    first = np.argmax(np.isfinite(table.marks), axis=1)
+    crossed = np.where(results.mark > 0, results.mark - 1, first)
+    place = np.where(ABOUT_OXYGEN[table.hazard], 0, crossed)[:, np.newaxis]
+    value: Floats = np.take_along_axis(values, place, axis=1)[:, 0]
+    return value, np.take_along_axis(limits, place, axis=1)[:, 0]
+
+
 def _statement(tables: Tables, row: int) -> str:
+    hazard = HAZARDS[int(tables.cases.table.hazard[row])]
+    if hazard.slug in (OXYGEN_LOW, OXYGEN_HIGH):
+        effect = _oxygen_effect(tables, row)
+    elif hazard.slug == TOXIC:
+        effect = _toxic_effect(tables, row)
+    else:
+        effect = _flammable_effect(tables, row)
+    return f"{_event(tables, row)} would {effect}; {_times(tables, row)}{_caution(tables, row)}."
+
+
+def _oxygen_effect(tables: Tables, row: int) -> str:
     table, results = tables.cases.table, tables.cases.results
     low = HAZARDS[int(table.hazard[row])].slug == OXYGEN_LOW
-    place = int(results.mark[row]) - 1
     level = oxygen_text(100.0 * float(results.oxygen[row]), low=low)
     pressure = float(results.oxygen_pressure[row]) / 1000.0
-    mark = 100.0 * float(table.oxygen_marks[row, place])
-    name = (LOW_MARKS if low else HIGH_MARKS)[place]
+    name = (LOW_MARKS if low else HIGH_MARKS)[int(results.mark[row]) - 1]
+    limit = _limit(tables, row)
     return (
-        f"{_event(tables, row)} would bring oxygen {'down' if low else 'up'} to {level} "
-        f"({pressure:.1f} kPa), {'below' if low else 'above'} the {name} mark of {mark:.4g} %; "
-        f"{_times(tables, row)}{_caution(tables, row)}."
+        f"bring oxygen {'down' if low else 'up'} to {level} "
+        f"({pressure:.1f} kPa), {'below' if low else 'above'} the {name} mark of {limit:.4g} %"
     )
+
+
+def _toxic_effect(tables: Tables, row: int) -> str:
+    table, results = tables.cases.table, tables.cases.results
+    gas = HAZARDS[int(table.hazard[row])].gas.replace("-", " ")
+    percent = 100.0 * float(table.gas_by_level[row])
+    peak, quarter, shift = (
+        percent * float(value) for value in (results.level[row], *results.means[row])
+    )
+    measure = int(table.measured_on[row, int(results.mark[row]) - 1])
+    limit = _limit(tables, row)
+    return (
+        f"bring {gas} to a peak of {at_least(peak)} % (highest mean of 15 min {at_least(quarter)} "
+        f"%, of 8 h {at_least(shift)} %), beyond the {ORDINALS[int(results.mark[row]) - 1]} mark, "
+        f"{_MEASURED[measure]} {limit:.4g} %"
+    )
+
+
+def _flammable_effect(tables: Tables, row: int) -> str:
+    table, results = tables.cases.table, tables.cases.results
+    share = 100.0 * float(results.level[row]) / REFERENCE_LIMIT
+    percent = 100.0 * float(table.gas_by_level[row] * results.level[row])
+    return (
+        f"bring flammable gas to {at_least(share)} % of its lower flammable limit "
+        f"({at_least(percent)} % by volume, where it gathers), beyond the "
+        f"{ORDINALS[int(results.mark[row]) - 1]} mark of {_limit(tables, row):.4g} % of that limit"
+    )
+
+
+def _limit(tables: Tables, row: int) -> float:
+    """Limit of the worst mark crossed, in percent."""
+    limits, _ = mark_percent(tables.cases.table, tables.cases.results)
+    return float(limits[row, int(tables.cases.results.mark[row]) - 1])
 
 
 def _event(tables: Tables, row: int) -> str:
     table = tables.cases.table
     vessels = [record.tag for record in tables.records.vessels[row]]
     source, gas = listed(vessels or ["the purge"]), listed(tables.records.fluids[row])
-    if RELEASES[int(table.release[row])].slug != BOIL_OFF:
-        return f"All {gas} of {source} let go at once"
-    lost = AIRFLOWS[int(table.airflow[row])] == LOST
-    air = "without power for its fans" if lost else "with the ventilation as measured"
-    return f"Normal evaporation and use of {gas} from {source}, {air},"
+    air = _AIR[AIRFLOWS[int(table.airflow[row])]]
+    release = RELEASES[int(table.release[row])].slug
+    if release == BOIL_OFF:
+        return f"Normal evaporation and use of {gas} from {source}, {air},"
+    if release == FILLING:
+        return f"Filling {source} with {gas}, one after another, {air},"
+    if release == OVERFILL:
+        which = source if len(vessels) == 1 else f"any one of {source}"
+        return f"Automatic filling of {which} with {gas} that does not stop, {air},"
+    if release == SPILL:
+        return f"{source} emptied on the floor, {air},"
+    return f"All {gas} of {source} let go at once"
 
 
 def _times(tables: Tables, row: int) -> str:
     """When the first mark is passed, and when the room is back inside it."""
     table, results = tables.cases.table, tables.cases.results
-    passed, back = float(results.to_marks[row, 0]), float(results.recovered[row])
-    first = 100.0 * float(table.oxygen_marks[row, 0])
-    start = (
-        "" if table.at_once[row] else f"it would pass {first:.4g} % after {duration_text(passed)} "
-    )
+    place = int(np.argmax(results.crossed[row]))
+    passed, back = float(results.to_marks[row, place]), float(results.recovered[row])
+    start = "" if table.at_once[row] else f"it would pass the mark after {duration_text(passed)} "
     if np.isnan(back):
         end = f"and would not be back within {duration_text(float(results.course.times[row, -1]))}"
     else:
-        end = f"and would be back at {first:.4g} % after {duration_text(back)}"
+        end = f"and would be back inside the first mark after {duration_text(back)}"
     return f"it {end.removeprefix('and ')}" if table.at_once[row] else f"{start}{end}"
 
 
@@ -138,31 +238,76 @@ def case_evidence(tables: Tables, row: int) -> dict[str, Any]:
     """The numbers and records of a case."""
     table, results, guards = tables.cases.table, tables.cases.results, tables.cases.guards
     severity = int(tables.cases.severity[row])
-    return {
+    hazard = HAZARDS[int(table.hazard[row])]
+    percent = 100.0 * float(table.gas_by_level[row])
+    told = {
         "release": RELEASES[int(table.release[row])].slug,
         "airflow": AIRFLOWS[int(table.airflow[row])],
-        "hazard": HAZARDS[int(table.hazard[row])].slug,
+        "hazard": hazard.slug,
+        "gas": hazard.gas,
         "counts": bool(table.counts[row]),
         "severity": SEVERITIES[severity] if severity >= 0 else None,
         "mark": int(results.mark[row]),
         "oxygen_pct": number(100.0 * float(results.oxygen[row])),
         "oxygen_kpa": number(float(results.oxygen_pressure[row]) / 1000.0),
-        "marks_pct": [number(100.0 * float(mark)) for mark in table.oxygen_marks[row]],
         "gas_m3": number(float(results.gas[row])),
-        "net_volume_m3": number(float(table.volume[row])),
-        "to_marks_s": [number(float(seconds)) for seconds in results.to_marks[row]],
+        "mixes_in_m3": number(float(table.volume[row])),
+        "marks": _marks(tables, row),
         "recovered_s": number(float(results.recovered[row])),
         "alarm_s": number(float(guards.alarm[row])),
         "margin_s": number(float(guards.margin[row])),
-        "safeguards": _held(guards, row),
+        "safeguards": _held(tables, row),
         "records": [as_record(record) for record in tables.records.vessels[row]],
     }
+    if hazard.slug in (TOXIC, FLAMMABLE):
+        told["peak_pct"] = number(percent * float(results.level[row]))
+        told["mean_15min_pct"] = number(percent * float(results.means[row, 0]))
+        told["mean_8h_pct"] = number(percent * float(results.means[row, 1]))
+    return told
 
 
-def _held(guards: Safeguards, row: int) -> dict[str, bool]:
+def _marks(tables: Tables, row: int) -> list[dict[str, Any]]:
+    table, results = tables.cases.table, tables.cases.results
+    limits, values = mark_percent(table, results)
+    return [
+        {
+            "measure": measure_name(int(table.hazard[row]), int(table.measured_on[row, place])),
+            "limit_pct": number(float(limits[row, place])),
+            "value_pct": number(float(values[row, place])),
+            "at_s": number(float(results.to_marks[row, place])),
+        }
+        for place in range(3)
+        if np.isfinite(limits[row, place])
+    ]
+
+
+def _held(tables: Tables, row: int) -> dict[str, bool]:
+    """The safeguards that count for the release, and whether each holds."""
+    guards = tables.cases.guards
     held: dict[str, Mask] = {
-        "detection": guards.detection,
-        "ventilation": guards.ventilation,
-        "nobody_inside": guards.nobody_inside,
+        DETECTION: guards.detection,
+        VENTILATION: guards.ventilation,
+        SHUT_OFF: guards.shut_off,
+        NOBODY_INSIDE: guards.nobody_inside,
     }
-    return {name: bool(mask[row]) for name, mask in held.items()}
+    release = RELEASES[int(tables.cases.table.release[row])]
+    return {
+        name: bool(held[name][row])
+        for name in release.safeguards
+        if name != NOBODY_INSIDE or bool(guards.nobody_counts[row])
+    }
+
+
+def case_rules(family: str, hazard: str, gas: str, source: str) -> tuple[CaseRule, ...]:
+    """One rule for each release that can take a room beyond a mark of a hazard."""
+    return tuple(
+        CaseRule(
+            slug=f"{family}/{release.slug}",
+            release=release.slug,
+            hazard=hazard,
+            gas=gas,
+            method=_METHOD.get(release.slug, "mixing/displacement"),
+            source=source,
+        )
+        for release in RELEASES
+    )

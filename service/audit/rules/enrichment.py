@@ -3,27 +3,17 @@
 from typing import Final
 
 from service.audit.hazards import OXYGEN_HIGH
-from service.audit.releases import BOIL_OFF, LARGEST_VESSEL
-from service.audit.rules.case_rules import CaseRule
+from service.audit.releases import SPILL
+from service.audit.rules.case_rules import case_rules
 
 _SOURCE: Final = (
     "29 CFR 1910.146 and European gas-industry guidance (from memory); 25 and 30 %: common "
     "practice, no source"
 )
 
-RULES: Final = (
-    CaseRule(
-        slug="enrichment/largest-vessel",
-        release=LARGEST_VESSEL,
-        hazard=OXYGEN_HIGH,
-        method="mixing/displacement",
-        source=_SOURCE,
-    ),
-    CaseRule(
-        slug="enrichment/boil-off",
-        release=BOIL_OFF,
-        hazard=OXYGEN_HIGH,
-        method="ventilation/piecewise-constant",
-        source=_SOURCE,
-    ),
+# No ice is richer in oxygen than air.
+RULES: Final = tuple(
+    rule
+    for rule in case_rules("enrichment", OXYGEN_HIGH, "oxygen", _SOURCE)
+    if rule.release != SPILL
 )

@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import math
 
-from service.audit.air import AIRFLOWS, AS_MEASURED
+from service.audit.air import AIRFLOWS, LOST
 from service.audit.columns import ROOM_KINDS
+from service.audit.hazards import CLEAN, HAZARDS
+from service.audit.releases import ALL_VESSELS, OVERFILL, RELEASES, SPILL
 from service.audit.rules.rule import Tables
 from service.audit.rules.words import at_least, at_most, listed
 from service.physics.constants import SECONDS_PER_HOUR
@@ -14,13 +16,23 @@ _LITRES = 1000.0  # in a cubic metre
 _CARRIED = ("lift", "vehicle")
 
 
-def boil_off_remedy(tables: Tables, row: int) -> str:
+def remedy(tables: Tables, row: int) -> str:
+    """What would keep a case inside its first mark."""
+    release = RELEASES[int(tables.cases.table.release[row])]
+    if release.sustained:
+        return _sustained_remedy(tables, row)
+    if release.slug == OVERFILL:
+        return _overfill_remedy(tables, row)
+    return _spill_remedy(tables, row) if release.slug == SPILL else _at_once_remedy(tables, row)
+
+
+def _sustained_remedy(tables: Tables, row: int) -> str:
     """More outdoor air, in figures; or less gas."""
     table = tables.cases.table
     room, airflow = int(table.room[row]), int(table.airflow[row])
     required = float(tables.cases.results.required[row]) * SECONDS_PER_HOUR
     moved = float(table.air.by_fans[airflow, room]) * SECONDS_PER_HOUR
-    if AIRFLOWS[airflow] == AS_MEASURED:
+    if AIRFLOWS[airflow] != LOST:
         missing = at_least(max(required - moved, 0.0))
         return (
             f"Bring {missing} m3/h more outdoor air by fans ({at_least(required)} m3/h in all), "
@@ -32,7 +44,32 @@ def boil_off_remedy(tables: Tables, row: int) -> str:
     )
 
 
-def largest_vessel_remedy(tables: Tables, row: int) -> str:
+def _overfill_remedy(tables: Tables, row: int) -> str:
+    """A shut-off that does not depend on what failed; or a smaller flow."""
+    table = tables.cases.table
+    flow = _litres_a_minute(tables, row) * _steady_share(tables, row)
+    held = bool(table.stock.shut_off_holds[_vessels(tables, row)].all())
+    if held:
+        first = "Let the independent shut-off close sooner"
+    else:
+        first = "Fit an independent high level that closes the supply, and test it"
+    smaller = "" if flow <= 0.0 else f", or restrict the filling to {at_most(flow)} L/min"
+    return f"{first}{smaller}, or fill in a room with more outdoor air."
+
+
+def _spill_remedy(tables: Tables, row: int) -> str:
+    """Less ice in a box, or a box that cannot tip."""
+    table = tables.cases.table
+    vessel = _vessels(tables, row)[0]
+    share = max(_steady_share(tables, row), _still_share(tables, row))
+    allowed = at_most(share * float(table.stock.held_mass[vessel]))
+    return (
+        f"Keep at most {allowed} kg in a box that can be emptied on the floor, or fix the box so "
+        "that it cannot tip, with a detector of its own gas."
+    )
+
+
+def _at_once_remedy(tables: Tables, row: int) -> str:
     """Fewer litres, another room, a warning outside the door; more air cannot hold it."""
     allowed = _allowed_amount(tables, row)
     where = ROOM_KINDS[int(tables.cases.table.given.rooms.kind[tables.cases.table.room[row]])]
@@ -41,10 +78,46 @@ def largest_vessel_remedy(tables: Tables, row: int) -> str:
             f"Let nobody ride with it and record that as unaccompanied; else {allowed} may be "
             "carried."
         )
+    everything = RELEASES[int(tables.cases.table.release[row])].slug == ALL_VESSELS
+    place = "in all" if everything else "in one vessel or manifold group"
+    gas = HAZARDS[int(tables.cases.table.hazard[row])].gas.replace("-", " ")
     return (
-        f"{allowed[0].upper()}{allowed[1:]} may stand here in one vessel or manifold group; keep "
-        "more in a larger room, with oxygen detection that warns outside every entrance."
+        f"{allowed[0].upper()}{allowed[1:]} may stand here {place}; keep more in a larger room, "
+        f"with detection of {gas} that warns outside every entrance."
     )
+
+
+def _vessels(tables: Tables, row: int) -> list[int]:
+    sources = tables.cases.table.sources
+    return [int(sources.vessel[source]) for source in tables.records.sources[row]]
+
+
+def _litres_a_minute(tables: Tables, row: int) -> float:
+    given = tables.cases.table.given
+    vessel = _vessels(tables, row)[0]
+    recorded = float(given.vessels.fill_flow[vessel])
+    flow = float(given.bases.fill_flow[given.vessels.room[vessel]])
+    return (flow if math.isnan(recorded) else recorded) * _LITRES * 60.0
+
+
+def _steady_share(tables: Tables, row: int) -> float:
+    """Share of a rate that the air of the case holds inside the first mark however long it lasts.
+
+    What has evaporated before takes its part of the mark.
+    """
+    table = tables.cases.table
+    air = max(float(table.supply[row, 0]), float(table.exhaust[row, 0]))
+    left = float(table.first_mark[row]) - _start(tables, row)
+    rate = float(table.rates_level[row, 0])
+    return max(left, 0.0) * air / rate if rate > 0.0 else 0.0
+
+
+def _still_share(tables: Tables, row: int) -> float:
+    """Share of all the gas that the room holds inside the first mark without any air."""
+    table = tables.cases.table
+    gas = float((table.rates_level[row] * table.durations[row]).sum())
+    left = float(table.first_mark[row]) - _start(tables, row)
+    return max(left, 0.0) * float(table.volume[row]) / gas if gas > 0.0 else 0.0
 
 
 def _allowed_amount(tables: Tables, row: int) -> str:
@@ -54,7 +127,7 @@ def _allowed_amount(tables: Tables, row: int) -> str:
     gas = listed(tables.records.fluids[row])
     if share <= 0.0:
         return f"no {gas}"
-    vessels = [int(table.sources.vessel[source]) for source in tables.records.sources[row]]
+    vessels = _vessels(tables, row)
     mass = [float(table.stock.held_mass[vessel]) for vessel in vessels]
     given = table.given
     if any(math.isnan(float(given.vessels.capacity_volume[vessel])) for vessel in vessels):
@@ -70,8 +143,8 @@ def _allowed_share(tables: Tables, row: int) -> float:
     """Share of what is let go that would reach the first mark from where the case starts."""
     table = tables.cases.table
     gas, volume = float(table.instant[row]), float(table.volume[row])
-    strength = float(table.instant_diluting[row]) / gas if gas > 0.0 else 0.0
-    limit, start = float(table.marks[row, 0]), _start(tables, row)
+    strength = float(table.instant_level[row]) / gas if gas > 0.0 else 0.0
+    limit, start = float(table.first_mark[row]), _start(tables, row)
     if start >= limit or strength <= limit:
         return 0.0
     if table.given.bases.by_displacement[table.room[row]]:
@@ -82,5 +155,6 @@ def _allowed_share(tables: Tables, row: int) -> float:
 
 
 def _start(tables: Tables, row: int) -> float:
-    base = int(tables.cases.table.starts_from[row])
-    return float(tables.cases.results.level[base]) if base >= 0 else 0.0
+    table = tables.cases.table
+    base = int(table.starts_from[row])
+    return float(tables.cases.results.level[base] if base >= 0 else CLEAN[table.hazard[row]])

@@ -1,0 +1,26 @@
+"""Rules on gases that poison before they suffocate."""
+
+from typing import Final
+
+from service.audit.columns import CARBON_DIOXIDE, NITROUS_OXIDE
+from service.audit.hazards import TOXIC
+from service.audit.releases import SPILL
+from service.audit.rules.case_rules import case_rules
+
+_CARBON_DIOXIDE: Final = (
+    "OSHA PEL and EH40 WEL for 8 h, EH40 WEL or NIOSH STEL for 15 min, NIOSH IDLH (from memory)"
+)
+_NITROUS_OXIDE: Final = (
+    "NIOSH REL or EH40 WEL for 8 h, three times the WEL for 15 min (from memory); accidents: "
+    "common practice, no source"
+)
+
+RULES: Final = (
+    *case_rules("toxic", TOXIC, CARBON_DIOXIDE, _CARBON_DIOXIDE),
+    # It is kept as a liquid and as a gas, never as ice in a box.
+    *(
+        rule
+        for rule in case_rules("toxic", TOXIC, NITROUS_OXIDE, _NITROUS_OXIDE)
+        if rule.release != SPILL
+    ),
+)
