@@ -75,7 +75,7 @@ def test_evaporation_without_margins_has_no_factor():
 def test_a_cylinder_gives_off_nothing_by_itself():
     cylinder = replace(a_vessel(kind="cylinder"), measured_evaporation=None)
     releases = {case.release for case in assessed(a_room(vessels=(cylinder,)))[0].cases}
-    assert releases == {"largest-vessel"}
+    assert releases == {"largest-vessel", "all-vessels"}
 
 
 def test_use_and_purge_gas_add_to_it():
@@ -153,13 +153,12 @@ def test_the_flow_that_holds_the_first_mark_is_the_printed_multiple_of_the_relea
     arrangement, flow
 ):
     """At 19.5 %: 13.448 R for supply, 14.448 R for exhaust (methods D); mixing factor 3."""
-    vessel = a_large(measured_evaporation=24 * PER_DAY)
+    vessel = a_large(measured_evaporation=24 * PER_DAY, vent_to="room")
     room = a_room(50, vessels=(vessel,), units=(a_unit(5, arrangement=arrangement),), kind="pit")
     case = case_of(room, "boil-off")
     assert case.required_m3_h == pytest.approx(3 * flow * NITROGEN_GAS, rel=1e-4)
-    assert assessed(room)[0].ventilation.shortfall_m3_h == pytest.approx(
-        case.required_m3_h - 5, rel=1e-9
-    )
+    most = max(case.required_m3_h, case_of(room, "filling").required_m3_h)
+    assert assessed(room)[0].ventilation.shortfall_m3_h == pytest.approx(most - 5, rel=1e-9)
 
 
 @pytest.mark.parametrize("filled_by", ["exchanged", "attended"])

@@ -130,8 +130,13 @@ def test_manifolds_of_two_rooms_are_not_one():
         a_room(70, tag=tag, vessels=(still(10, manifold="1"), still(1, manifold="1", tag="small")))
         for tag in ("P", "Q")
     ]
-    gas = [case.gas_m3 for each in assessed(*rooms) for case in each.cases]
-    assert gas == [pytest.approx(11 * NITROGEN_GAS, rel=1e-9)] * 4
+    gas = [
+        case.gas_m3
+        for each in assessed(*rooms)
+        for case in each.cases
+        if case.release == "largest-vessel"
+    ]
+    assert gas == [pytest.approx(11 * NITROGEN_GAS, rel=1e-9)] * 6
 
 
 def test_largest_means_the_most_gas_not_the_most_litres():
@@ -141,7 +146,7 @@ def test_largest_means_the_most_gas_not_the_most_litres():
         for case in assessed(
             a_room(500, vessels=(still(100), still(99, HELIUM), still(90, ARGON)))
         )[0].cases
-        if case.airflow == "as-measured"
+        if (case.release, case.airflow) == ("largest-vessel", "as-measured")
     ]
     assert [case.fluids for case in cases] == [("argon",), ("helium",), ("nitrogen",)]
 
@@ -160,7 +165,7 @@ def test_cylinders_magnets_and_ice_have_no_filling_loss(kind):
     )
     room = a_room(70, vessels=(vessel,))
     gas = [case.gas_m3 for case in assessed(room)[0].cases if case.release == "largest-vessel"]
-    expected = [] if kind == "dry-ice-box" else [pytest.approx(10 * NITROGEN_GAS, rel=1e-9)] * 2
+    expected = [] if kind == "dry-ice-box" else [pytest.approx(10 * NITROGEN_GAS, rel=1e-9)] * 3
     assert gas == expected
 
 
@@ -256,12 +261,6 @@ def test_the_release_in_lost_air_is_shown_but_does_not_count():
     room = a_room(70, vessels=(still(20),), units=(a_unit(600),))
     assert case_of(room).counts
     assert not case_of(room, airflow="lost").counts
-
-
-def test_methane_is_judged_for_oxygen_and_said_to_need_more():
-    found = assessed(a_room(70, vessels=(still(20, METHANE),)))[0]
-    assert "records/hazard-not-computed" in [each.rule for each in found.judgements]
-    assert {case.hazard for case in found.cases} == {"oxygen-low"}
 
 
 def test_without_margins_each_case_stands_beside_the_same_fluid():
