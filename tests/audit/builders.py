@@ -12,6 +12,7 @@ from service.audit.bases import SHIPPED_SOURCES, SHIPPED_VALUES
 from service.audit.findings import Finding, reconcile, standing
 from service.audit.inputs import (
     BasisValues,
+    ControlValues,
     DetectorValues,
     FluidValues,
     Reference,
@@ -135,6 +136,18 @@ def a_detector(**fields: Any) -> DetectorValues:
     }
     tag = fields.pop("tag", "D-1")
     return DetectorValues(record=a_reference("detector", tag), **{**defaults, **fields})
+
+
+def a_control(kind: str = "signage", **fields: Any) -> ControlValues:
+    """A control of a room, checked and in date; of a vessel by ``vessel_id``."""
+    defaults: dict[str, Any] = {
+        "reference": "drawing A-14",
+        "area": 2.0 if kind == "bund" else None,
+        "check_due": LATER,
+        "checked": True,
+    }
+    tag = fields.pop("tag", f"C-{kind}")
+    return ControlValues(record=a_reference("control", tag), kind=kind, **{**defaults, **fields})
 
 
 def a_room(volume_m3: float = 70.0, **fields: Any) -> RoomValues:
