@@ -17,20 +17,12 @@ from service.store.live import list_records
 from service.store.records import Record
 from service.store.scope import EVERYTHING
 from service.store.session import WriteSession
+from service.store.tables.registry import KINDS
 
 FILE: Final = "estate.json"
-_PARENTS_FIRST: Final = (
-    "site",
-    "basis",
-    "fluid",
-    "room",
-    "ventilation-unit",
-    "vessel",
-    "detector",
-)
 _AT_ONCE: Final = 500
-_DAYS_AGO: Final = re.compile(r"today-(\d+)")
-_MOMENTS: Final = frozenset({"counted_at"})
+_DAYS_AWAY: Final = re.compile(r"today([+-])(\d+)")
+_MOMENTS: Final = frozenset({"counted_at", "silenced_since", "from", "to"})
 
 
 def load_demo(session: WriteSession) -> int:
@@ -55,9 +47,9 @@ def remove_demo(session: WriteSession) -> int:
         # What the site is judged by goes last: it lets go of its own basis first.
         changes = [
             RecordChange(REMOVE, kind, record.id, {})
-            for kind in reversed(_PARENTS_FIRST[1:])
+            for kind in KINDS
+            if kind not in ("site", "basis")
             for record in _all(session, kind, {"site_id": site.id})
-            if kind != "basis"
         ]
         bases = [
             RecordChange(REMOVE, "basis", basis.id, {})
@@ -80,14 +72,21 @@ def _of_site(site: Mapping[str, Any]) -> Iterator[Mapping[str, Any]]:
 
 
 def _dated(fields: Mapping[str, Any], moment: datetime) -> dict[str, Any]:
-    """Replace days before the present one by dates, so that the estate does not grow stale."""
-    dated = dict(fields)
-    for name, value in fields.items():
-        ago = _DAYS_AGO.fullmatch(value) if isinstance(value, str) else None
-        if ago is not None:
-            then = moment - timedelta(days=int(ago[1]))
-            dated[name] = text_of(then) if name in _MOMENTS else then.date().isoformat()
-    return dated
+    """Replace days before or after the present one by dates: the estate does not grow stale."""
+    return {name: _dated_value(name, value, moment) for name, value in fields.items()}
+
+
+def _dated_value(name: str, value: Any, moment: datetime) -> Any:
+    if isinstance(value, Mapping):
+        return _dated(value, moment)
+    if isinstance(value, list):
+        return [_dated_value(name, each, moment) for each in value]
+    told = _DAYS_AWAY.fullmatch(value) if isinstance(value, str) else None
+    if told is None:
+        return value
+    days = timedelta(days=int(told[2]))
+    then = moment - days if told[1] == "-" else moment + days
+    return text_of(then) if name in _MOMENTS else then.date().isoformat()
 
 
 def _all(session: WriteSession, kind: str, filters: Mapping[str, Any]) -> list[Record]:
