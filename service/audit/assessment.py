@@ -35,6 +35,7 @@ class Mark:
 
     place: int  # 1 first, 2 second, 3 third
     measure: str  # oxygen, peak, mean-15min, mean-8h, lower-limit
+    limit: str  # the value of the basis that sets it
     limit_pct: float
     value_pct: float
     crossed: bool

@@ -138,7 +138,9 @@ def is_filled_in_room(given: Columns) -> Mask:
     vessels = given.vessels
     recorded = is_one_of(vessels.filled_by, (_AUTOMATIC, _ATTENDED))
     magnet: Mask = (vessels.kind == MAGNET) & recorded
-    filled: Mask = magnet | (is_filled_by_transfer(vessels.kind) & (vessels.filled_by != _EXCHANGED))
+    filled: Mask = magnet | (
+        is_filled_by_transfer(vessels.kind) & (vessels.filled_by != _EXCHANGED)
+    )
     return filled
 
 

@@ -17,7 +17,7 @@ from service.audit.hazards import (
     REFERENCE_LIMIT,
     TOXIC,
 )
-from service.audit.marks import mark_percent, measure_name
+from service.audit.marks import limit_name, mark_percent, measure_name
 from service.audit.releases import RELEASES, Release
 from service.audit.rules.rule import Tables
 from service.audit.solve import Results
@@ -105,6 +105,7 @@ def _marks(tables: Tables) -> list[tuple[Mark, ...]]:
             Mark(
                 place=place + 1,
                 measure=measure_name(hazard, on[place]),
+                limit=limit_name(hazard, place, sustained=sustained),
                 limit_pct=limit[place],
                 value_pct=value[place],
                 crossed=crossed[place],
@@ -113,8 +114,9 @@ def _marks(tables: Tables) -> list[tuple[Mark, ...]]:
             for place in range(3)
             if limit[place] == limit[place]
         )
-        for hazard, on, limit, value, crossed, times in zip(
+        for hazard, sustained, on, limit, value, crossed, times in zip(
             table.hazard.tolist(),
+            table.sustained.tolist(),
             table.measured_on.tolist(),
             limits.tolist(),
             values.tolist(),

@@ -40,14 +40,21 @@ _WORST_FIELDS: Final = (
     "release",
     "airflow",
     "hazard",
+    "gas",
     "oxygen_pct",
     "oxygen_kpa",
+    "peak_pct",
+    "mean_15min_pct",
+    "mean_8h_pct",
+    "lower_limit_pct",
     "at_s",
     "to_deficient_s",
     "to_danger_s",
     "to_critical_s",
     "recovered_s",
+    "mark",
 )
+_ABOUT_GAS: Final = ("toxic", "flammable")
 
 
 def rendered(value: Any) -> bytes:
@@ -86,6 +93,7 @@ def status_bytes(assessed: Assessed, position: int) -> bytes:
         "standing": assessed.standing,
         "worst_oxygen_pct": assessed.worst_oxygen_pct,
         "worst": _worst(assessment),
+        "peaks": _peaks(assessment),
         "highest_oxygen": _highest_oxygen(assessment),
         "ventilation": None if assessment.ventilation is None else _fields(assessment.ventilation),
         "findings": counts(assessed.findings),
@@ -113,6 +121,49 @@ def _brief(case: Case) -> dict[str, Any]:
 def _highest_oxygen(assessment: Assessment) -> dict[str, Any] | None:
     rich = [case for case in assessment.cases if case.hazard == "oxygen-high" and case.counts]
     return _brief(max(rich, key=lambda case: case.oxygen_pct)) if rich else None
+
+
+def _peaks(assessment: Assessment) -> list[dict[str, Any]]:
+    """Tell the worst case that counts of each toxic gas, and of what can burn."""
+    worst: dict[str, Case] = {}
+    for case in assessment.cases:
+        if case.counts and case.hazard in _ABOUT_GAS:
+            first = worst.setdefault(case.gas, case)
+            worst[case.gas] = max(first, case, key=_severity_of_peak)
+    return [_peak(worst[gas]) for gas in sorted(worst)]
+
+
+def _severity_of_peak(case: Case) -> tuple[int, float]:
+    return case.mark, max(mark.value_pct / mark.limit_pct for mark in case.marks)
+
+
+def _peak(case: Case) -> dict[str, Any]:
+    # The worst mark crossed; where none is, the one that is nearest.
+    crossed = [mark for mark in case.marks if mark.crossed]
+    decides = (
+        crossed[-1]
+        if crossed
+        else max(case.marks, key=lambda mark: mark.value_pct / mark.limit_pct)
+    )
+    return {
+        "gas": case.gas,
+        "hazard": case.hazard,
+        "fluids": list(case.fluids),
+        "peak_pct": case.peak_pct,
+        "mean_15min_pct": case.mean_15min_pct,
+        "mean_8h_pct": case.mean_8h_pct,
+        "lower_limit_pct": case.lower_limit_pct,
+        "deciding": {
+            "measure": decides.measure,
+            "value_pct": decides.value_pct,
+            "limit_pct": decides.limit_pct,
+            "limit": decides.limit,
+            "place": decides.place,
+            "crossed": decides.crossed,
+        },
+        "release": case.release,
+        "airflow": case.airflow,
+    }
 
 
 def with_currency(body: bytes, currency: str) -> bytes:
@@ -207,9 +258,14 @@ def _case_document(case: Case) -> dict[str, Any]:
     document = _fields(case)
     document["vessels"] = [plain(vessel) for vessel in case.vessels]
     document["vessel_ids"] = [vessel.id for vessel in case.vessels]
+    document["marks"] = [_mark_document(mark) for mark in case.marks]
     document["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
     document["without_margins"] = dict(case.without_margins)
     return document
+
+
+def _mark_document(mark: Mark) -> dict[str, Any]:
+    return {name: getattr(mark, name) for name in mark.__slots__}
 
 
 def _judgement_document(judged: Judgement) -> dict[str, Any]:

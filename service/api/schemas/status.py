@@ -25,17 +25,51 @@ class WorstRead(Growing):
 
     release: str
     airflow: str
-    hazard: str
+    hazard: str = Field(description="oxygen-low, oxygen-high, toxic or flammable.")
+    gas: str = Field(description="The gas judged.")
     fluid: str | None
     fluids: list[str]
     vessel_ids: list[RecordIdText]
     oxygen_pct: float
     oxygen_kpa: float
+    peak_pct: float | None = Field(description="Of the gas itself, by volume.")
+    mean_15min_pct: float | None = Field(description="The highest mean of any 15 minutes.")
+    mean_8h_pct: float | None = Field(description="The highest mean of any 8 hours.")
+    lower_limit_pct: float | None = Field(
+        description="The share of the lower flammable limit, by the rule of Le Chatelier."
+    )
     at_s: float
     to_deficient_s: float | None
     to_danger_s: float | None
     to_critical_s: float | None
     recovered_s: float | None
+    mark: int = Field(description="The worst mark crossed: 0 none, 1 first, 2 second, 3 third.")
+
+
+class DecidingRead(Growing):
+    """The mark that decides: the worst one crossed, or the nearest."""
+
+    measure: str = Field(description="peak, mean-15min, mean-8h or lower-limit.")
+    value_pct: float
+    limit_pct: float
+    limit: str = Field(description="The value of the basis that sets it.")
+    place: int
+    crossed: bool
+
+
+class PeakRead(Growing):
+    """How far a toxic or flammable gas would rise in the worst case that counts."""
+
+    gas: str
+    hazard: str
+    fluids: list[str]
+    peak_pct: float
+    mean_15min_pct: float | None
+    mean_8h_pct: float | None
+    lower_limit_pct: float | None
+    deciding: DecidingRead
+    release: str
+    airflow: str
 
 
 class VentilationRead(Growing):
@@ -89,6 +123,7 @@ class StatusBasis(Growing):
     standing: Standing
     worst_oxygen_pct: float | None = Field(description="The lowest of the cases that count.")
     worst: WorstRead | None = Field(description="The case that decides; null for an empty room.")
+    peaks: list[PeakRead] = Field(description="Toxic and flammable gases, each at its worst.")
     highest_oxygen: WorstRead | None
     ventilation: VentilationRead | None
     turns_at: Instant | None = Field(description="When this can change by itself.")

@@ -25,6 +25,7 @@ from service.audit.hazards import (
 )
 from service.audit.marks import mark_percent, measure_name
 from service.audit.releases import (
+    ALL_VESSELS,
     BOIL_OFF,
     DETECTION,
     FILLING,
@@ -102,6 +103,9 @@ class CaseRule:
         table, results = tables.cases.table, tables.cases.results
         release = [release.slug for release in RELEASES].index(self.release)
         chosen = (table.release == release) & (table.hazard == self._hazard) & table.shown
+        if self.release == ALL_VESSELS:
+            # A single one is what the largest vessel says already.
+            chosen &= np.diff(table.member_start) > 1
         value, limit = decisive(table, results)
         return Judged(
             broken=chosen & (results.mark > 0),
