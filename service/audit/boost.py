@@ -28,6 +28,8 @@ _BY_ROW: Final = (
     "instant_level",
     "marks",
     "measured_on",
+    "first",
+    "first_mark",
     "gas_by_level",
     "oxygen_taken",
 )

@@ -62,6 +62,8 @@ class CaseTable:
     rates_level: Floats
     marks: Floats  # (rows, 3) levels; infinite where there is none
     measured_on: Integers  # (rows, 3) row of MEASURES
+    first: Integers  # place of the first mark that there is
+    first_mark: Floats  # and its level
     gas_by_level: Floats  # fraction of the gas that a level of 1 is
     oxygen_taken: Floats  # share of the oxygen in air that a level of 1 takes
     member_start: Integers  # where the sources of each case begin; one more for the end
@@ -79,14 +81,6 @@ class CaseTable:
         """Which cases go on without any accident."""
         sustained: Mask = _SUSTAINED[self.release]
         return sustained
-
-    @property
-    def first_mark(self) -> Floats:
-        """Level of the first mark that there is."""
-        finite = np.isfinite(self.marks)
-        place = np.argmax(finite, axis=1)
-        first: Floats = np.take_along_axis(self.marks, place[:, np.newaxis], axis=1)[:, 0]
-        return first
 
 
 def case_table(rooms: Sequence[RoomValues], at: datetime) -> CaseTable:
@@ -160,6 +154,7 @@ def _joined(
     member_source = codes("member_source")[by_case]
     member_gas = joined("member_gas")[by_case]
     marks, measured_on = _marks(given, room, release, hazard, rooms)
+    first = np.argmax(np.isfinite(marks), axis=1)
     weight = found.weight[hazard[member_row], member_source]
     gas_by_level = quotient(
         sum_by_group(member_gas, member_row, rooms.size),
@@ -195,6 +190,8 @@ def _joined(
         rates_level=padded("rates_level"),
         marks=marks,
         measured_on=measured_on,
+        first=first,
+        first_mark=marks[np.arange(rooms.size), first],
         gas_by_level=gas_by_level,
         oxygen_taken=np.where(ABOUT_OXYGEN[hazard], SIGN[hazard], gas_by_level),
         member_start=np.searchsorted(member_row, np.arange(rooms.size + 1)),

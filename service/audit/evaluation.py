@@ -7,10 +7,11 @@ import numpy as np
 from service.audit.assumptions import ASSUMPTIONS, Assumptions
 from service.audit.cases import CaseTable, cases_of
 from service.audit.columns import taken
+from service.audit.marks import mark_percent
 from service.audit.safeguards import Safeguards, safeguards
 from service.audit.severity import case_severity, worst_by_room
 from service.audit.solve import Results, solve
-from service.physics.arrays import Integers, Mask
+from service.physics.arrays import Floats, Integers, Mask
 
 _ALL_TOGETHER = -1  # every assumption of a room at its mildest at once
 
@@ -23,13 +24,16 @@ class Evaluation:
     results: Results
     guards: Safeguards
     severity: Integers  # index in SEVERITIES; -1 where no mark is crossed
+    limits: Floats  # (rows, 3) of the marks, in percent; not-a-number where there is none
+    values: Floats  # (rows, 3) set against them, in percent
 
 
 def evaluate(table: CaseTable, at: np.datetime64) -> Evaluation:
     """Solve a table and judge its cases."""
     results = solve(table)
     guards = safeguards(table, results, at)
-    return Evaluation(table, results, guards, case_severity(table, results, guards))
+    severity = case_severity(table, results, guards)
+    return Evaluation(table, results, guards, severity, *mark_percent(table, results))
 
 
 def deciding(base: Evaluation, assumed: Assumptions, at: np.datetime64) -> Mask:

@@ -178,8 +178,8 @@ def _times_to_marks(table: CaseTable, runs: Course, start: Floats, crossed: Mask
 
 def _of_first(table: CaseTable, measured: Floats) -> Floats:
     """The number that the first mark there is of each case is set against."""
-    place = np.argmax(np.isfinite(table.marks), axis=1)
-    return np.take_along_axis(measured, place[:, np.newaxis], axis=1)[:, 0]
+    first: Floats = measured[np.arange(table.size), table.first]
+    return first
 
 
 def _restore(table: CaseTable, level: Floats) -> Floats:
@@ -199,9 +199,7 @@ def _required(table: CaseTable, start: Floats) -> Floats:
     """
     required = np.full(table.size, np.nan)
     rows = np.flatnonzero((table.measured == np.arange(table.size)) & ~table.at_once)
-    measured_on = table.measured_on[rows]
-    place = np.argmax(np.isfinite(table.marks[rows]), axis=1)
-    on = np.take_along_axis(measured_on, place[:, np.newaxis], axis=1)[:, 0]
+    on = table.measured_on[rows, table.first[rows]]
     supply, exhaust = table.supply[rows, 0], table.exhaust[rows, 0]
     blows = (supply >= exhaust) & (supply > 0.0)
     for by_supply in (True, False):

@@ -17,7 +17,7 @@ from service.audit.hazards import (
     REFERENCE_LIMIT,
     TOXIC,
 )
-from service.audit.marks import limit_name, mark_percent, measure_name
+from service.audit.marks import limit_name, measure_name
 from service.audit.releases import RELEASES, Release
 from service.audit.rules.rule import Tables
 from service.audit.solve import Results
@@ -99,7 +99,7 @@ def _by_case(numbers: Mapping[str, Floats]) -> list[_Fields]:
 
 def _marks(tables: Tables) -> list[tuple[Mark, ...]]:
     table, results = tables.cases.table, tables.cases.results
-    limits, values = mark_percent(table, results)
+    limits, values = tables.cases.limits, tables.cases.values
     return [
         tuple(
             Mark(

@@ -18,6 +18,7 @@ from service.audit.assessment import (
     Assessment,
     Case,
     Judgement,
+    Mark,
     Ventilation,
 )
 from service.audit.findings import counts

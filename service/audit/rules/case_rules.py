@@ -10,7 +10,7 @@ import numpy as np
 
 from service.audit.air import AIRFLOWS, AS_MEASURED, BOOSTED, DESIGN, LOST
 from service.audit.assessment import SEVERITIES
-from service.audit.cases import CaseTable
+from service.audit.evaluation import Evaluation
 from service.audit.hazards import (
     ABOUT_OXYGEN,
     FLAMMABLE,
@@ -23,7 +23,7 @@ from service.audit.hazards import (
     REFERENCE_LIMIT,
     TOXIC,
 )
-from service.audit.marks import mark_percent, measure_name
+from service.audit.marks import measure_name
 from service.audit.releases import (
     ALL_VESSELS,
     BOIL_OFF,
@@ -47,7 +47,6 @@ from service.audit.rules.words import (
     number,
     oxygen_text,
 )
-from service.audit.solve import Results
 from service.physics.arrays import Floats, Mask
 
 LOW_MARKS: Final = ("deficient", "danger", "critical")
@@ -106,7 +105,7 @@ class CaseRule:
         if self.release == ALL_VESSELS:
             # A single one is what the largest vessel says already.
             chosen &= np.diff(table.member_start) > 1
-        value, limit = decisive(table, results)
+        value, limit = decisive(tables.cases)
         return Judged(
             broken=chosen & (results.mark > 0),
             measure=value,
@@ -128,18 +127,17 @@ class CaseRule:
         )
 
 
-def decisive(table: CaseTable, results: Results) -> tuple[Floats, Floats]:
+def decisive(cases: Evaluation) -> tuple[Floats, Floats]:
     """Value and limit of the worst mark crossed, else of the first there is; in percent.
 
     Oxygen is always held against its first mark, so that its measure is one number however low it
     falls.
     """
-    limits, values = mark_percent(table, results)
-    first = np.argmax(np.isfinite(table.marks), axis=1)
-    crossed = np.where(results.mark > 0, results.mark - 1, first)
+    table, mark = cases.table, cases.results.mark
+    crossed = np.where(mark > 0, mark - 1, table.first)
     place = np.where(ABOUT_OXYGEN[table.hazard], 0, crossed)[:, np.newaxis]
-    value: Floats = np.take_along_axis(values, place, axis=1)[:, 0]
-    return value, np.take_along_axis(limits, place, axis=1)[:, 0]
+    value: Floats = np.take_along_axis(cases.values, place, axis=1)[:, 0]
+    return value, np.take_along_axis(cases.limits, place, axis=1)[:, 0]
 
 
 def _statement(tables: Tables, row: int) -> str:
@@ -195,8 +193,7 @@ def _flammable_effect(tables: Tables, row: int) -> str:
 
 def _limit(tables: Tables, row: int) -> float:
     """Limit of the worst mark crossed, in percent."""
-    limits, _ = mark_percent(tables.cases.table, tables.cases.results)
-    return float(limits[row, int(tables.cases.results.mark[row]) - 1])
+    return float(tables.cases.limits[row, int(tables.cases.results.mark[row]) - 1])
 
 
 def _event(tables: Tables, row: int) -> str:
@@ -272,7 +269,7 @@ def case_evidence(tables: Tables, row: int) -> dict[str, Any]:
 
 def _marks(tables: Tables, row: int) -> list[dict[str, Any]]:
     table, results = tables.cases.table, tables.cases.results
-    limits, values = mark_percent(table, results)
+    limits, values = tables.cases.limits, tables.cases.values
     return [
         {
             "measure": measure_name(int(table.hazard[row]), int(table.measured_on[row, place])),
