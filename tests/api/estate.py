@@ -114,8 +114,32 @@ def a_detector(room, tag="OX-1", **fields):
     }
 
 
+def an_opening(room, tag="DOOR-1", **fields):
+    return {
+        "tag": tag,
+        "room_id": room["id"],
+        "kind": "door",
+        "width_m": 0.9,
+        "height_m": 2.1,
+        "net_flow_m3_h": -40.0,
+        **fields,
+    }
+
+
+def a_control(room, tag="SIGN-1", **fields):
+    return {
+        "tag": tag,
+        "room_id": room["id"],
+        "kind": "signage",
+        "reference": "drawing A-14",
+        "checked_on": "2027-02-01",
+        "check_every_days": 365,
+        **fields,
+    }
+
+
 class Site:
-    """A site with a room, a unit, a vessel and a detector."""
+    """A site with a record of each kind."""
 
     def __init__(self, ask, tag):
         self.site = ask.made("sites", a_site(tag))
@@ -123,6 +147,8 @@ class Site:
         self.unit = ask.made("ventilation-units", a_unit(self.room, f"{tag}-AHU"))
         self.vessel = ask.made("vessels", a_vessel(self.room, f"{tag}-DEW", external_id=f"{tag}-X"))
         self.detector = ask.made("detectors", a_detector(self.room, f"{tag}-OX"))
+        self.opening = ask.made("openings", an_opening(self.room, f"{tag}-DOOR"))
+        self.control = ask.made("controls", a_control(self.room, f"{tag}-SIGN"))
         self.basis = ask.made(
             "bases",
             {

@@ -10,7 +10,15 @@ from fastapi.routing import APIRoute
 from service.api.access import ROLES as TABLE
 from service.api.access import check_declared
 from service.api.resources import RESOURCES
-from tests.api.estate import ROLES, a_detector, a_room, a_unit, a_vessel
+from tests.api.estate import (
+    ROLES,
+    a_control,
+    a_detector,
+    a_room,
+    a_unit,
+    a_vessel,
+    an_opening,
+)
 
 EVERYBODY = set(ROLES)
 WRITERS = {"recorder", "administrator"}
@@ -113,6 +121,7 @@ def test_a_recorder_writes_no_basis_by_way_of_several_changes(ask, estate):
 def texts_of(place):
     """Everything by which a site could be recognised."""
     records = [place.site, place.room, place.unit, place.vessel, place.detector, place.basis]
+    records += [place.opening, place.control]
     return {record["id"] for record in records} | {place.site["tag"]}
 
 
@@ -193,6 +202,15 @@ def test_another_sites_room_cannot_be_named_in_a_new_record(north, estate):
         ("vessels", a_vessel(south.room)),
         ("detectors", a_detector(south.room)),
         ("ventilation-units", a_unit(south.room)),
+        ("openings", an_opening(south.room)),
+        ("openings", an_opening(estate.north.room, other_room_id=south.room["id"])),
+        ("controls", a_control(south.room)),
+        ("controls", a_control({"id": None}, vessel_id=south.vessel["id"])),
+        ("controls", a_control({"id": None}, vessel="SOUTH-DEW")),
+        (
+            "ventilation-units",
+            a_unit(estate.north.room, boost_flow_m3_h=900.0, boost_trigger=south.detector["id"]),
+        ),
         ("vessels", a_vessel(estate.north.room, fluid="SOUTH-mix")),
         ("detectors", a_detector(estate.north.room, gas="SOUTH-mix")),
     ]

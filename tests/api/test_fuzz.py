@@ -44,6 +44,8 @@ def real_values(estate, path):
         "ventilation-units": of_site | {"serves": [{"room_id": north.room["id"], "share": 0.5}]},
         "vessels": in_room | {"fluid": "nitrogen", "kind": "tank", "capacity_l": 50},
         "detectors": in_room | {"gas": "oxygen"},
+        "openings": in_room | {"kind": "door"},
+        "controls": in_room | {"kind": "training"},
         "bases": of_site | {"derived_from": "us", "values": {}, "sources": {}},
         "fluids": of_site
         | {
@@ -66,6 +68,7 @@ def named(case, estate, draw):
             "sites": estate.north.site, "rooms": estate.north.room, "bases": estate.north.basis,
             "ventilation-units": estate.north.unit, "vessels": estate.north.vessel,
             "detectors": estate.north.detector, "fluids": estate.north.fluid,
+            "openings": estate.north.opening, "controls": estate.north.control,
         }.get(kind)  # fmt: skip
         for name in ("record_id", "room_id"):
             if known is not None and name in case.path_parameters:

@@ -20,7 +20,9 @@ DEFAULTS = {
     "vessel": {
         "fluid": "nitrogen", "kind": "open-dewar", "state": "in-service", "capacity_l": 50.0,
     },
+    "opening": {"kind": "door"},
     "detector": {"gas": "oxygen", "state": "in-service", "alarms_pct": [19.5, 18.0]},
+    "control": {"kind": "signage"},
     "basis": {"values": {"oxygen_deficient_pct": 19.5}, "sources": {"oxygen_deficient_pct": "—"}},
     "fluid": {
         "molar_mass_g_mol": 28.0134, "boiling_k": 77.355, "condensed_density_kg_m3": 806.1,
@@ -56,6 +58,15 @@ class Estate:
             people={"attended": 2, "most": None},
             labels={"wing": "B"},
         )
+        self.opening = a_record("opening", site_id, room_id=self.room.id, net_flow_m3_h=-12.5)
+        self.detector = a_record(
+            "detector",
+            site_id,
+            room_id=self.room.id,
+            external_id="D/1",
+            silenced_since="2027-02-01T00:00:00.000000Z",
+            outages=[{"from": "2027-04-01T06:00:00.000000Z", "to": "2027-04-01T09:00:00.000000Z"}],
+        )
         self.unit = a_record(
             "ventilation-unit",
             site_id,
@@ -64,6 +75,8 @@ class Estate:
             design_flow_m3_h=600.0,
             flow_proved=True,
             serves=[{"room_id": self.room.id, "share": 0.75}],
+            boost_flow_m3_h=900.0,
+            boost_trigger=self.detector.id,
         )
         self.vessel = a_record(
             "vessel",
@@ -77,12 +90,8 @@ class Estate:
             name="Dewar Ä",
             notes="a\nb",
         )
-        self.detector = a_record(
-            "detector",
-            site_id,
-            room_id=self.room.id,
-            external_id="D/1",
-            silenced_since="2027-02-01T00:00:00.000000Z",
+        self.control = a_record(
+            "control", site_id, vessel_id=self.vessel.id, kind="bund", area_m2=2.5
         )
         self.basis = a_record(
             "basis", site_id, derived_from_id=shared.basis.id, derived_from="baseline"
@@ -91,7 +100,10 @@ class Estate:
 
     @property
     def records(self):
-        return [self.site, self.room, self.unit, self.vessel, self.detector, self.basis, self.fluid]
+        return [
+            self.site, self.room, self.opening, self.detector, self.unit, self.vessel, self.control,
+            self.basis, self.fluid,
+        ]  # fmt: skip
 
     @property
     def scope(self):
