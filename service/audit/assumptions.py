@@ -18,8 +18,10 @@ from service.audit.bases import COMMON_PRACTICE
 from service.audit.cases import CaseTable
 from service.audit.columns import (
     ARRANGEMENTS,
+    CARBON_DIOXIDE,
     DETECTOR_STATES,
     FILLED_BY,
+    NITROUS_OXIDE,
     UNKNOWN,
     VENTS,
     VESSEL_STATES,
@@ -28,7 +30,8 @@ from service.audit.columns import (
     is_one_of,
 )
 from service.audit.conditions import SEA_LEVEL, is_enclosed
-from service.audit.inventory import CYLINDER, ICE
+from service.audit.hazards import ABOUT_OXYGEN, FLAMMABLE, HAZARDS, flammable_limit
+from service.audit.inventory import CLOSES_IN, CYLINDER, ICE
 from service.audit.safeguards import OXYGEN_GAS, UNKNOWN_T90
 from service.physics.arrays import Floats, Integers, Mask
 from service.physics.constants import (
@@ -48,6 +51,10 @@ _MILDEST_TEMPERATURE: Final = ZERO_CELSIUS + 15.0
 _FAR: Final = np.datetime64("9999-01-01", "us")
 _IN_SERVICE = DETECTOR_STATES.index("in-service")
 _EMPTY = VESSEL_STATES.index("empty")
+_NITROUS_OXIDE = [hazard.gas for hazard in HAZARDS].index(NITROUS_OXIDE)
+_FLAMMABLE = [hazard.slug for hazard in HAZARDS].index(FLAMMABLE)
+# The least of what hoses are used for. [m3/s] of liquid  Common practice, no source.
+_SLOW_FILLING: Final = 1e-3 / 60.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -307,27 +314,180 @@ def _as_last_counted(given: Columns, rooms: Mask) -> Columns:
 
 def _no_alarms(table: CaseTable) -> Mask:
     detectors = table.given.detectors
-    oxygen = (detectors.gas == OXYGEN_GAS) & (detectors.state == _IN_SERVICE)
     unset = np.isnan(detectors.alarms)
-    return all_of(np.logical_and.reduce(unset, axis=1), oxygen, _has_cases(table)[detectors.room])
+    return all_of(np.logical_and.reduce(unset, axis=1), _watched(table))
+
+
+def _watched(table: CaseTable) -> Mask:
+    """Detectors in service of a gas that a case of their room is about."""
+    given = table.given
+    detectors = given.detectors
+    gases = len(given.gases)
+    about = np.zeros((given.count, gases), dtype=np.bool_)
+    about[table.room, OXYGEN_GAS] = True
+    own = ~ABOUT_OXYGEN[table.hazard[table.member_row]]
+    rows = table.member_row[own]
+    gas = given.fluids.gas[table.sources.fluid[table.member_source[own]]]
+    about[table.room[rows], gas] = True
+    return all_of(about[detectors.room, detectors.gas], detectors.state == _IN_SERVICE)
 
 
 def _second_mark(table: CaseTable) -> Floats:
-    marks: Floats = 100.0 * table.conditions.low_marks[table.given.detectors.room, 1]
-    return marks
+    """The second mark of the gas of each detector, in percent of it."""
+    given = table.given
+    detectors, bases = given.detectors, given.bases
+    marks = table.conditions.low_marks[detectors.room, 1].copy()
+    gases = np.array(given.gases)[detectors.gas]
+    for tag, levels in (
+        (CARBON_DIOXIDE, bases.carbon_dioxide[:, 1]),
+        (NITROUS_OXIDE, bases.nitrous_oxide[:, 1]),
+    ):
+        marks = np.where(gases == tag, levels[detectors.room], marks)
+    fluid_of = np.full(len(given.gases), UNKNOWN)
+    fluid_of[given.fluids.gas] = np.arange(given.fluids.gas.size)
+    limit = flammable_limit(given, detectors.room, fluid_of[detectors.gas])
+    half = limit * bases.flammable_shares[detectors.room, 1]
+    marks_pct: Floats = 100.0 * np.where(np.isnan(half), marks, half)
+    return marks_pct
 
 
 def _no_response(table: CaseTable) -> Mask:
-    detectors = table.given.detectors
-    oxygen = (detectors.gas == OXYGEN_GAS) & (detectors.state == _IN_SERVICE)
-    return all_of(np.isnan(detectors.t90), oxygen, _has_cases(table)[detectors.room])
+    return all_of(np.isnan(table.given.detectors.t90), _watched(table))
 
 
 def _usual_response(table: CaseTable) -> Floats:
     return np.full(table.given.detectors.room.size, UNKNOWN_T90)
 
 
+def _no_people(table: CaseTable) -> Mask:
+    """Rooms judged by a mean of 8 h that is for those who work there."""
+    asked = np.zeros(table.given.count, dtype=np.bool_)
+    asked[table.room[table.sustained & (table.hazard == _NITROUS_OXIDE)]] = True
+    return all_of(table.given.rooms.attended == UNKNOWN, asked)
+
+
+def _attended_room(table: CaseTable) -> bool:
+    return True
+
+
+def _unattended(given: Columns, rooms: Mask) -> Columns:
+    values = given.rooms.attended
+    filled = np.where((values == UNKNOWN) & rooms, 0, values)
+    return replace(given, rooms=replace(given.rooms, attended=filled))
+
+
+def _no_measures(table: CaseTable) -> Mask:
+    """Rooms of unknown height with flammable gas, whose zones follow from it."""
+    asked = np.zeros(table.given.count, dtype=np.bool_)
+    asked[table.room[table.hazard == _FLAMMABLE]] = True
+    return all_of(np.isnan(table.conditions.height), asked)
+
+
+def _as_a_cube(table: CaseTable) -> Floats:
+    tall: Floats = np.cbrt(table.given.rooms.gross_volume)
+    return tall
+
+
+def _no_fill_flow(table: CaseTable) -> Mask:
+    filled = (table.stock.filling > 0.0) | (table.stock.overfill > 0.0)
+    return all_of(np.isnan(table.given.vessels.fill_flow), filled)
+
+
+def _usual_fill_flow(table: CaseTable) -> Floats:
+    flow: Floats = table.given.bases.fill_flow[table.given.vessels.room] * _LITRES * 60.0
+    return flow
+
+
+def _slow_filling(given: Columns, rooms: Mask) -> Columns:
+    vessels = given.vessels
+    chosen = np.isnan(vessels.fill_flow) & rooms[vessels.room]
+    slow = np.minimum(_SLOW_FILLING, given.bases.fill_flow[vessels.room])
+    filled = np.where(chosen, slow, vessels.fill_flow)
+    return replace(given, vessels=replace(vessels, fill_flow=filled))
+
+
+def _no_closing_time(table: CaseTable) -> Mask:
+    closes = table.stock.shut_off_holds & (table.stock.overfill > 0.0)
+    return all_of(np.isnan(table.given.vessels.closes_in), closes)
+
+
+def _a_minute(table: CaseTable) -> Floats:
+    return np.full(table.given.vessels.room.size, CLOSES_IN)
+
+
+def _at_once_closed(given: Columns, rooms: Mask) -> Columns:
+    vessels = given.vessels
+    chosen = np.isnan(vessels.closes_in) & rooms[vessels.room]
+    filled = np.where(chosen, 0.0, vessels.closes_in)
+    return replace(given, vessels=replace(vessels, closes_in=filled))
+
+
+def _no_mobility(table: CaseTable) -> Mask:
+    return all_of(table.given.vessels.mobile == UNKNOWN, table.stock.spilt > 0.0)
+
+
+def _tips(table: CaseTable) -> bool:
+    return True
+
+
+def _stands_fast(given: Columns, rooms: Mask) -> Columns:
+    vessels = given.vessels
+    chosen = (vessels.mobile == UNKNOWN) & rooms[vessels.room]
+    filled = np.where(chosen, 0, vessels.mobile)
+    return replace(given, vessels=replace(vessels, mobile=filled))
+
+
 ASSUMPTIONS: Final = (
+    Assumption(
+        "room",
+        "people.attended",
+        _no_people,
+        _attended_room,
+        "Whether people work there is not recorded: somebody does.",
+        COMMON_PRACTICE,
+        True,
+        _unattended,
+    ),
+    Assumption(
+        "room",
+        "height_m",
+        _no_measures,
+        _as_a_cube,
+        "Neither height nor floor is recorded: as high as it is wide.",
+        COMMON_PRACTICE,
+        True,
+        None,
+    ),
+    Assumption(
+        "vessel",
+        "filling.flow_l_min",
+        _no_fill_flow,
+        _usual_fill_flow,
+        "How fast it is filled is not recorded.",
+        "default_fill_flow_l_min",
+        False,
+        _slow_filling,  # 1 L/min
+    ),
+    Assumption(
+        "vessel",
+        "filling.closes_in_s",
+        _no_closing_time,
+        _a_minute,
+        "How long its independent shut-off takes is not recorded.",
+        COMMON_PRACTICE,
+        True,
+        _at_once_closed,
+    ),
+    Assumption(
+        "vessel",
+        "mobile",
+        _no_mobility,
+        _tips,
+        "Whether it can tip is not recorded.",
+        COMMON_PRACTICE,
+        True,
+        _stands_fast,
+    ),
     Assumption(
         "room",
         "occupied_fraction",

@@ -7,8 +7,10 @@ import pytest
 from service.audit.bases import SHIPPED_SOURCES
 from tests.audit.builders import (
     EARLIER,
+    LATER,
     LITRE,
     METHANE,
+    NITROUS_OXIDE,
     NOW,
     PER_DAY,
     PER_HOUR,
@@ -22,6 +24,8 @@ from tests.audit.builders import (
     some_ice,
     standing_of,
 )
+
+A_LITRE_A_MINUTE = LITRE / 60.0
 
 
 def assumed(room):
@@ -84,9 +88,54 @@ def test_nothing_is_assumed_where_everything_is_recorded():
             0.2,
             "vessel-V-10-nitrogen",
         ),
-        (a_full_room(vessels=(some_ice(10),)), "measured_loss_kg_day", 4.8, "vessel-ICE-10"),
         (
-            a_full_room(vessels=(a_vessel(10, filled_by=None),)),
+            a_full_room(vessels=(some_ice(10, mobile=False),)),
+            "measured_loss_kg_day",
+            4.8,
+            "vessel-ICE-10",
+        ),
+        (
+            a_full_room(vessels=(some_ice(10, measured_loss=0.0),)),
+            "mobile",
+            True,
+            "vessel-ICE-10",
+        ),
+        (
+            a_full_room(vessels=(a_vessel(10, filled_by="attended"),)),
+            "filling.flow_l_min",
+            10.0,
+            "vessel-V-10-nitrogen",
+        ),
+        (
+            a_full_room(
+                vessels=(
+                    a_vessel(
+                        10,
+                        filled_by="automatic",
+                        fill_flow=A_LITRE_A_MINUTE,
+                        independent_high_level=True,
+                        shut_off_test_due=LATER,
+                    ),
+                )
+            ),
+            "filling.closes_in_s",
+            60.0,
+            "vessel-V-10-nitrogen",
+        ),
+        (
+            a_full_room(vessels=(a_vessel(10, NITROUS_OXIDE),)),
+            "people.attended",
+            True,
+            "room-B-104",
+        ),
+        (
+            a_room(1000, height=None, floor_area=None, vessels=(a_vessel(10, METHANE),)),
+            "height_m",
+            10.0,
+            "room-B-104",
+        ),
+        (
+            a_full_room(vessels=(a_vessel(10, filled_by=None, fill_flow=A_LITRE_A_MINUTE),)),
             "filling.by",
             "attended",
             "vessel-V-10-nitrogen",
@@ -105,7 +154,8 @@ def test_nothing_is_assumed_where_everything_is_recorded():
         ),
         (
             a_full_room(
-                vessels=(some_ice(10, measured_loss=0.0),), basis=a_basis(contents="recorded")
+                vessels=(some_ice(10, measured_loss=0.0, mobile=False),),
+                basis=a_basis(contents="recorded"),
             ),
             "contents_kg",
             10.0,
@@ -218,7 +268,7 @@ class TestDeciding:
         """6 L: 6.6 L x 0.692 in 40 m3; without filling loss 6 L in 40, without fittings 6.6 in 50:
         all beyond 5 L in 50 m3. Both: 4.9 L in 50 would hold.
         """
-        vessel = a_vessel(4.9, measured_evaporation=0.0, filled_by=None)
+        vessel = a_vessel(4.9, measured_evaporation=0.0, filled_by=None, fill_flow=A_LITRE_A_MINUTE)
         room = a_room(50, occupied_fraction=None, vessels=(vessel,))
         found = [each for each in assessed(room)[0].judgements if each.rule == self.RULE]
         assert sorted(each.subject.kind for each in found) == ["room", "vessel"]
