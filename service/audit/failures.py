@@ -92,9 +92,22 @@ def _of_vessels(given: Columns) -> Iterator[tuple[int, str]]:
         (vessels.measured_evaporation, "measured evaporation"),
         (vessels.measured_loss, "measured loss"),
         (vessels.use, "use"),
+        (vessels.closes_in, "closing time"),
     ):
         held = _unknown_or(_not_negative, values)
         yield from _bad(vessels.room, held, f"The {what} of a vessel is below 0 or not a number.")
+
+
+    for values, what in (
+        (vessels.fill_flow, "filling flow"),
+        (vessels.charge_pressure, "charge pressure"),
+    ):
+        held = _unknown_or(_positive, values)
+        yield from _bad(vessels.room, held, f"The {what} of a vessel is not above 0.")
+    limits = _unknown_or(_is_share, fluids.own_limit)[vessels.fluid]
+    yield from _bad(
+        vessels.room, limits, "The lower flammable limit of a fluid is not between 0 and 100 %."
+    )
 
 
 def _of_units(given: Columns) -> Iterator[tuple[int, str]]:
@@ -103,6 +116,7 @@ def _of_units(given: Columns) -> Iterator[tuple[int, str]]:
         (units.design_flow, "design flow"),
         (units.measured_flow, "measured flow"),
         (units.outdoor_air_fraction, "outdoor air fraction"),
+        (units.boost_flow, "boost flow"),
     ):
         held = _unknown_or(_not_negative, values)
         yield from _bad(units.room, held, f"The {what} of a ventilation unit is below 0.")
@@ -142,6 +156,10 @@ def _positive(values: Floats) -> Mask:
 
 def _not_negative(values: Floats) -> Mask:
     return (values >= 0.0) & (values <= _LARGEST)
+
+
+def _is_share(values: Floats) -> Mask:
+    return (values > 0.0) & (values <= 1.0)
 
 
 def _unknown_or(held: Held, values: Floats) -> Mask:
