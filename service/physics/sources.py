@@ -114,6 +114,35 @@ _SOURCES: Final = (
         "from memory",
     ),
     Source(
+        "le-chatelier",
+        "H. Le Chatelier, Estimation of firedamp by flammability limits, Annales des Mines 19 "
+        "(1891), as used by H. F. Coward and G. W. Jones, Limits of flammability of gases and "
+        "vapors, U.S. Bureau of Mines Bulletin 503 (1952)",
+        "from memory",
+    ),
+    Source(
+        "nfpa-flammable",
+        "NFPA practice of keeping flammable gas below a quarter of its lower limit (NFPA 69), and "
+        "IEC 60079-20-1 for the limits",
+        "from memory",
+    ),
+    Source(
+        "exposure-limits",
+        "29 CFR 1910.1000, NIOSH Pocket Guide to Chemical Hazards and EH40/2005 as amended: "
+        "8-hour and 15-minute means of carbon dioxide and nitrous oxide",
+        "from memory",
+    ),
+    Source(
+        "nist-cryogenic-materials",
+        "NIST, Cryogenic material properties: heat capacity of 304 stainless steel, integrated",
+        "from memory",
+    ),
+    Source(
+        "common-practice",
+        "Common practice of the trade, which no source is known for",
+        "from memory",
+    ),
+    Source(
         "chandrupatla",
         "T. R. Chandrupatla, A new hybrid quadratic/bisection algorithm for finding the zero of a "
         "nonlinear function without using derivatives, Advances in Engineering Software 28 (1997)",
@@ -244,12 +273,146 @@ _METHODS: Final = (
         False,
     ),
     Method(
-        "boil-off/dry-ice",
+        "gas/real-gas",
+        "A3",
+        "The gas in a charged cylinder, whose density is not that of an ideal gas; where the "
+        "cylinder holds liquid too, it is counted as full of it.",
+        "m = V_c rho(p, T) by the reference equation; rho_l(T) where the pressure is that of "
+        "saturation",
+        ("property-library",),
+        "to 50 MPa absolute, 220 to 400 K; the shipped fluids, others as ideal gas",
+        False,
+    ),
+    Method(
+        "dry-ice/share-per-hour",
         "G8",
-        "The gas that dry ice gives off.",
+        "The gas that dry ice gives off, in its box or emptied on a floor.",
         "R = f m / (3600 s rho_g), f the share that sublimes in an hour",
-        ("dry-ice-packages", "ideal-gas"),
-        "in a box or loose on a floor; not in water",
+        ("dry-ice-packages", "ideal-gas", "common-practice"),
+        "in a box or loose on a floor; not in water, and never at once",
+        False,
+    ),
+    Method(
+        "filling/transfer-loss",
+        "G2",
+        "The gas lost while vessels are filled: the share of the basis, or what flashes from the "
+        "pressure of the source where that is more.",
+        "R = f V_l' rho_l / rho_g for V_l / V_l', f = max(share, (h_l1 - h_l2) / (h_v2 - h_l2))",
+        ("gas-industry-guide", "property-library"),
+        "vessels filled in the room; all of it is counted from the critical pressure on",
+        False,
+    ),
+    Method(
+        "filling/overfill",
+        "G2",
+        "A vessel goes on filling at its full flow, and all that runs over evaporates at once.",
+        "R = V_l' rho_l / rho_g until an independent high level closes, else until the source is "
+        "empty",
+        ("common-practice", "ideal-gas"),
+        "automatic filling, or a person who leaves; a pool that a bund holds evaporates slower",
+        True,
+    ),
+    Method(
+        "layering/two-zone-bound",
+        "F1",
+        "All the gas stays in the zone that people breathe or, lighter than air, above it.",
+        "C_zone = C0 max(0, 1 - V_g / V_zone), V_zone = A_f min(H, 1.5 m), or A_f (H - 1.5 m)",
+        ("gas-industry-guide", "common-practice"),
+        "any room; up to twenty times worse than a ventilated room is",
+        True,
+    ),
+    Method(
+        "flammable/le-chatelier",
+        "E3",
+        "Flammable gases together, as a share of the lower limit of their mixture.",
+        "s = sum x_i / L_i",
+        ("le-chatelier", "nfpa-flammable"),
+        "gases that burn alike, such as hydrogen and methane, in air at room temperature",
+        False,
+    ),
+    Method(
+        "toxic/time-weighted-means",
+        "E1, E2",
+        "The highest mean of a toxic gas over 8 hours and over 15 minutes, exact on the segments, "
+        "and its peak.",
+        "max over t of the integral of X from t to t + w, divided by w; w = 8 h and 900 s",
+        ("exposure-limits", "laboratory-odh"),
+        "the mean of a well-mixed room; people near the source breathe more",
+        False,
+    ),
+    Method(
+        "detectors/first-order-response",
+        "M1",
+        "When a detector alarms: its reading follows the room with a lag of its own.",
+        "tau dy/dt = C(t - t_d) - y, tau = T90 / ln 10",
+        ("laboratory-odh",),
+        "a detector that stands in the mean of the room",
+        False,
+    ),
+    Method(
+        "detectors/heights",
+        "M4",
+        "Whether a detector hangs where its gas goes, by the density of the gas as it arrives.",
+        "cold heavy gas: 0.2 to 1.0 m; light gas: within 0.5 m of the ceiling; breathing height: "
+        "0.9 to 1.6 m",
+        ("common-practice", "property-library"),
+        "rooms without strong draughts",
+        False,
+    ),
+    Method(
+        "egress/margin",
+        "M2",
+        "Whether people are out before the room is dangerous.",
+        "margin = t_danger - (t_alarm + t_react + d / v)",
+        ("laboratory-odh", "common-practice"),
+        "people who are awake and can walk; danger by the mean of the room",
+        False,
+    ),
+    Method(
+        "records/due-dates",
+        "N",
+        "What is checked at intervals is overdue from the end of the day on which it fell due.",
+        "due = done + interval, by the calendar of the site; overdue where due < now",
+        ("common-practice",),
+        "whatever has a date and an interval; without a date it counts as never done",
+        False,
+    ),
+    Method(
+        "records/present",
+        "N",
+        "Whether a record says what has to be known or has to be there.",
+        "absent where nothing is recorded",
+        ("common-practice",),
+        "any record; what is absent does not count as a safeguard",
+        False,
+    ),
+    Method(
+        "records/assumed",
+        "N",
+        "What was assumed in place of a record, and whether another value would change the "
+        "outcome.",
+        "the case solved again with every assumed input at its mildest",
+        ("common-practice",),
+        "inputs with a cautious default in the basis",
+        False,
+    ),
+    Method(
+        "records/sound",
+        "N",
+        "Whether the records of a room can be computed with.",
+        "every input within the range of its formula, and a number",
+        ("common-practice",),
+        "any room; one that cannot be computed never passes for safe",
+        False,
+    ),
+    Method(
+        "severity/table",
+        "N",
+        "How bad a case is: the worst mark it crosses against the safeguards that hold.",
+        "severity = table[worst mark, none or some or all of the safeguards], one step lower where "
+        "the release counts so",
+        ("common-practice",),
+        "every case that counts towards the standing",
         False,
     ),
 )
