@@ -7,6 +7,15 @@ import pytest
 
 from service.changes.verify import differences, verify
 from service.store.heads import INSTALLATION
+from service.store.history import version_of, versions_of
+from service.store.records import body
+
+ADDED = {
+    "lfl_pct", "pit", "door", "leakage_area_m2", "relief_opening_m2", "floor_rating_kpa",
+    "zeroed_at_kpa_abs", "outages", "boost_flow_m3_h", "boost_trigger", "terminal_height",
+    "tare_kg", "footprint_m2", "cold_area_m2", "working_pressure_kpa", "withdrawal_bore_mm",
+    "neck_plug", "relief", "quench",
+}  # fmt: skip
 
 
 @pytest.fixture
@@ -94,6 +103,46 @@ def test_an_altered_finding_is_found(kept):
 def test_a_record_that_an_assessment_rests_on_is_missed(kept):
     found = altered(kept, ("DELETE FROM record_version WHERE kind = 'vessel' AND revision = 1",))
     assert any("rests on, is not there" in what for what in found)
+
+
+@pytest.fixture
+def kept_before(sqlite_line, monkeypatch):
+    """A site with some history, its bodies in the form that the first release wrote."""
+
+    def first_form(record):
+        return {name: value for name, value in body(record).items() if name not in ADDED}
+
+    with monkeypatch.context() as earlier:
+        earlier.setattr("service.changes.replace.body", first_form)
+        earlier.setattr("service.store.history.body", first_form)
+        earlier.setattr("service.store.history.SCHEMA", 1)
+        sqlite_line.a_site()
+        vessel = sqlite_line.a_vessel(sqlite_line.a_room(volume_m3=40.0))
+        sqlite_line.change(vessel, contents_l=12.0)
+    return sqlite_line, vessel
+
+
+def test_bodies_of_the_first_form_are_sound_and_read_back_with_nothing_in_what_came_since(
+    kept_before,
+):
+    line, vessel = kept_before
+    (row,) = [row for row in line.read(versions_of, vessel.site_id, 3) if row.kind == "vessel"]
+    assert (row.schema, b"neck_plug" in row.body) == (1, False)
+    assert verify(line.database).sound
+    assert line.read(version_of, "vessel", vessel.id, 1) == vessel
+    line.change(vessel, neck_plug="vented")
+    assert verify(line.database).sound
+    newest = line.read(version_of, "vessel", vessel.id, 3)
+    assert newest.fields["neck_plug"] == "vented"
+
+
+@pytest.mark.parametrize(
+    "statement", ["UPDATE vessel SET contents_l = 1.0", "UPDATE vessel SET tare_kg = 1.0"]
+)
+def test_a_live_record_altered_since_the_first_form_is_found(kept_before, statement):
+    line, _ = kept_before
+    found = altered(line, (statement,))
+    assert [what for what in found if "live record vessel" in what]
 
 
 def test_numbers_differ_only_beyond_the_tolerance():

@@ -2,6 +2,7 @@ import re
 import shutil
 import sqlite3
 from contextlib import closing
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -14,8 +15,9 @@ from service.store.engine import Database
 from service.store.live import get_record, insert_record
 from service.store.memory import StatusMemory
 from service.store.migrate import downgrade, schema_state, upgrade
+from service.store.rows import row_of
 from service.store.scope import EVERYTHING
-from service.store.tables.registry import METADATA
+from service.store.tables.registry import METADATA, TABLES
 from service.store.writer import Writer
 from tests.store.estate import AS_SERVICE, Estate, Shared
 
@@ -110,6 +112,75 @@ def test_a_database_goes_up_down_and_up_with_data_in_it(empty_database_url):
     upgrade(url)
     assert tables_in(url) == before
     stored(url)
+
+
+def in_first_form(url):
+    """Store a site in the tables of the first revision, by their own columns; return it."""
+    shared = Shared()
+    estate = Estate(shared)
+    with Database(url) as database, database.writing() as connection:
+        for record in (*shared.records, *estate.records):
+            name = TABLES[record.kind].name
+            if not sa.inspect(connection).has_table(name):
+                continue
+            columns = {column["name"] for column in sa.inspect(connection).get_columns(name)}
+            kept = [column for column in TABLES[record.kind].columns if column.name in columns]
+            table = sa.Table(name, sa.MetaData(), *(sa.Column(c.name, c.type) for c in kept))
+            row = {c.name: row_of(record)[c.name] for c in kept}
+            connection.execute(sa.insert(table).values(row))
+    return estate
+
+
+def test_records_of_the_first_revision_come_through_with_nothing_in_what_is_new(
+    empty_database_url,
+):
+    url = empty_database_url
+    upgrade(url, REVISIONS[0])
+    estate = in_first_form(url)
+    upgrade(url)
+    new = {"boost_flow_m3_h", "boost_trigger", "outages"}
+    with Database(url) as database, database.reading() as connection:
+        for record in estate.records:
+            found = get_record(EVERYTHING, connection, record.kind, record.id)
+            if record.kind in ("opening", "control"):
+                assert found is None
+            else:
+                unknown = dict.fromkeys(new & record.fields.keys())
+                assert found == replace(record, fields={**record.fields, **unknown})
+
+
+def test_each_revision_goes_down_and_up_again_with_data_in_it(empty_database_url):
+    url = empty_database_url
+    upgrade(url)
+    newest, watched = tables_in(url), triggers_in(url)
+    estate = stored(url)
+    for revision in reversed(REVISIONS[:-1]):
+        downgrade(url, revision)
+        assert schema_state(url) == "older"
+        upgrade(url)
+        assert (tables_in(url), triggers_in(url)) == (newest, watched)
+        with Database(url) as database, database.reading() as connection:
+            found = get_record(EVERYTHING, connection, "vessel", estate.vessel.id)
+            assert found == estate.vessel
+
+
+def test_a_revision_leaves_the_triggers_that_it_found(empty_database_url):
+    """SQLite drops those of a table that it copies."""
+    url = empty_database_url
+    upgrade(url, REVISIONS[0])
+    found = triggers_in(url)
+    assert len(found) > 10
+    upgrade(url)
+    assert triggers_in(url) == found
+
+
+def triggers_in(url):
+    with Database(url) as database, database.reading() as connection:
+        if database.dialect == "sqlite":
+            query = "SELECT name, sql FROM sqlite_schema WHERE type = 'trigger'"
+        else:
+            query = "SELECT tgname, pg_get_triggerdef(oid) FROM pg_trigger WHERE NOT tgisinternal"
+        return dict(connection.exec_driver_sql(query).all())
 
 
 def test_a_downgrade_leaves_no_function_behind(postgresql_cluster):
