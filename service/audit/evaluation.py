@@ -7,6 +7,7 @@ import numpy as np
 from service.audit.assumptions import ASSUMPTIONS, Assumptions
 from service.audit.cases import CaseTable, cases_of
 from service.audit.columns import taken
+from service.audit.hazards import ABOUT_OXYGEN
 from service.audit.marks import mark_percent
 from service.audit.safeguards import Safeguards, safeguards
 from service.audit.severity import case_severity, worst_by_room
@@ -26,6 +27,8 @@ class Evaluation:
     severity: Integers  # index in SEVERITIES; -1 where no mark is crossed
     limits: Floats  # (rows, 3) of the marks, in percent; not-a-number where there is none
     values: Floats  # (rows, 3) set against them, in percent
+    decisive_limit: Floats  # of the worst mark crossed, else of the first there is
+    decisive_value: Floats
 
 
 def evaluate(table: CaseTable, at: np.datetime64) -> Evaluation:
@@ -33,7 +36,21 @@ def evaluate(table: CaseTable, at: np.datetime64) -> Evaluation:
     results = solve(table)
     guards = safeguards(table, results, at)
     severity = case_severity(table, results, guards)
-    return Evaluation(table, results, guards, severity, *mark_percent(table, results))
+    limits, values = mark_percent(table, results)
+    # Oxygen is always held against its first mark: its measure is one number however low it falls.
+    crossed = np.where(results.mark > 0, results.mark - 1, table.first)
+    place = np.where(ABOUT_OXYGEN[table.hazard], 0, crossed)
+    cases = np.arange(table.size)
+    return Evaluation(
+        table=table,
+        results=results,
+        guards=guards,
+        severity=severity,
+        limits=limits,
+        values=values,
+        decisive_limit=limits[cases, place],
+        decisive_value=values[cases, place],
+    )
 
 
 def deciding(base: Evaluation, assumed: Assumptions, at: np.datetime64) -> Mask:

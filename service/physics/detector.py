@@ -12,6 +12,7 @@ from service.physics.relaxation import LONGEST, kept_share
 from service.physics.roots import smallest_enough
 
 _EVERY: Final = slice(None)
+_TINY: Final = 1e-12
 
 
 def time_constant(t90: ArrayLike) -> Floats:
@@ -194,24 +195,31 @@ class _Segment:
     def time_of_height(self) -> Floats:
         """Time of the highest reading: where the reading meets the fraction, or an end."""
         # A reading that falls at first may rise to its end, or be highest where it began.
-        higher_at_end = self.read(self.length) > self.reading
-        top = np.where((self.start > self.reading) | higher_at_end, self.length, 0.0)
-        overtakes = (self.start > self.reading) & ~(self._ahead(self.length) > 0.0)
-        rows = np.flatnonzero(overtakes)
-        top[rows] = smallest_enough(
-            lambda some, elapsed: self._ahead(elapsed, rows[some]), self.length[rows]
-        )
+        at_end = self.read(self.length)
+        top = np.where((self.start > self.reading) | (at_end > self.reading), self.length, 0.0)
+        left = np.exp(-np.minimum(self.rate * self.length, LONGEST))
+        fraction = self.steady + (self.start - self.steady) * left
+        overtaken = np.flatnonzero((self.start > self.reading) & ~(fraction > at_end))
+        top[overtaken] = np.minimum(top[overtaken], self._meets(overtaken))
         return top
+
+    def _meets(self, rows: Integers) -> Floats:
+        """Time at which a reading on its way up meets a fraction on its way down.
+
+        Setting the two solutions equal gives t = tau q ln(1 + s q) / (s q) with s = 1 - k tau and
+        q = (G0 - y0) / (k tau (G0 - Gs)); the quotient is 1 where s is 0.
+        """
+        lag = self.rate[rows] * self.constant[rows]
+        start = self.start[rows]
+        above = (start - self.reading[rows]) / (lag * (start - self.steady[rows]))
+        grown = np.maximum((1.0 - lag) * above, -1.0 + _TINY)
+        small = np.abs(grown) < _TINY
+        stretch = np.where(small, 1.0, np.log1p(grown) / np.where(small, 1.0, grown))
+        meets: Floats = self.constant[rows] * above * stretch
+        return meets
 
     def time_of(self, level: Floats, top: Floats, rows: Integers) -> Floats:
         """Time of a level on the way up to the height, for rows that reach it."""
         return smallest_enough(
             lambda some, elapsed: level[rows[some]] - self.read(elapsed, rows[some]), top[rows]
         )
-
-    def _ahead(self, elapsed: Floats, chosen: Integers | slice = _EVERY) -> Floats:
-        """By how much the fraction is above the reading, which rises while it is."""
-        left = np.exp(-np.minimum(self.rate[chosen] * elapsed, LONGEST))
-        fraction = self.steady[chosen] + (self.start[chosen] - self.steady[chosen]) * left
-        ahead: Floats = fraction - self.read(elapsed, chosen)
-        return ahead

@@ -10,9 +10,7 @@ import numpy as np
 
 from service.audit.air import AIRFLOWS, AS_MEASURED, BOOSTED, DESIGN, LOST
 from service.audit.assessment import SEVERITIES
-from service.audit.evaluation import Evaluation
 from service.audit.hazards import (
-    ABOUT_OXYGEN,
     FLAMMABLE,
     HAZARDS,
     MEAN_8H,
@@ -47,7 +45,7 @@ from service.audit.rules.words import (
     number,
     oxygen_text,
 )
-from service.physics.arrays import Floats, Mask
+from service.physics.arrays import Mask
 
 LOW_MARKS: Final = ("deficient", "danger", "critical")
 HIGH_MARKS: Final = ("enriched", "second", "third")
@@ -105,11 +103,10 @@ class CaseRule:
         if self.release == ALL_VESSELS:
             # A single one is what the largest vessel says already.
             chosen &= np.diff(table.member_start) > 1
-        value, limit = decisive(tables.cases)
         return Judged(
             broken=chosen & (results.mark > 0),
-            measure=value,
-            limit=limit,
+            measure=tables.cases.decisive_value,
+            limit=tables.cases.decisive_limit,
             consequence=tables.cases.severity,
             turns_at=never(table.size),
         )
@@ -125,19 +122,6 @@ class CaseRule:
                 "cases": [case_evidence(tables, each) for each in rows[1:]],
             },
         )
-
-
-def decisive(cases: Evaluation) -> tuple[Floats, Floats]:
-    """Value and limit of the worst mark crossed, else of the first there is; in percent.
-
-    Oxygen is always held against its first mark, so that its measure is one number however low it
-    falls.
-    """
-    table, mark = cases.table, cases.results.mark
-    crossed = np.where(mark > 0, mark - 1, table.first)
-    place = np.where(ABOUT_OXYGEN[table.hazard], 0, crossed)[:, np.newaxis]
-    value: Floats = np.take_along_axis(cases.values, place, axis=1)[:, 0]
-    return value, np.take_along_axis(cases.limits, place, axis=1)[:, 0]
 
 
 def _statement(tables: Tables, row: int) -> str:
