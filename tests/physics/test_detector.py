@@ -5,10 +5,11 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.integrate import solve_ivp
 
+from service.physics.averages import fraction_at
 from service.physics.constants import OXYGEN_IN_AIR
 from service.physics.detector import alarm_time, reading_after, time_constant
 from service.physics.errors import OutOfRange
-from service.physics.ventilation import course
+from service.physics.ventilation import course, oxygen_from_fraction
 
 
 def integrated_alarm(run_of, level, tau, until):
@@ -35,12 +36,15 @@ def integrated_alarm(run_of, level, tau, until):
 
 
 def test_time_constant_of_a_sensor_of_thirty_seconds():
-    """Step response 1 - exp(-t/tau): tau = 30 s / ln 10 = 13.0288 s, by hand."""
+    """M-1. Step response 1 - exp(-t/tau): tau = 30 s / ln 10 = 13.0288 s, by hand."""
     assert_allclose(time_constant(30.0), 13.0288, rtol=1e-5)
 
 
 def test_alarm_of_a_supplied_room_agrees_with_an_integrator():
-    """100 m3, 0.2 m3/s supplied, 0.05 m3/s of gas, alarm at 19.5 %: against SciPy's DOP853."""
+    """100 m3, 0.2 m3/s supplied, 0.05 m3/s of gas, alarm at 19.5 %: against SciPy's DOP853.
+
+    M-2 and M-3, the root of methods M1: after 193.14 s, when the room itself is at 19.345 %.
+    """
     tau = 30.0 / np.log(10.0)
     level = (OXYGEN_IN_AIR - 0.195) / OXYGEN_IN_AIR
 
@@ -51,6 +55,8 @@ def test_alarm_of_a_supplied_room_agrees_with_an_integrator():
     run = course([[3600.0]], release=0.05, supply=0.2, exhaust=0.0, volume=100.0)
     found = alarm_time(run, np.array([0]), [level], t90=[30.0], delay=[10.0])
     assert_allclose(found, integrated_alarm(flows, level, tau, 3600.0) + 10.0, rtol=1e-7)
+    assert_allclose(found, 193.14, atol=0.05)
+    assert_allclose(oxygen_from_fraction(fraction_at(run, [found])), 0.19345, atol=1e-5)
 
 
 @pytest.mark.parametrize("seed", range(12))
