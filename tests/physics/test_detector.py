@@ -117,3 +117,10 @@ def test_a_sensor_that_lags_a_slow_room_by_a_steady_ramp_reads_true_after_hours(
     rate, tau, elapsed = 1e-6, 13.0288, 1e5
     reading = reading_after(elapsed, reading=0.0, start=1.0, steady=0.0, rate=rate, constant=tau)
     assert_allclose(reading, np.exp(-rate * elapsed) / (1.0 - rate * tau), rtol=1e-12)
+
+
+def test_a_room_that_is_still_rising_when_its_reading_has_caught_up_gives_its_alarm():
+    """G = Gs + (G0 - Gs) e^-kt, and a reading without lag: t = ln((Gs - G0)/(Gs - level))/k."""
+    run = course([[345_600.0]], release=0.05, supply=0.0, exhaust=0.1, volume=100.0, start=5e-4)
+    found = alarm_time(run, np.array([0]), [0.1], t90=[1e-3], delay=[0.0])
+    assert_allclose(found, np.log((0.5 - 5e-4) / (0.5 - 0.1)) / 1e-3, rtol=1e-4)
