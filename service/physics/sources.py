@@ -360,6 +360,15 @@ _METHODS: Final = (
         False,
     ),
     Method(
+        "detectors/zeroed-elsewhere",
+        "M4",
+        "What an oxygen cell reads in clean air that was zeroed at another pressure.",
+        "y = C0 p / p_zero",
+        ("ideal-gas",),
+        "electrochemical cells, which give a current by partial pressure",
+        False,
+    ),
+    Method(
         "egress/margin",
         "M2",
         "Whether people are out before the room is dangerous.",
@@ -403,6 +412,15 @@ _METHODS: Final = (
         "every input within the range of its formula, and a number",
         ("common-practice",),
         "any room; one that cannot be computed never passes for safe",
+        False,
+    ),
+    Method(
+        "records/plausible",
+        "N",
+        "Whether numbers that can stand in a record can hardly be, or speak of wear.",
+        "one recorded number against another, or against what is met in practice",
+        ("common-practice",),
+        "numbers that a formula would take; they are computed with as they stand",
         False,
     ),
     Method(
