@@ -26,17 +26,27 @@ _MOMENTS: Final = frozenset({"counted_at", "silenced_since", "from", "to"})
 
 
 def load_demo(session: WriteSession) -> int:
-    """Create the demo estate, as one change a site; count its records."""
-    estate = json.loads(_text())
-    number = 0
-    for site in estate["sites"]:
-        changes = [
-            RecordChange(CREATE, record["kind"], None, _dated(record["fields"], session.moment))
-            for record in _of_site(site)
-        ]
-        carry_out(session, changes, "demo-load")
-        number += len(changes)
-    return number
+    """Create the demo estate, what stands in a site as one change; count its records."""
+    return sum(_load_site(session, site) for site in json.loads(_text())["sites"])
+
+
+def _load_site(session: WriteSession, site: Mapping[str, Any]) -> int:
+    tag, own_basis = site["fields"]["tag"], site.get("own_basis")
+    fields = {**site["fields"], "demo": True}
+    made = carry_out(session, [RecordChange(CREATE, "site", None, fields)], "demo-load")
+    if own_basis is not None:
+        # A site is judged by its own basis once there is one, and before it has rooms to judge.
+        basis = RecordChange(CREATE, "basis", None, {**own_basis, "site": tag})
+        carry_out(session, [basis], "demo-load")
+        judged = {"basis": own_basis["tag"]}
+        to_own = RecordChange(CHANGE, "site", made.items[0].record.id, judged)
+        carry_out(session, [to_own], "demo-load")
+    changes = [
+        RecordChange(CREATE, kind, None, _dated({**fields, "site": tag}, session.moment))
+        for kind, fields in _records(site)
+    ]
+    carry_out(session, changes, "demo-load")
+    return len(changes) + (1 if own_basis is None else 2)
 
 
 def remove_demo(session: WriteSession) -> int:
@@ -64,11 +74,11 @@ def remove_demo(session: WriteSession) -> int:
     return removed
 
 
-def _of_site(site: Mapping[str, Any]) -> Iterator[Mapping[str, Any]]:
-    tag = site["fields"]["tag"]
-    yield {"kind": "site", "fields": {**site["fields"], "demo": True}}
-    for record in site["records"]:
-        yield {"kind": record["kind"], "fields": {**record["fields"], "site": tag}}
+def _records(site: Mapping[str, Any]) -> Iterator[tuple[str, dict[str, Any]]]:
+    """Give the kind and the fields of each record; what a group shares is said once."""
+    for group in site["records"]:
+        for fields in group["each"]:
+            yield group["kind"], {**group.get("shared", {}), **fields}
 
 
 def _dated(fields: Mapping[str, Any], moment: datetime) -> dict[str, Any]:
