@@ -40,6 +40,7 @@ from service.physics.constants import (
     SECONDS_PER_HOUR,
     ZERO_CELSIUS,
 )
+from service.physics.real_gas import REAL_GASES
 
 Values: TypeAlias = Floats | str | bool
 Missing: TypeAlias = Callable[[CaseTable], Mask]
@@ -437,7 +438,29 @@ def _stands_fast(given: Columns, rooms: Mask) -> Columns:
     return replace(given, vessels=replace(vessels, mobile=filled))
 
 
+def _of_unknown_equation(table: CaseTable) -> Mask:
+    """Cylinders by volume of a gas that no equation of state is at hand for."""
+    given = table.given
+    real = np.array([gas in REAL_GASES for gas in given.gases])
+    own = ~real[given.fluids.gas[given.vessels.fluid]]
+    return all_of(~np.isnan(given.vessels.charge_pressure), own, table.stock.present)
+
+
+def _charge(table: CaseTable) -> Floats:
+    return table.stock.full_mass
+
+
 ASSUMPTIONS: Final = (
+    Assumption(
+        "vessel",
+        "capacity_kg",
+        _of_unknown_equation,
+        _charge,
+        "Its mass is that of an ideal gas at its pressure: a mixture of the site's own.",
+        COMMON_PRACTICE,
+        True,
+        None,
+    ),
     Assumption(
         "room",
         "people.attended",

@@ -238,6 +238,7 @@ class Fluids:
     helium: Mask
     limit_named: Integers  # column of the basis's flammable limits; -1 where it has none
     own_limit: Floats  # lower flammable limit recorded with the fluid
+    liquid_density: Floats  # of what is kept as a liquid [kg/m3]
     gas: Integers  # row of the names of gases
 
 
@@ -559,6 +560,12 @@ def _fluids(fluids: Sequence[FluidValues], gases: _Distinct[str]) -> Fluids:
             for fluid in fluids
         ),
         own_limit=_floats(fluid.flammable_limit for fluid in fluids),
+        liquid_density=_floats(
+            fluid.condensed_density
+            if fluid.pressure_liquid_density is None
+            else fluid.pressure_liquid_density
+            for fluid in fluids
+        ),
         gas=_integers(gases.row(fluid.record.tag) for fluid in fluids),
     )
 

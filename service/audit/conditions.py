@@ -9,6 +9,7 @@ from service.audit.columns import ROOM_KINDS, Columns, is_one_of
 from service.physics.ambient import oxygen_critical_mark, oxygen_danger_mark, station_pressure
 from service.physics.arrays import Floats, Mask
 from service.physics.constants import OXYGEN_IN_AIR, ROOM_TEMPERATURE
+from service.physics.egress import time_to_leave
 from service.physics.layering import breathing_zone_volume, ceiling_zone_volume
 
 # Height taken to turn a volume into a floor where neither floor nor height is known: a low
@@ -65,7 +66,7 @@ def conditions(given: Columns) -> Conditions:
         high_marks=np.stack([bases.enriched, bases.rich_second, bases.rich_third], axis=1),
         natural_flow=_air_changes(given) * volume,
         way_out=way_out,
-        out_after_alarm=bases.react + way_out / bases.walk,
+        out_after_alarm=time_to_leave(bases.react, way_out, bases.walk),
     )
 
 

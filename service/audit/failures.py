@@ -8,6 +8,7 @@ import numpy as np
 from service.audit.columns import Columns
 from service.physics.arrays import Floats, Integers, Mask
 from service.physics.constants import ATMOSPHERE_HIGHEST, ATMOSPHERE_LOWEST
+from service.physics.real_gas import HIGHEST_PRESSURE
 
 Held = Callable[[Floats], Mask]
 
@@ -76,6 +77,7 @@ def _of_vessels(given: Columns) -> Iterator[tuple[int, str]]:
     sound_fluid = (
         _positive(fluids.molar_mass)
         & _positive(fluids.condensed_density)
+        & _positive(fluids.liquid_density)
         & (fluids.oxygen_fraction >= 0.0)
         & (fluids.oxygen_fraction <= 1.0)
     )
@@ -104,6 +106,8 @@ def _of_vessels(given: Columns) -> Iterator[tuple[int, str]]:
     ):
         held = _unknown_or(_positive, values)
         yield from _bad(vessels.room, held, f"The {what} of a vessel is not above 0.")
+    sound = np.isnan(vessels.charge_pressure) | (vessels.charge_pressure <= HIGHEST_PRESSURE)
+    yield from _bad(vessels.room, sound, "The charge pressure of a cylinder is above 500 bar.")
     limits = _unknown_or(_is_share, fluids.own_limit)[vessels.fluid]
     yield from _bad(
         vessels.room, limits, "The lower flammable limit of a fluid is not between 0 and 100 %."

@@ -42,6 +42,7 @@ class FluidValues:
     hazards: frozenset[str]  # of asphyxiant, oxidiser, toxic, flammable
     settles: str  # low, high or methane (judging.md 6)
     flammable_limit: float | None = None  # [1] lower limit of a site's own fluid, by volume
+    pressure_liquid_density: float | None = None  # [kg/m3] of a solid that is also kept as liquid
 
 
 @dataclass(frozen=True, slots=True)

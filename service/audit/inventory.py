@@ -17,9 +17,10 @@ from service.audit.columns import (
     is_one_of,
 )
 from service.audit.conditions import Conditions, known
-from service.physics.arrays import Floats, Integers, Mask, quotient
+from service.physics.arrays import Floats, Integers, Mask
 from service.physics.constants import OXYGEN_IN_AIR
 from service.physics.evaporation import dry_ice_mass_rate
+from service.physics.filling import filling_gas_rate, filling_time
 from service.physics.gas import gas_density, gas_volume_of_mass
 from service.physics.real_gas import REAL_GASES, compressed_gas_density
 
@@ -66,7 +67,8 @@ class Inventory:
 def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
     """Work out what each vessel holds and loses."""
     vessels, fluids = given.vessels, given.fluids
-    density = fluids.condensed_density[vessels.fluid]
+    # Litres are of liquid; ice is kept by mass.
+    density = fluids.liquid_density[vessels.fluid]
     present = vessels.state != _WITHDRAWN
     capacity = known(vessels.capacity_mass, vessels.capacity_volume * density)
     charged = ~np.isnan(vessels.charge_pressure)
@@ -97,7 +99,12 @@ def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
     refilled = (vessels.filled_by != _EXCHANGED) & ~is_one_of(vessels.kind, (ICE, CYLINDER))
     mass_rate = evaporation + use
     fills = known(vessels.fill_flow, given.bases.fill_flow[vessels.room])
-    gas_filled = fills * density * gas_per_mass
+    litres = known(vessels.capacity_volume, 0.0)
+    gas_density_here = 1.0 / gas_per_mass
+
+    def lost(share: Floats | float) -> Floats:
+        return filling_gas_rate(fills, share, density, gas_density_here)
+
     loses = present & (vessels.vent_to != _OUTDOORS) & is_filled_in_room(given)
     automatic = present & (vessels.filled_by == _AUTOMATIC)
     automatic &= ~is_one_of(vessels.kind, (ICE, CYLINDER))
@@ -120,11 +127,9 @@ def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
         rate=mass_rate * gas_per_mass,
         lasts=_lasts(held, mass_rate, refilled),
         spilt=np.where(spills, dry_ice_mass_rate(held, loose) * gas_per_mass, 0.0),
-        filling=np.where(loses, gas_filled * _transfer_loss(given), 0.0),
-        filled_in=np.where(
-            loses, quotient(known(vessels.capacity_volume, 0.0), fills, where_zero=0.0), 0.0
-        ),
-        overfill=np.where(automatic, gas_filled, 0.0),
+        filling=np.where(loses, lost(_transfer_loss(given)), 0.0),
+        filled_in=np.where(loses, filling_time(litres, fills), 0.0),
+        overfill=np.where(automatic, lost(1.0), 0.0),
         overfill_lasts=np.where(closes, known(vessels.closes_in, CLOSES_IN), np.inf),
         shut_off_holds=closes,
     )

@@ -8,6 +8,7 @@ from itertools import pairwise
 from typing import Any, Final
 
 from service.audit.bases import basis_problems, effective
+from service.changes.room_values import pressure_liquid_density
 from service.clock import moment_of
 from service.errors import FieldError
 from service.store.records import Record
@@ -19,6 +20,8 @@ Records = Mapping[str, Record]
 MOST_CONTENTS: Final = 1.2
 #: What a free area may be above width times height, by rounding of the three.
 _ROUNDED: Final = 1.01
+#: Kinds that keep as a liquid what is a solid at the pressure of a room.
+_UNDER_PRESSURE: Final = ("pressurised-dewar", "tank")
 #: A detector is measured to its middle, a room to its ceiling as somebody held the tape.
 _HEIGHT_TOLERANCE: Final = 0.05  # [m]
 MOST_OUTAGES: Final = 100
@@ -286,7 +289,14 @@ def _vessel_kind_of_amount(record: Record, records: Records) -> Iterator[FieldEr
     if fields["kind"] == "dry-ice-box" and not fluid.fields["solid"]:
         yield FieldError("/kind", "not-with-fluid", "A dry-ice box holds a solid.")
     if fluid.fields["solid"] and fields["kind"] not in _WITHOUT_LIQUID:
-        yield FieldError("/kind", "not-with-fluid", "A solid is kept in a dry-ice box.")
+        under_pressure = pressure_liquid_density(fluid) is not None
+        if not (under_pressure and fields["kind"] in _UNDER_PRESSURE):
+            yield FieldError(
+                "/kind",
+                "not-with-fluid",
+                "A solid is kept in a dry-ice box; liquid carbon dioxide in a cylinder, a "
+                "pressurised-dewar or a tank.",
+            )
 
 
 def _vessel_evaporation(record: Record, _records: Records) -> Iterator[FieldError]:

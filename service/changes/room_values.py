@@ -22,6 +22,7 @@ from service.audit.inputs import (
 )
 from service.changes.kinds import rooms_reached
 from service.clock import end_of_day, moment_of
+from service.physics.fluids import FLUIDS
 from service.store.records import Record
 
 ATMOSPHERE: Final = 101_325.0  # [Pa]; what gauge pressures are counted from
@@ -143,7 +144,14 @@ def fluid_values(fluid: Record) -> FluidValues:
         hazards=frozenset(fields["hazards"]),
         settles=fields["settles"],
         flammable_limit=_scaled(fields["lfl_pct"], PERCENT),
+        pressure_liquid_density=pressure_liquid_density(fluid),
     )
+
+
+def pressure_liquid_density(fluid: Record) -> float | None:
+    """Density of a shipped fluid that is kept as ice and, under pressure, as a liquid too."""
+    known = FLUIDS.get(fluid.fields["tag"]) if fluid.site_id is None else None
+    return None if known is None else known.pressure_liquid_density_kg_m3
 
 
 def _pit_values(pit: Mapping[str, Any] | None) -> PitValues | None:

@@ -45,6 +45,9 @@ class FluidData:
         Where its gas is looked for first; "methane" is high, and low while the gas is cold.
     solid : bool
         Whether it is stored as a solid.
+    pressure_liquid_density_kg_m3 : float or None
+        Of a fluid without liquid at 101 325 Pa: saturated liquid at the 20 bar absolute at which
+        it is kept in insulated tanks. [kg/m3]
     """
 
     slug: str
@@ -60,6 +63,7 @@ class FluidData:
     settles: Settles
     oxygen_fraction: float = 0.0
     solid: bool = False
+    pressure_liquid_density_kg_m3: float | None = None
 
 
 _ASPHYXIANT: Final[frozenset[Hazard]] = frozenset({"asphyxiant"})
@@ -220,7 +224,7 @@ _FLUIDS: Final = (
     ),
     FluidData(
         slug="carbon-dioxide",
-        name="Carbon dioxide (dry ice)",
+        name="Carbon dioxide",
         molar_mass_kg_mol=0.0440098,
         boiling_k=194.685,
         liquid_density_kg_m3=1562.0,
@@ -231,6 +235,7 @@ _FLUIDS: Final = (
         hazards=_TOXIC,
         settles="low",
         solid=True,
+        pressure_liquid_density_kg_m3=1029.4,
     ),
 )
 

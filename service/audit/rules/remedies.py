@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import math
 
+import numpy as np
+
 from service.audit.air import AIRFLOWS, LOST
 from service.audit.columns import ROOM_KINDS
 from service.audit.hazards import CLEAN, HAZARDS
@@ -130,10 +132,13 @@ def _allowed_amount(tables: Tables, row: int) -> str:
     vessels = _vessels(tables, row)
     mass = [float(table.stock.held_mass[vessel]) for vessel in vessels]
     given = table.given
-    if any(math.isnan(float(given.vessels.capacity_volume[vessel])) for vessel in vessels):
+    volume = np.where(
+        np.isnan(given.vessels.charge_pressure), given.vessels.capacity_volume, np.nan
+    )
+    if any(math.isnan(float(volume[vessel])) for vessel in vessels):
         return f"at most {at_most(share * sum(mass))} kg of {gas}"
     litres = [
-        each / float(given.fluids.condensed_density[given.vessels.fluid[vessel]]) * _LITRES
+        each / float(given.fluids.liquid_density[given.vessels.fluid[vessel]]) * _LITRES
         for each, vessel in zip(mass, vessels, strict=True)
     ]
     return f"at most {at_most(share * sum(litres))} L of {gas}"
