@@ -28,6 +28,7 @@ VOLUMES = st.floats(4.0, 900.0).map(lambda value: round(value, 3))
 LITRES = st.floats(0.5, 400.0).map(lambda value: round(value, 2))
 FLOWS = st.floats(0.0, 3000.0).map(lambda value: round(value, 1))
 MAYBE = st.sampled_from([None, True, False])
+DAYS = st.sampled_from([None, "2026-11-01", "2027-02-20"])
 WAITS = st.sampled_from(
     [timedelta(seconds=1), timedelta(hours=5), timedelta(days=3), timedelta(days=170)]
 )
@@ -40,6 +41,7 @@ class Histories(RuleBasedStateMachine):
     vessels = Bundle("vessels")
     units = Bundle("units")
     detectors = Bundle("detectors")
+    controls = Bundle("controls")
 
     #: Addresses of two fresh databases; set by the test.
     fresh = None
@@ -52,6 +54,7 @@ class Histories(RuleBasedStateMachine):
         self.both = [self.open.enter_context(installation(url, rooms_per_change=2)) for url in urls]
         self.ids = {}
         self.live_rooms = []
+        self.controlled = {}
         self.told = []
         self.made = 0
 
@@ -185,9 +188,53 @@ class Histories(RuleBasedStateMachine):
     def report_detector(self, detector, state):
         self.change("detectors", detector, {"state": state})
 
-    @rule(vessel=consumes(vessels))
+    @rule(target=vessels, vessel=consumes(vessels))
     def remove_vessel(self, vessel):
-        assert self.remove("vessels", vessel)
+        """One that a control names stays."""
+        removed = self.remove("vessels", vessel)
+        assert removed == (vessel not in self.controlled.values())
+        return multiple() if removed else vessel
+
+    @rule(target=controls, vessel=vessels, on=DAYS)
+    def control_vessel(self, vessel, on):
+        tag = self.tag("control")
+        fields = {"vessel": vessel, "kind": "bund", "area_m2": 1.5, "checked_on": on}
+        self.create("controls", tag, fields | {"check_every_days": 90})
+        self.controlled[tag] = vessel
+        return tag
+
+    @rule(control=controls, room=rooms)
+    def give_control_to_room(self, control, room):
+        fields = {"vessel": None, "room": room, "kind": "training", "area_m2": None}
+        assert self.change("controls", control, fields) == 200
+        self.controlled[control] = None
+
+    @rule(control=consumes(controls))
+    def remove_control(self, control):
+        assert self.remove("controls", control)
+        del self.controlled[control]
+
+    @rule(room=rooms, other=st.none() | rooms, flow=st.floats(-100.0, 100.0))
+    def add_opening(self, room, other, flow):
+        if room != other:
+            fields = {"room": room, "other_room": other, "kind": "door", "net_flow_m3_h": flow}
+            self.create("openings", self.tag("opening"), fields)
+
+    @rule(unit=units, day=st.sampled_from(["2027-03-02", "2027-03-09", "2027-06-01"]))
+    def plan_outage(self, unit, day):
+        outage = {"from": f"{day}T06:00:00Z", "to": f"{day}T16:00:00Z", "reason": "filters"}
+        self.change("ventilation-units", unit, {"outages": [outage]})
+
+    @rule(unit=units, trigger=st.just("manual") | detectors)
+    def boost_unit(self, unit, trigger):
+        """Refused where the detector stands elsewhere."""
+        boost = {"boost_flow_m3_h": 1200.0, "boost_trigger": trigger}
+        assert self.change("ventilation-units", unit, boost) in (200, 422)
+
+    @rule(vessel=vessels, relief=MAYBE, plug=st.sampled_from([None, "vented", "sealed"]))
+    def look_after_vessel(self, vessel, relief, plug):
+        fields = {"relief": {"fitted": relief, "inspected_on": "2027-01-10"}, "neck_plug": plug}
+        assert self.change("vessels", vessel, fields) == 200
 
     @rule(target=rooms, room=consumes(rooms))
     def remove_room(self, room):
