@@ -81,21 +81,6 @@ METHANE = a_fluid(
     hazards=frozenset({"asphyxiant", "flammable"}),
     settles="methane",
 )
-HYDROGEN = a_fluid(
-    "hydrogen",
-    molar_mass=0.0020159,
-    condensed_density=70.83,
-    boiling_point=20.271,
-    hazards=frozenset({"asphyxiant", "flammable"}),
-    settles="high",
-)
-NITROUS_OXIDE = a_fluid(
-    "nitrous-oxide",
-    molar_mass=0.0440128,
-    condensed_density=1230.45,
-    boiling_point=184.684,
-    hazards=frozenset({"asphyxiant", "oxidiser", "toxic"}),
-)
 NITROUS_OXIDE = a_fluid(
     "nitrous-oxide",
     molar_mass=0.0440128,
