@@ -6,6 +6,7 @@ import socket
 import sys
 from argparse import ArgumentParser, ArgumentTypeError, Namespace
 from dataclasses import replace
+from threading import Thread
 from types import FrameType
 from typing import TYPE_CHECKING
 
@@ -102,7 +103,10 @@ def _serve(settings: Settings, listener: socket.socket) -> int:
 
 def _run_server(app: "Application", settings: Settings, listener: socket.socket) -> int:
     from service.cli.server import AnnouncingServer
+    from service.physics.properties import critical_point
 
+    # The property library takes seconds to load, which no change should have to wait for.
+    Thread(target=critical_point, args=("nitrogen",), name="properties", daemon=True).start()
     host, port = listener.getsockname()[:2]
     scheme = "http" if settings.tls_cert is None else "https"
     named = f"[{host}]" if ":" in host else host
