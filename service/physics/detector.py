@@ -199,8 +199,9 @@ class _Segment:
         top = np.where((self.start > self.reading) | (at_end > self.reading), self.length, 0.0)
         left = np.exp(-np.minimum(self.rate * self.length, LONGEST))
         fraction = self.steady + (self.start - self.steady) * left
-        # Only a fraction that falls can be overtaken; one that rises is equal at last by rounding.
-        falls = self.start > self.steady
+        # Only a fraction that falls can be overtaken; one that rises or that nothing moves is equal
+        # at last by rounding.
+        falls = (self.start > self.steady) & (self.rate > 0.0)
         overtaken = np.flatnonzero(falls & (self.start > self.reading) & ~(fraction > at_end))
         top[overtaken] = np.minimum(top[overtaken], self._meets(overtaken))
         return top

@@ -5,6 +5,7 @@ The cells are this service's own practice: common practice, no source.
 
 from dataclasses import replace
 from datetime import timedelta
+from math import log
 
 import pytest
 
@@ -303,6 +304,17 @@ def test_where_danger_equals_deficient_people_have_until_between_danger_and_crit
     assert 15.82 < case.oxygen_pct < 19.5
     # The second mark is crossed, but not the level that people must be out by.
     assert severity(room, BOIL_OFF) == "major"
+
+
+@pytest.mark.parametrize("t90", [1.0, 30.0])
+def test_a_detector_where_nothing_moves_reads_what_is_there(t90):
+    """A pit without air keeps its gas, and the reading comes up to it and stays."""
+    vessel = a_vessel(20, measured_evaporation=0.0)
+    room = a_room(50, kind="pit", vessels=(vessel,), detectors=(a_detector(t90=t90),))
+    case = case_of(room)
+    tau, at_alarm = t90 / log(10.0), (20.95 - 19.5) / (20.95 - case.oxygen_pct)
+    assert case.alarm_s == pytest.approx(-tau * log(1.0 - at_alarm), rel=1e-8)
+    assert severity(room, AT_ONCE) == "minor"
 
 
 def test_a_silence_that_has_not_begun_is_none_yet():
