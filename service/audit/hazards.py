@@ -25,9 +25,9 @@ PEAK, MEAN_15MIN, MEAN_8H = range(3)
 MEASURES: Final = ("peak", "mean-15min", "mean-8h")
 WINDOWS: Final = {MEAN_15MIN: 900.0, MEAN_8H: 28_800.0}  # [s]
 
-# A level of flammable gas is what share of this limit it is: below every real one, so that no gas
-# weighs more than itself.
-REFERENCE_LIMIT: Final = 0.001
+# A level of flammable gas is what share of this limit it is: far below every real one, so that no
+# gas weighs more than itself even where a record slips by a factor of a thousand.
+REFERENCE_LIMIT: Final = 1e-6
 CARBON_DIOXIDE_IN_AIR: Final = 0.0005  # what a case starts from (judging 1)
 
 
