@@ -27,7 +27,6 @@ from service.audit.solve import Results, proven_to_hold
 from service.physics.arrays import Floats, Integers, Mask, quotient, rounded, sum_by_group
 from service.physics.constants import OXYGEN_IN_AIR
 from service.physics.detector import alarm_time
-from service.physics.ventilation import flow_to_restore
 
 OXYGEN_GAS: Final = 0  # row of the gases
 
@@ -256,13 +255,9 @@ def _ventilation(table: CaseTable, results: Results) -> Mask:
     """Measured in date, holds what lasts, and brings the room back in time."""
     proven = AIRFLOWS.index(PROVEN)
     flow = np.maximum(table.air.supply[proven], table.air.exhaust[proven])[table.room]
-    wanted = flow_to_restore(
-        results.level,
-        table.first_mark,
-        volume=table.volume,
-        within=table.given.bases.restore[table.room],
+    holds: Mask = (
+        proven_to_hold(table, results)[table.room] & (flow > 0.0) & (flow >= results.clearing)
     )
-    holds: Mask = proven_to_hold(table, results)[table.room] & (flow > 0.0) & (flow >= wanted)
     return holds
 
 

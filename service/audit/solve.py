@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final
 
 import numpy as np
@@ -36,6 +36,8 @@ from service.physics.ventilation import (
     smallest_supply_to_hold_course,
 )
 
+_AS_MEASURED: Final = AIRFLOWS.index(AS_MEASURED)
+
 # A mark that is not there, as a level that no course reaches.
 _BEYOND_ALL: Final = 1e9
 
@@ -56,6 +58,7 @@ class Results:
     mark: Integers  # worst mark crossed, 0 to 3
     nearness: Floats  # way from clean air to the first mark that was gone [1]
     required: Floats  # outdoor air that a fan must move to hold the case [m3/s]
+    clearing: Floats  # air that must count to bring the room back in time [m3/s]
     restore: Floats  # outdoor air that a fan must move to bring the room back in time [m3/s]
     course: Course  # of the level, unrounded
 
@@ -72,13 +75,15 @@ def solve(table: CaseTable) -> Results:
         runs, start = courses(table)
         level = np.maximum(runs.highest, start)
         means = _means(table, runs)
-        oxygen = rounded(oxygen_from_fraction(table.oxygen_taken * level))
+        # A room full of gas may be so by a rounding more; not-a-number passes.
+        oxygen = rounded(np.clip(oxygen_from_fraction(table.oxygen_taken * level), 0.0, 1.0))
         measured = np.take_along_axis(np.column_stack([level, means]), table.measured_on, axis=1)
         crossed = _crossed(table, measured, oxygen)
         mark = np.where(crossed.any(axis=1), 3 - np.argmax(crossed[:, ::-1], axis=1), 0)
         limit = table.first_mark
         pressure = table.conditions.pressure[table.room]
         clean = CLEAN[table.hazard]
+        recovered, clearing = _back(table, runs, level)
         return Results(
             level=rounded(level),
             means=rounded(means),
@@ -87,26 +92,34 @@ def solve(table: CaseTable) -> Results:
             at=rounded(np.where(level > runs.highest, 0.0, runs.at)),
             crossed=crossed,
             to_marks=_times_to_marks(table, runs, start, crossed),
-            recovered=rounded(np.where(mark > 0, runs.back_below(limit), np.nan)),
+            recovered=rounded(np.where(mark > 0, recovered, np.nan)),
             gas=rounded(table.instant + (table.rates * table.durations).sum(axis=1)),
             mark=mark,
             nearness=rounded((_of_first(table, measured) - clean) / (limit - clean)),
             required=_required(table, start),
-            restore=rounded(_restore(table, level)),
+            clearing=rounded(clearing),
+            restore=rounded(clearing * table.air.mixing_factor[_AS_MEASURED, table.room]),
             course=runs,
         )
 
 
 def courses(table: CaseTable) -> tuple[Course, Floats]:
     """Solve what starts from clean air first, and then what starts from there."""
-    start = CLEAN[table.hazard]
-    waits = table.starts_from != CLEAN_AIR
+    every = np.arange(table.size)
+    start = _starts(table, every)
+    return _run(table, every, start), start
+
+
+def _starts(table: CaseTable, rows: Integers) -> Floats:
+    """Level that some cases start from: of clean air, or the worst of what goes on before."""
+    start: Floats = CLEAN[table.hazard[rows]]
+    base = table.starts_from[rows]
+    waits = base != CLEAN_AIR
     if waits.any():
-        bases = np.unique(table.starts_from[waits])
-        highest = np.zeros(table.size)
-        highest[bases] = _run(table, bases, start[bases]).highest
-        start[waits] = highest[table.starts_from[waits]]
-    return _run(table, np.arange(table.size), start), start
+        bases, place = np.unique(base[waits], return_inverse=True)
+        highest = _run(table, bases, CLEAN[table.hazard[bases]]).highest
+        start[waits] = highest[place.reshape(-1)]
+    return start
 
 
 def _run(table: CaseTable, rows: Integers, start: Floats) -> Course:
@@ -182,12 +195,29 @@ def _of_first(table: CaseTable, measured: Floats) -> Floats:
     return first
 
 
-def _restore(table: CaseTable, level: Floats) -> Floats:
-    factor = table.air.mixing_factor[AIRFLOWS.index(AS_MEASURED), table.room]
-    within = table.given.bases.restore[table.room]
-    counted = flow_to_restore(level, table.first_mark, volume=table.volume, within=within)
-    moved: Floats = counted * factor
-    return moved
+def _back(table: CaseTable, runs: Course, level: Floats) -> tuple[Floats, Floats]:
+    """When each case is back inside its first mark, and the flow that brings it back in time.
+
+    Gas that gathers in a zone is worst there, but the same air has more to clear once it is mixed
+    through the room: whichever takes longer.
+    """
+    back = runs.back_below(table.first_mark)
+    clearing = _clearing(table, np.arange(table.size), level)
+    whole = table.conditions.volume[table.room]
+    rows = np.flatnonzero(table.volume < whole)
+    if rows.size:
+        mixed = replace(table, volume=whole)
+        start = _starts(mixed, rows)
+        run = _run(mixed, rows, start)
+        highest = np.maximum(run.highest, start)
+        back[rows] = np.maximum(back[rows], run.back_below(table.first_mark[rows]))
+        clearing[rows] = np.maximum(clearing[rows], _clearing(mixed, rows, highest))
+    return back, clearing
+
+
+def _clearing(table: CaseTable, rows: Integers, level: Floats) -> Floats:
+    within = table.given.bases.restore[table.room[rows]]
+    return flow_to_restore(level, table.first_mark[rows], volume=table.volume[rows], within=within)
 
 
 def _required(table: CaseTable, start: Floats) -> Floats:
@@ -214,7 +244,7 @@ def _required(table: CaseTable, start: Floats) -> Floats:
                 required[some] = _smallest_for_mean(
                     table, some, start[some], required[some], WINDOWS[window], by_supply=by_supply
                 )
-    moved = required * table.air.mixing_factor[AIRFLOWS.index(AS_MEASURED), table.room]
+    moved = required * table.air.mixing_factor[_AS_MEASURED, table.room]
     return rounded(moved[table.measured])
 
 
