@@ -302,10 +302,13 @@ def _vessel_kind_of_amount(record: Record, records: Records) -> Iterator[FieldEr
 def _vessel_evaporation(record: Record, _records: Records) -> Iterator[FieldError]:
     fields = record.fields
     if fields["measured_loss_kg_day"] is not None and fields["capacity_kg"] is None:
+        by_volume = fields["kind"] in _WITHOUT_LIQUID
         yield FieldError(
             "/measured_loss_kg_day",
             "other-amount",
-            "Its capacity is kept in litres; send 'measured_evaporation_l_day'.",
+            "Only what is kept in kilograms has a loss in kilograms."
+            if by_volume
+            else "Its capacity is kept in litres; send 'measured_evaporation_l_day'.",
         )
     for name in ("rated_evaporation_l_day", "measured_evaporation_l_day", "use_l_day"):
         if fields[name] is not None and fields["kind"] in _WITHOUT_LIQUID:

@@ -222,6 +222,8 @@ def test_a_cylinder_is_kept_by_kilograms_or_by_volume_and_pressure(stock):
         ({"working_pressure_kpa": 0.0}, "/working_pressure_kpa"),
         ({"contents_l": 20.0}, "/contents_l"),
         ({"contents_kg": 2.0}, "/contents_kg"),
+        ({"measured_loss_kg_day": 0.1}, "/measured_loss_kg_day"),
+        ({"use_l_day": 1.0}, "/use_l_day"),
         ({"capacity_kg": 10.0}, "/capacity_l"),
         ({"kind": "dry-ice-box"}, "/capacity_kg"),
     ):
