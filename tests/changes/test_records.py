@@ -24,6 +24,7 @@ from service.store.history import assessment_now, changes_of
 from service.store.live import count_records, list_records, record_by_tag
 from service.store.scope import Scope
 from service.store.session import WriteContext
+from service.store.tables.registry import KINDS
 
 
 def test_moving_a_vessel_recalculates_both_rooms(line):
@@ -251,19 +252,15 @@ def test_a_key_limited_to_sites_reaches_no_other(line):
     assert made.site_id == other.id
 
 
-def test_the_demo_estate_shows_every_standing_and_goes_without_a_trace(line):
+def test_the_demo_estate_goes_without_a_trace(line):
     assert line.run(load_demo) > 20
     sites = line.read(list_records, "site", {}, sort="tag", descending=False, after=None, limit=10)
-    assert [site.fields["demo"] for site in sites] == [True, True]
-    assert any(site.fields["elevation_m"] > 1600.0 for site in sites)
-    rooms = line.read(list_records, "room", {}, sort="tag", descending=False, after=None, limit=50)
-    assert len(rooms) == 10
-    statuses = [json.loads(line.read(assessment_now, room.id).status) for room in rooms]
-    assert {status["standing"] for status in statuses} == {
-        "in-order", "attention", "action", "stop",
-    }  # fmt: skip
+    assert {site.fields["demo"] for site in sites} == {True}
+    assert line.read(count_records, "room", {}) > 0
     line.run(remove_demo)
-    assert line.read(count_records, "site", {}) == 0
+    for kind in KINDS:
+        own = [{"site_id": site.id} for site in sites]
+        assert [line.read(count_records, kind, filters) for filters in own] == [0] * len(sites)
     assert verify(line.database).sound
 
 
