@@ -46,6 +46,7 @@ class Release:
     slug: str
     build: Callable[[Raising], Rows]
     sustained: bool  # goes on without any accident, and starts from clean air
+    noticed: bool  # seen and heard from its start, so that people leave without an alarm
     counts_in: frozenset[str]  # airflows in which it counts towards the standing
     safeguards: tuple[str, ...]  # those that count
     method: tuple[str, ...]
@@ -232,6 +233,7 @@ RELEASES: Final = (
         slug=BOIL_OFF,
         build=boil_off,
         sustained=True,
+        noticed=False,
         counts_in=frozenset({"as-measured", "lost"}),
         safeguards=(DETECTION,),
         method=("boil-off/normal-evaporation", "ventilation/hold"),
@@ -240,6 +242,7 @@ RELEASES: Final = (
         slug=FILLING,
         build=filling,
         sustained=True,
+        noticed=False,
         counts_in=_AS_MEASURED,
         safeguards=(),
         method=("filling/transfer-loss", "ventilation/hold"),
@@ -248,6 +251,7 @@ RELEASES: Final = (
         slug=OVERFILL,
         build=overfill,
         sustained=False,
+        noticed=False,
         counts_in=_AS_MEASURED,
         safeguards=(*_ACCIDENT, SHUT_OFF),
         method=("filling/overfill", "ventilation/hold", "ventilation/restore"),
@@ -256,6 +260,7 @@ RELEASES: Final = (
         slug=LARGEST_VESSEL,
         build=largest_vessel,
         sustained=False,
+        noticed=True,
         counts_in=_AS_MEASURED,
         safeguards=_ACCIDENT,
         method=("ventilation/restore",),
@@ -264,6 +269,7 @@ RELEASES: Final = (
         slug=ALL_VESSELS,
         build=all_vessels,
         sustained=False,
+        noticed=True,
         counts_in=_AS_MEASURED,
         safeguards=_ACCIDENT,
         method=("ventilation/restore",),
@@ -272,6 +278,7 @@ RELEASES: Final = (
         slug=SPILL,
         build=spill,
         sustained=False,
+        noticed=True,
         counts_in=_AS_MEASURED,
         safeguards=_ACCIDENT,
         method=("dry-ice/share-per-hour", "ventilation/hold", "ventilation/restore"),

@@ -44,6 +44,7 @@ _ENTRANCE = PLACES.index("entrance")
 _LOW, _HIGH, _METHANE = range(len(SETTLES))
 _SEALED = [ROOM_KINDS.index(kind) for kind in ("lift", "vehicle")]
 _PIT = ROOM_KINDS.index("pit")
+_NOTICED: Final = np.array([release.noticed for release in RELEASES])
 _OVERFILL = [release.slug for release in RELEASES].index(OVERFILL)
 
 # A mark that is not there, as a level that no course reaches.
@@ -75,7 +76,7 @@ class Safeguards:
     alone_suffices: Mask  # nobody inside counts as all
     nobody_counts: Mask  # a kind of room where nobody inside is a safeguard
     alarm: Floats  # [s] to the first alarm; not-a-number where there is none
-    margin: Floats  # [s] between being out and the second mark
+    margin: Floats  # [s] between being out and the second mark; not-a-number where nobody is
     late: Mask  # the second mark comes before people are out
     needs_low: Mask
     needs_high: Mask
@@ -128,8 +129,10 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
     warns = found.warns_outside[detector] & ~np.isnan(alarm) & (table.at_once[case] | in_time)
     has_low = _any(warns & found.is_low[detector], case, table.size)
     has_high = _any(warns & found.is_high[detector], case, table.size)
-    # A comparison with not-a-number is false: without an alarm people are not out.
-    out = first + out_after <= second
+    # What is seen and heard is a warning from the start, before any alarm.
+    warned = np.where(_NOTICED[table.release] & ~table.at_once, 0.0, first)
+    # A comparison with not-a-number is false: without any warning people are not out.
+    out = warned + out_after <= second
     return Safeguards(
         detectors=found,
         detection=(has_low | ~needs_low) & (has_high | ~needs_high) & (needs_low | needs_high),
@@ -139,7 +142,7 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
         alone_suffices=alone & is_one_of(kind, _SEALED),
         nobody_counts=is_one_of(kind, [*_SEALED, _PIT]),
         alarm=rounded(first),
-        margin=rounded(second - first - out_after),
+        margin=rounded(second - warned - out_after),
         late=~table.at_once & ~np.isnan(second) & ~out,
         needs_low=needs_low,
         needs_high=needs_high,
