@@ -53,3 +53,35 @@ def test_the_currency_is_spliced_into_its_own_place_whatever_a_room_is_called(sq
 def test_a_number_that_is_not_finite_is_never_answered(number):
     with pytest.raises(ValueError, match="finite"):
         rendered({"a": [{"b": number}]})
+
+
+def test_the_status_tells_toxic_and_flammable_gas_each_at_its_worst(sqlite_line):
+    """A closed store with dry ice, and hydrogen that gathers under its ceiling."""
+    line = sqlite_line
+    line.a_site()
+    room = line.a_room(
+        kind="walk-in", volume_m3=1000.0, occupied_fraction=0.0, temperature_c=20.0,
+        floor_area_m2=400.0, height_m=2.5,
+    )  # fmt: skip
+    # A kilogram makes 0.5466 m3 of ideal gas (methods A-4): 127 kg make 69.4 m3.
+    line.a_vessel(
+        room, tag="ICE", fluid="carbon-dioxide", kind="dry-ice-box", capacity_l=None,
+        capacity_kg=127.0, mobile=False,
+    )  # fmt: skip
+    line.a_vessel(room, tag="H", fluid="hydrogen", kind="cylinder", capacity_l=None, capacity_kg=1)
+    status = orjson.loads(line.read(assessment_now, room.id).status)
+    dioxide, flammable = status["peaks"]
+    assert (dioxide["gas"], dioxide["release"]) == ("carbon-dioxide", "boil-off")
+    # What has left the closed room meanwhile took some along: 1 - (1 - 0.0005) exp(-0.0694).
+    assert dioxide["peak_pct"] == pytest.approx(6.75, rel=0.003)
+    assert dioxide["deciding"] == {
+        "measure": "peak", "limit": "carbon_dioxide_pct/peak", "limit_pct": 4.0,
+        "value_pct": dioxide["peak_pct"], "place": 3, "crossed": True,
+    }  # fmt: skip
+    # A kilogram of hydrogen is 11.93 m3 at 20 degrees Celsius (methods A1), in the 400 m3 above
+    # the height that people breathe at: 2.98 %, three quarters of 4 %.
+    assert (flammable["hazard"], flammable["release"]) == ("flammable", "largest-vessel")
+    assert flammable["lower_limit_pct"] == pytest.approx(74.6, rel=0.003)
+    assert flammable["mean_8h_pct"] is None
+    assert status["worst"]["hazard"] == "toxic"
+    assert status["worst"]["mark"] == 3
