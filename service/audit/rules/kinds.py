@@ -16,6 +16,7 @@ from service.physics.arrays import Floats, Integers, Mask
 Masked = Callable[[Tables], Mask]
 Measured = Callable[[Tables], Floats]
 Dated = Callable[[Tables], Moments]
+Graded = Callable[[Tables], Integers]  # index in SEVERITIES of each row
 
 
 def never(size: int) -> Moments:
@@ -33,7 +34,7 @@ class Threshold:
     applies: Masked
     measure: Measured
     limit: Measured
-    consequence: int
+    consequence: int | Graded
     words: Callable[[Tables, int, float, float], tuple[str, str, Mapping[str, Any]]]
     method: str
     source: str
@@ -47,7 +48,7 @@ class Threshold:
             broken=self.applies(tables) & ~inside,
             measure=measure,
             limit=limit,
-            consequence=_all(self.consequence, measure.size),
+            consequence=_graded(self.consequence, tables, measure.size),
             turns_at=never(measure.size),
         )
 
@@ -68,7 +69,7 @@ class Missing:
     slug: str
     subject: Subject
     missing: Masked
-    consequence: int
+    consequence: int | Graded
     words: Callable[[Tables, int], tuple[str, str, Mapping[str, Any]]]
     method: str
     source: str
@@ -79,7 +80,8 @@ class Missing:
         """Broken where it is missing; there is nothing to measure."""
         broken = self.missing(tables)
         none = np.full(broken.size, np.nan)
-        return Judged(broken, none, none, _all(self.consequence, broken.size), never(broken.size))
+        consequence = _graded(self.consequence, tables, broken.size)
+        return Judged(broken, none, none, consequence, never(broken.size))
 
     def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
         """Say it in the words of the rule."""
@@ -118,7 +120,7 @@ class Overdue:
             broken=applies & ~in_date,
             measure=none,
             limit=none,
-            consequence=_all(self.consequence, due.size),
+            consequence=np.full(due.size, self.consequence),
             turns_at=np.where(applies & in_date, due, never(due.size)),
         )
 
@@ -132,5 +134,5 @@ class Overdue:
         return Said(statement.format(tag=record.tag, due=since), self.remedy, evidence)
 
 
-def _all(consequence: int, size: int) -> Integers:
-    return np.full(size, consequence)
+def _graded(consequence: int | Graded, tables: Tables, size: int) -> Integers:
+    return np.full(size, consequence) if isinstance(consequence, int) else consequence(tables)

@@ -1,0 +1,33 @@
+"""What rules ask of rooms: whether there is gas, and whether it can go beyond a mark."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from service.audit.rules.rule import Tables
+from service.physics.arrays import Integers, Mask
+
+
+def any_of_room(tables: Tables, room: Integers, holds: Mask) -> Mask:
+    """Tell which rooms have a row of a table for which something holds."""
+    found = np.zeros(tables.cases.table.given.count, dtype=np.bool_)
+    found[room[holds]] = True
+    return found
+
+
+def sources_there(tables: Tables) -> Mask:
+    """Tell which sources of gas are there; a withdrawn vessel is not, purge gas is."""
+    stock, found = tables.cases.table.stock, tables.cases.table.sources
+    there = np.ones(found.room.size, dtype=np.bool_)
+    there[: stock.present.size] = stock.present
+    return there
+
+
+def holding_gas(tables: Tables) -> Mask:
+    """Tell which rooms have anything that gives off gas."""
+    return any_of_room(tables, tables.cases.table.sources.room, sources_there(tables))
+
+
+def beyond_a_mark(tables: Tables, chosen: Mask) -> Mask:
+    """Tell which rooms have a case of those chosen that is beyond a mark."""
+    return any_of_room(tables, tables.cases.table.room, chosen & (tables.cases.results.mark > 0))
