@@ -1,0 +1,145 @@
+"""Rules on administrative measures: those that a room ought to have, and those to be checked.
+
+None of them is a safeguard: what they do to the air is nothing.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any, Final
+
+import numpy as np
+
+from service.audit.assessment import SEVERITIES
+from service.audit.bases import COMMON_PRACTICE
+from service.audit.columns import CONTROL_KINDS, UNKNOWN, VESSEL_KINDS, Moments, all_of, is_one_of
+from service.audit.releases import ALL_VESSELS, RELEASES
+from service.audit.rules.kinds import Overdue, Threshold
+from service.audit.rules.rooms import any_of_room
+from service.audit.rules.rule import Direction, Subject, Tables
+from service.audit.rules.words import as_record
+from service.audit.severity import MAJOR, MINOR, OBSERVATION, without_safeguards, worst_by_room
+from service.physics.arrays import Floats, Integers, Mask
+
+# What a room ought to have where a release would be grave without any safeguard. Common practice,
+# no source.
+WANTED: Final = (
+    "signage",
+    "procedure",
+    "training",
+    "personal-monitor",
+    "alarm-response",
+    "rescue",
+    "lone-working",
+    "protective-equipment",
+    "access",
+)
+WHERE_VESSELS_ARE_MOVED: Final = "delivery-route"
+
+_CARRIED: Final = [
+    VESSEL_KINDS.index(kind)
+    for kind in ("open-dewar", "pressurised-dewar", "dry-ice-box", "cylinder")
+]
+_ALL_VESSELS: Final = [release.slug for release in RELEASES].index(ALL_VESSELS)
+
+
+def severity_without_safeguards(tables: Tables) -> Integers:
+    """Worst severity of each room's cases that count, were there no safeguard; -1 for none."""
+    cases = tables.cases
+    table = cases.table
+    bare = np.maximum(without_safeguards(table, cases.results), cases.severity)
+    # All vessels at once count for what the table makes of them: seldom more than an observation.
+    severity = np.where(table.release == _ALL_VESSELS, cases.severity, bare)
+    return worst_by_room(severity, table.counts, table)
+
+
+def _grave(tables: Tables) -> Mask:
+    return severity_without_safeguards(tables) >= MAJOR
+
+
+def _moves_vessels(tables: Tables) -> Mask:
+    """Rooms with a vessel that is carried or wheeled; one of unknown mobility is."""
+    table = tables.cases.table
+    vessels = table.given.vessels
+    carried = (vessels.mobile == 1) | (
+        (vessels.mobile == UNKNOWN) & is_one_of(vessels.kind, _CARRIED)
+    )
+    return any_of_room(tables, vessels.room, carried & table.stock.present)
+
+
+def _wanting(tables: Tables) -> Mask:
+    """Kinds that each room ought to have and has not, (rooms, kinds)."""
+    given = tables.cases.table.given
+    wanted = np.zeros((given.count, len(CONTROL_KINDS)), dtype=np.bool_)
+    wanted[:, [CONTROL_KINDS.index(kind) for kind in WANTED]] = True
+    wanted[:, CONTROL_KINDS.index(WHERE_VESSELS_ARE_MOVED)] = _moves_vessels(tables)
+    # One that is recorded for a vessel says nothing of the room.
+    of_room = given.controls.vessel == UNKNOWN
+    wanted[given.controls.room[of_room], given.controls.kind[of_room]] = False
+    return wanted
+
+
+def _how_many_wanting(tables: Tables) -> Floats:
+    counted: Floats = _wanting(tables).sum(axis=1).astype(np.float64)
+    return counted
+
+
+def _none(tables: Tables) -> Floats:
+    return np.zeros(tables.cases.table.given.count)
+
+
+def _say_missing(
+    tables: Tables, row: int, measure: float, limit: float
+) -> tuple[str, str, Mapping[str, Any]]:
+    room = tables.room(row)
+    wanting = [CONTROL_KINDS[kind] for kind in np.flatnonzero(_wanting(tables)[row])]
+    severity = SEVERITIES[int(severity_without_safeguards(tables)[row])]
+    named = ", ".join(kind.replace("-", " ") for kind in wanting)
+    return (
+        f"{room.record.tag} would be {severity} without safeguards, and {measure:.0f} of the "
+        f"measures that such a room has are not recorded: {named}.",
+        f"Record the {named} of {room.record.tag}, each with its reference and when it is checked.",
+        {
+            "missing": wanting,
+            "severity_without_safeguards": severity,
+            "controls": [as_record(control.record) for control in room.controls],
+        },
+    )
+
+
+def _check_due(tables: Tables) -> Moments:
+    return tables.cases.table.given.controls.check_due
+
+
+def _is_to_be_checked(tables: Tables) -> Mask:
+    """Controls with a date and an interval, and those that nobody ever checked."""
+    controls = tables.cases.table.given.controls
+    return ~all_of(controls.checked, np.isnat(controls.check_due))
+
+
+RULES: Final = (
+    Threshold(
+        slug="controls/missing",
+        subject=Subject.ROOMS,
+        worse_is=Direction.HIGHER,
+        applies=_grave,
+        measure=_how_many_wanting,
+        limit=_none,
+        consequence=MINOR,
+        words=_say_missing,
+        method="records/present",
+        source=COMMON_PRACTICE,
+    ),
+    Overdue(
+        slug="controls/overdue",
+        subject=Subject.CONTROLS,
+        applies=_is_to_be_checked,
+        due=_check_due,
+        overdue="The check of {tag} has been overdue since {due}.",
+        never_done="No check of {tag} is recorded, with the interval it holds for.",
+        remedy="Check that it still holds, and record the date.",
+        consequence=OBSERVATION,
+        method="records/due-dates",
+        source=COMMON_PRACTICE,
+    ),
+)
