@@ -10,8 +10,10 @@ import numpy as np
 
 from service.audit.assumptions import ASSUMPTIONS
 from service.audit.bases import COMMON_PRACTICE
-from service.audit.columns import UNKNOWN
+from service.audit.hazards import flammable_limit, of_fluid
+from service.audit.rules import plausible
 from service.audit.rules.kinds import Missing, never
+from service.audit.rules.rooms import any_of_room, sources_there
 from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables, record_of
 from service.audit.rules.words import as_record, listed
 from service.audit.severity import MAJOR, MINOR, OBSERVATION
@@ -90,32 +92,45 @@ class CannotCompute:
         )
 
 
-def _holds_other_hazard(tables: Tables) -> Mask:
-    """Rooms that hold a toxic or flammable fluid, which this method does not compute yet."""
+def _poisons_unknown(tables: Tables) -> Mask:
+    """Sources of a site's own gas that poisons."""
     table = tables.cases.table
-    fluids, found = table.given.fluids, table.sources
-    counted = np.ones(found.room.size, dtype=np.bool_)
-    counted[: table.stock.present.size] = table.stock.present
-    named = counted & (found.fluid != UNKNOWN)
-    other = fluids.toxic | fluids.flammable
-    rooms = np.zeros(table.given.count, dtype=np.bool_)
-    rooms[found.room[named][other[found.fluid[named]]]] = True
-    return rooms
+    fluids = table.given.fluids
+    toxic = fluids.toxic & ~fluids.carbon_dioxide & ~fluids.nitrous_oxide
+    return sources_there(tables) & of_fluid(toxic, table.sources.fluid)
+
+
+def _burns_unknown(tables: Tables) -> Mask:
+    """Sources of a site's own gas that burns, with no limit to hold it against."""
+    table = tables.cases.table
+    found = table.sources
+    limit = flammable_limit(table.given, found.room, found.fluid)
+    burns = of_fluid(table.given.fluids.flammable, found.fluid) & ~(limit > 0.0)
+    return sources_there(tables) & burns
+
+
+_UNKNOWN_HAZARDS: Final = (("flammable", _burns_unknown), ("toxic", _poisons_unknown))
+
+
+def _holds_other_hazard(tables: Tables) -> Mask:
+    """Rooms that hold a gas whose hazard this method cannot compute."""
+    unknown = _burns_unknown(tables) | _poisons_unknown(tables)
+    return any_of_room(tables, tables.cases.table.sources.room, unknown)
 
 
 def _say_not_computed(tables: Tables, row: int) -> tuple[str, str, Mapping[str, Any]]:
-    room = tables.room(row)
-    fluids = [vessel.fluid for vessel in room.vessels if vessel.state != "withdrawn"]
-    if room.purge_fluid is not None:
-        fluids.append(room.purge_fluid)
-    hazards = {
-        fluid.record.tag: sorted(fluid.hazards & {"toxic", "flammable"})
-        for fluid in fluids
-        if fluid.hazards & {"toxic", "flammable"}
-    }
-    named = listed([f"{tag} ({', '.join(kinds)})" for tag, kinds in hazards.items()])
+    table = tables.cases.table
+    mine = table.sources.room == row
+    hazards: dict[str, list[str]] = {}
+    for name, is_unknown in _UNKNOWN_HAZARDS:
+        for fluid in dict.fromkeys(table.sources.fluid[is_unknown(tables) & mine].tolist()):
+            gas = table.given.gases[int(table.given.fluids.gas[fluid])]
+            hazards.setdefault(gas, []).append(name)
+    tag = tables.room(row).record.tag
+    named = listed([f"{gas} ({', '.join(kinds)})" for gas, kinds in hazards.items()])
     return (
-        f"{room.record.tag} holds {named}; that hazard is not computed yet, only its oxygen.",
+        f"{tag} holds {named}, for which no limit is known: that hazard is not computed, only its "
+        "oxygen.",
         "Have this hazard studied by other means, or move the fluid out of the room.",
         {"hazards": hazards},
     )
@@ -134,4 +149,5 @@ RULES: Final = (
     ),
     AssumedRule(slug="records/assumed", consequence=OBSERVATION, decides=False),
     AssumedRule(slug="records/assumed-deciding", consequence=MINOR, decides=True),
+    *plausible.RULES,
 )
