@@ -2,7 +2,17 @@
 
 from typing import Final
 
-from service.audit.rules import detectors, enrichment, flammable, oxygen, records, toxic
+from service.audit.rules import (
+    controls,
+    detectors,
+    enrichment,
+    flammable,
+    oxygen,
+    records,
+    toxic,
+    ventilation,
+    vessels,
+)
 from service.audit.rules.rule import Rule
 
 # A slug is public and never reused.
@@ -11,6 +21,9 @@ RULES: Final[tuple[Rule, ...]] = (
     *enrichment.RULES,
     *toxic.RULES,
     *flammable.RULES,
+    *ventilation.RULES,
     *detectors.RULES,
+    *vessels.RULES,
+    *controls.RULES,
     *records.RULES,
 )
