@@ -24,7 +24,7 @@ def test_every_method_stands_in_the_guide(slug):
     assert f"| `{slug}` |" in GUIDE
 
 
-@pytest.mark.parametrize("rule", RULES, ids=lambda rule: rule.slug)
+@pytest.mark.parametrize("rule", RULES, ids=lambda rule: f"{rule.slug}-{rule.gas}")
 def test_every_rule_stands_in_the_changelog(rule):
     assert f"`{rule.slug}`" in CHANGELOG
 

@@ -9,6 +9,7 @@ from typing import Any
 
 from service.audit.assessment import Assessment, Case, Judgement
 from service.audit.bases import SHIPPED_SOURCES, SHIPPED_VALUES
+from service.audit.columns import CONTROL_KINDS
 from service.audit.findings import Finding, reconcile, standing
 from service.audit.inputs import (
     BasisValues,
@@ -106,6 +107,7 @@ def a_vessel(litres: float = 50.0, fluid: FluidValues = NITROGEN, **fields: Any)
         "measured_evaporation": 0.01 * litres * PER_DAY,
         "vent_to": "room",
         "filled_by": "exchanged",
+        "relief_fitted": True,
     }
     tag = fields.pop("tag", f"V-{litres:g}-{fluid.record.tag}")
     return VesselValues(record=a_reference("vessel", tag), fluid=fluid, **{**defaults, **fields})
@@ -132,6 +134,7 @@ def a_unit(m3_per_hour: float = 600.0, **fields: Any) -> UnitValues:
         "measured_flow": m3_per_hour * PER_HOUR,
         "measurement_due": LATER,
         "outdoor_air_fraction": 1.0,
+        "flow_proved": True,
     }
     tag = fields.pop("tag", f"F-{m3_per_hour:g}")
     return UnitValues(record=a_reference("ventilation-unit", tag), **{**defaults, **fields})
@@ -151,6 +154,11 @@ def a_detector(**fields: Any) -> DetectorValues:
     }
     tag = fields.pop("tag", "D-1")
     return DetectorValues(record=a_reference("detector", tag), **{**defaults, **fields})
+
+
+def the_controls(*but: str) -> tuple[ControlValues, ...]:
+    """Every control that a room can be asked for, each checked and in date."""
+    return tuple(a_control(kind) for kind in CONTROL_KINDS if kind not in but)
 
 
 def a_control(kind: str = "signage", **fields: Any) -> ControlValues:
@@ -193,9 +201,15 @@ def assessed(*rooms: RoomValues, at: datetime = NOW) -> tuple[Assessment, ...]:
     return assess_rooms(rooms, at=at)
 
 
-def judged(room: RoomValues, rule: str, *, at: datetime = NOW) -> Judgement | None:
+def judged(
+    room: RoomValues, rule: str, *, at: datetime = NOW, gas: str | None = None
+) -> Judgement | None:
     """The judgement of a rule on a room by itself, or None where it is not broken."""
-    found = [each for each in assessed(room, at=at)[0].judgements if each.rule == rule]
+    found = [
+        each
+        for each in assessed(room, at=at)[0].judgements
+        if each.rule == rule and gas in (None, each.gas)
+    ]
     return found[0] if found else None
 
 
