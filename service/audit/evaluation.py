@@ -10,7 +10,7 @@ from service.audit.columns import taken
 from service.audit.hazards import ABOUT_OXYGEN
 from service.audit.marks import mark_percent
 from service.audit.safeguards import Safeguards, safeguards
-from service.audit.severity import case_severity, worst_by_room
+from service.audit.severity import case_severity, without_safeguards, worst_by_room
 from service.audit.solve import Results, solve
 from service.physics.arrays import Floats, Integers, Mask
 
@@ -27,6 +27,7 @@ class Evaluation:
     severity: Integers  # index in SEVERITIES; -1 where no mark is crossed
     limits: Floats  # (rows, 3) of the marks, in percent; not-a-number where there is none
     values: Floats  # (rows, 3) set against them, in percent
+    bare_severity: Integers  # of each room's worst case that counts, were there no safeguard
     decisive_limit: Floats  # of the worst mark crossed, else of the first there is
     decisive_value: Floats
 
@@ -48,6 +49,9 @@ def evaluate(table: CaseTable, at: np.datetime64) -> Evaluation:
         severity=severity,
         limits=limits,
         values=values,
+        bare_severity=worst_by_room(
+            without_safeguards(table, results, severity), table.counts, table
+        ),
         decisive_limit=limits[cases, place],
         decisive_value=values[cases, place],
     )

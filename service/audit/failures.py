@@ -99,7 +99,6 @@ def _of_vessels(given: Columns) -> Iterator[tuple[int, str]]:
         held = _unknown_or(_not_negative, values)
         yield from _bad(vessels.room, held, f"The {what} of a vessel is below 0 or not a number.")
 
-
     for values, what in (
         (vessels.fill_flow, "filling flow"),
         (vessels.charge_pressure, "charge pressure"),

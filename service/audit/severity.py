@@ -49,10 +49,13 @@ def case_severity(table: CaseTable, results: Results, guards: Safeguards) -> Int
     return np.where(results.mark > 0, shown_only, NONE)
 
 
-def without_safeguards(table: CaseTable, results: Results) -> Integers:
-    """Severity of each case that counts if no safeguard held; -1 where no mark is crossed."""
-    worst = table.given.bases.severity[table.room, np.maximum(results.mark - 1, 0), 0]
-    return np.where((results.mark > 0) & table.counts, worst, NONE)
+def without_safeguards(table: CaseTable, results: Results, severity: Integers) -> Integers:
+    """Severity of each case if no safeguard held; -1 where no mark is crossed."""
+    row = np.maximum(results.mark - 1, 0)
+    bare = np.maximum(table.given.bases.severity[table.room, row, 0], severity)
+    # All vessels at once count for what the table makes of them: seldom more than an observation.
+    everything = table.release == _SLUGS.index(ALL_VESSELS)
+    return np.where(results.mark > 0, np.where(everything, severity, bare), NONE)
 
 
 def _column(table: CaseTable, guards: Safeguards) -> Integers:

@@ -13,13 +13,13 @@ import numpy as np
 from service.audit.assessment import SEVERITIES
 from service.audit.bases import COMMON_PRACTICE
 from service.audit.columns import CONTROL_KINDS, UNKNOWN, VESSEL_KINDS, Moments, all_of, is_one_of
-from service.audit.releases import ALL_VESSELS, RELEASES
+from service.audit.inputs import RoomValues
 from service.audit.rules.kinds import Overdue, Threshold
 from service.audit.rules.rooms import any_of_room
 from service.audit.rules.rule import Direction, Subject, Tables
 from service.audit.rules.words import as_record
-from service.audit.severity import MAJOR, MINOR, OBSERVATION, without_safeguards, worst_by_room
-from service.physics.arrays import Floats, Integers, Mask
+from service.audit.severity import MAJOR, MINOR, OBSERVATION
+from service.physics.arrays import Floats, Mask
 
 # What a room ought to have where a release would be grave without any safeguard. Common practice,
 # no source.
@@ -36,25 +36,14 @@ WANTED: Final = (
 )
 WHERE_VESSELS_ARE_MOVED: Final = "delivery-route"
 
-_CARRIED: Final = [
-    VESSEL_KINDS.index(kind)
-    for kind in ("open-dewar", "pressurised-dewar", "dry-ice-box", "cylinder")
-]
-_ALL_VESSELS: Final = [release.slug for release in RELEASES].index(ALL_VESSELS)
+CARRIED: Final = ("open-dewar", "pressurised-dewar", "dry-ice-box", "cylinder")
 
-
-def severity_without_safeguards(tables: Tables) -> Integers:
-    """Worst severity of each room's cases that count, were there no safeguard; -1 for none."""
-    cases = tables.cases
-    table = cases.table
-    bare = np.maximum(without_safeguards(table, cases.results), cases.severity)
-    # All vessels at once count for what the table makes of them: seldom more than an observation.
-    severity = np.where(table.release == _ALL_VESSELS, cases.severity, bare)
-    return worst_by_room(severity, table.counts, table)
+_CARRIED: Final = [VESSEL_KINDS.index(kind) for kind in CARRIED]
 
 
 def _grave(tables: Tables) -> Mask:
-    return severity_without_safeguards(tables) >= MAJOR
+    grave: Mask = tables.cases.bare_severity >= MAJOR
+    return grave
 
 
 def _moves_vessels(tables: Tables) -> Mask:
@@ -67,7 +56,7 @@ def _moves_vessels(tables: Tables) -> Mask:
     return any_of_room(tables, vessels.room, carried & table.stock.present)
 
 
-def _wanting(tables: Tables) -> Mask:
+def _wanting(tables: Tables) -> npt.NDArray[np.bool_]:
     """Kinds that each room ought to have and has not, (rooms, kinds)."""
     given = tables.cases.table.given
     wanted = np.zeros((given.count, len(CONTROL_KINDS)), dtype=np.bool_)
@@ -92,8 +81,8 @@ def _say_missing(
     tables: Tables, row: int, measure: float, limit: float
 ) -> tuple[str, str, Mapping[str, Any]]:
     room = tables.room(row)
-    wanting = [CONTROL_KINDS[kind] for kind in np.flatnonzero(_wanting(tables)[row])]
-    severity = SEVERITIES[int(severity_without_safeguards(tables)[row])]
+    wanting = _wanting_of(room)
+    severity = SEVERITIES[int(tables.cases.bare_severity[row])]
     named = ", ".join(kind.replace("-", " ") for kind in wanting)
     return (
         f"{room.record.tag} would be {severity} without safeguards, and {measure:.0f} of the "

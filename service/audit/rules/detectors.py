@@ -19,7 +19,7 @@ from service.audit.columns import (
 from service.audit.inventory import poorer
 from service.audit.rules import watched
 from service.audit.rules.kinds import Missing, Overdue, Threshold
-from service.audit.rules.rooms import any_of_room, holding_gas, sources_there
+from service.audit.rules.rooms import any_of_room, holding_gas, sources_of, sources_there
 from service.audit.rules.rule import Direction, Subject, Tables, detector_record
 from service.audit.rules.words import number, oxygen_text
 from service.audit.safeguards import (
@@ -95,6 +95,18 @@ def _heights_wanted(tables: Tables) -> tuple[Mask, Mask]:
         return met
 
     return wanted(low), wanted(high)
+
+
+def _heights_of(tables: Tables, row: int) -> tuple[bool, bool]:
+    """The same for one detector."""
+    table = tables.cases.table
+    mine = sources_of(tables, int(table.given.detectors.room[row]))
+    fluid = table.sources.fluid[mine]
+    if table.given.detectors.gas[row] != OXYGEN_GAS:
+        named = fluid[fluid != UNKNOWN]
+        fluid = named[table.given.fluids.gas[named] == table.given.detectors.gas[row]]
+    low, high = gas_heights(table.given, fluid)
+    return bool(low.any()), bool(high.any())
 
 
 def _metres_off(tables: Tables) -> Floats:
@@ -239,21 +251,18 @@ def _is_zeroed(tables: Tables) -> Mask:
 
 
 def _zeroed_off(tables: Tables) -> Floats:
-    """By how much of it each reading is off in clean air [%]."""
-    return rounded(np.abs(_clean_reading(tables) / OXYGEN_IN_AIR - 1.0) * 100.0)
-
-
-def _clean_reading(tables: Tables) -> Floats:
-    """What each cell reads in clean air, as a fraction."""
+    """By how much of it each reading is off in clean air [%]; not-a-number where unknown."""
     table = tables.cases.table
     detectors = table.given.detectors
-    pressure = table.conditions.pressure[detectors.room]
-    reading = np.full(detectors.room.size, np.nan)
-    zeroed = np.flatnonzero(detectors.zeroed_at > 0.0)
-    reading[zeroed] = reading_of_cell_zeroed_elsewhere(
-        np.full(zeroed.size, OXYGEN_IN_AIR), pressure[zeroed], detectors.zeroed_at[zeroed]
+    off = np.full(detectors.room.size, np.nan)
+    zeroed = np.flatnonzero(_is_zeroed(tables))
+    reading = reading_of_cell_zeroed_elsewhere(
+        OXYGEN_IN_AIR,
+        table.conditions.pressure[detectors.room[zeroed]],
+        detectors.zeroed_at[zeroed],
     )
-    return reading
+    off[zeroed] = np.abs(reading / OXYGEN_IN_AIR - 1.0) * 100.0
+    return rounded(off)
 
 
 def _zeroed_limit(tables: Tables) -> Floats:
@@ -267,7 +276,7 @@ def _say_zeroed_elsewhere(
     record = detector_record(tables, row)
     site = float(table.conditions.pressure[table.given.detectors.room[row]]) / KILOPASCAL
     zeroed = float(table.given.detectors.zeroed_at[row]) / KILOPASCAL
-    reading = 100.0 * float(_clean_reading(tables)[row])
+    reading = 100.0 * float(reading_of_cell_zeroed_elsewhere(OXYGEN_IN_AIR, site, zeroed))
     high = reading > _CLEAN_AIR
     danger = "too high, so it alarms late" if high else "too low, so it alarms early"
     return (
@@ -292,8 +301,7 @@ def _say_misplaced(
     table = tables.cases.table
     record = detector_record(tables, row)
     height = float(table.given.detectors.height[row])
-    low, high = (bool(part[row]) for part in _heights_wanted(tables))
-    wanted = _wanted_text(low, high)
+    wanted = _wanted_text(*_heights_of(tables, row))
     if np.isnan(height):
         statement = f"The height of {record.tag} is not recorded; the gas here is met {wanted}."
     else:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Final
 
@@ -11,13 +11,20 @@ import numpy as np
 from service.audit.air import AIRFLOWS, AS_MEASURED
 from service.audit.bases import COMMON_PRACTICE
 from service.audit.columns import VESSEL_KINDS, all_of, is_one_of
-from service.audit.rules.kinds import Measured, never
-from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables, record_of
-from service.audit.rules.ventilation import share_of_design
-from service.audit.rules.vessels import ABOVE_RATED, times_rated
+from service.audit.rules.kinds import never
+from service.audit.rules.rule import (
+    Direction,
+    Judged,
+    Said,
+    Subject,
+    Tables,
+    record_of,
+    rooms_of,
+)
+from service.audit.rules.vessels import ABOVE_RATED
 from service.audit.rules.words import as_record, listed, number
 from service.audit.severity import OBSERVATION
-from service.physics.arrays import Floats, Mask, quotient, rounded
+from service.physics.arrays import Floats, Integers, Mask, quotient, rounded
 from service.physics.constants import SECONDS_PER_DAY, SECONDS_PER_HOUR
 
 _AS_MEASURED: Final = AIRFLOWS.index(AS_MEASURED)
@@ -41,13 +48,13 @@ class Doubt:
     """A number of a record that is hardly met above a limit."""
 
     name: str  # in the evidence, with its unit
-    value: Measured
+    value: Callable[[Tables, Integers], Floats]  # of some rows
     limit: float
     reason: str
 
-    def holds(self, tables: Tables) -> Mask:
+    def holds(self, tables: Tables, rows: Integers) -> Mask:
         """Tell where it is above; not-a-number, which is not recorded, is not."""
-        above: Mask = self.value(tables) > self.limit
+        above: Mask = self.value(tables, rows) > self.limit
         return above
 
 
@@ -65,7 +72,8 @@ class Implausible:
 
     def judge(self, tables: Tables, at: np.datetime64) -> Judged:
         """Broken where any number is doubtful; the measure is how many are."""
-        doubtful = np.stack([doubt.holds(tables) for doubt in self.doubts])
+        rows = np.arange(rooms_of(tables, self.subject).size)
+        doubtful = np.stack([doubt.holds(tables, rows) for doubt in self.doubts])
         many = doubtful.sum(axis=0).astype(np.float64)
         return Judged(
             broken=many > 0.0,
@@ -77,10 +85,9 @@ class Implausible:
 
     def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
         """Name each number with what is met in practice."""
-        row = rows[0]
-        record = record_of(tables, self.subject, row)
-        found = [doubt for doubt in self.doubts if doubt.holds(tables)[row]]
-        values = {doubt.name: float(doubt.value(tables)[row]) for doubt in found}
+        record, row = record_of(tables, self.subject, rows[0]), np.array(rows[:1])
+        found = [doubt for doubt in self.doubts if doubt.holds(tables, row)[0]]
+        values = {doubt.name: float(doubt.value(tables, row)[0]) for doubt in found}
         reasons = [
             doubt.reason.format(value=values[doubt.name], limit=doubt.limit) for doubt in found
         ]
@@ -97,40 +104,45 @@ class Implausible:
         )
 
 
-def _volume_off(tables: Tables) -> Floats:
+def _volume_off(tables: Tables, rows: Integers) -> Floats:
     rooms = tables.cases.table.given.rooms
-    share = quotient(rooms.gross_volume, rooms.floor_area * rooms.height, where_zero=np.nan)
+    measured = rooms.floor_area[rows] * rooms.height[rows]
+    share = quotient(rooms.gross_volume[rows], measured, where_zero=np.nan)
     return rounded(np.abs(share - 1.0) * _PERCENT)
 
 
-def _height(tables: Tables) -> Floats:
-    return tables.cases.table.given.rooms.height
+def _height(tables: Tables, rows: Integers) -> Floats:
+    height: Floats = tables.cases.table.given.rooms.height[rows]
+    return height
 
 
-def _occupied(tables: Tables) -> Floats:
-    return rounded(tables.cases.table.given.rooms.occupied_fraction * _PERCENT)
+def _occupied(tables: Tables, rows: Integers) -> Floats:
+    return rounded(tables.cases.table.given.rooms.occupied_fraction[rows] * _PERCENT)
 
 
-def _air_changes(tables: Tables) -> Floats:
+def _air_changes(tables: Tables, rows: Integers) -> Floats:
     table = tables.cases.table
-    fans = table.air.by_fans[_AS_MEASURED] * SECONDS_PER_HOUR
-    return rounded(fans / table.conditions.volume)
+    fans = table.air.by_fans[_AS_MEASURED, rows] * SECONDS_PER_HOUR
+    return rounded(fans / table.conditions.volume[rows])
 
 
-def _of_design(tables: Tables) -> Floats:
-    return rounded(share_of_design(tables) * _PERCENT)
+def _of_design(tables: Tables, rows: Integers) -> Floats:
+    units = tables.cases.table.given.units
+    share = quotient(units.measured_flow[rows], units.design_flow[rows], where_zero=np.nan)
+    return rounded(share * _PERCENT)
 
 
-def _evaporation(tables: Tables) -> Floats:
+def _evaporation(tables: Tables, rows: Integers) -> Floats:
     """Of closed vessels; one above its own rating has a rule for that."""
     table = tables.cases.table
     vessels = table.given.vessels
-    a_day = vessels.measured_evaporation * SECONDS_PER_DAY * _PERCENT
-    share = rounded(quotient(a_day, vessels.capacity_volume, where_zero=np.nan))
+    measured = vessels.measured_evaporation[rows]
+    a_day = measured * SECONDS_PER_DAY * _PERCENT
+    share = rounded(quotient(a_day, vessels.capacity_volume[rows], where_zero=np.nan))
     asked = all_of(
-        table.stock.present,
-        is_one_of(vessels.kind, _CLOSED),
-        ~(times_rated(tables) > ABOVE_RATED),
+        table.stock.present[rows],
+        is_one_of(vessels.kind[rows], _CLOSED),
+        ~(measured > ABOVE_RATED * vessels.rated_evaporation[rows]),
     )
     return np.where(asked, share, np.nan)
 

@@ -13,11 +13,11 @@ from service.audit.bases import COMMON_PRACTICE
 from service.audit.hazards import flammable_limit, of_fluid
 from service.audit.rules import plausible
 from service.audit.rules.kinds import Missing, never
-from service.audit.rules.rooms import any_of_room, sources_there
+from service.audit.rules.rooms import any_of_room, sources_of, sources_there
 from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables, record_of
 from service.audit.rules.words import as_record, listed
 from service.audit.severity import MAJOR, MINOR, OBSERVATION
-from service.physics.arrays import Mask
+from service.physics.arrays import Integers, Mask
 
 
 @dataclass(frozen=True, slots=True)
@@ -92,21 +92,19 @@ class CannotCompute:
         )
 
 
-def _poisons_unknown(tables: Tables) -> Mask:
+def _poisons_unknown(tables: Tables, sources: Integers) -> Mask:
     """Sources of a site's own gas that poisons."""
-    table = tables.cases.table
-    fluids = table.given.fluids
+    fluids = tables.cases.table.given.fluids
     toxic = fluids.toxic & ~fluids.carbon_dioxide & ~fluids.nitrous_oxide
-    return sources_there(tables) & of_fluid(toxic, table.sources.fluid)
+    return of_fluid(toxic, tables.cases.table.sources.fluid[sources])
 
 
-def _burns_unknown(tables: Tables) -> Mask:
+def _burns_unknown(tables: Tables, sources: Integers) -> Mask:
     """Sources of a site's own gas that burns, with no limit to hold it against."""
     table = tables.cases.table
-    found = table.sources
-    limit = flammable_limit(table.given, found.room, found.fluid)
-    burns = of_fluid(table.given.fluids.flammable, found.fluid) & ~(limit > 0.0)
-    return sources_there(tables) & burns
+    room, fluid = table.sources.room[sources], table.sources.fluid[sources]
+    limit = flammable_limit(table.given, room, fluid)
+    return of_fluid(table.given.fluids.flammable, fluid) & ~(limit > 0.0)
 
 
 _UNKNOWN_HAZARDS: Final = (("flammable", _burns_unknown), ("toxic", _poisons_unknown))
@@ -114,16 +112,18 @@ _UNKNOWN_HAZARDS: Final = (("flammable", _burns_unknown), ("toxic", _poisons_unk
 
 def _holds_other_hazard(tables: Tables) -> Mask:
     """Rooms that hold a gas whose hazard this method cannot compute."""
-    unknown = _burns_unknown(tables) | _poisons_unknown(tables)
-    return any_of_room(tables, tables.cases.table.sources.room, unknown)
+    sources = np.flatnonzero(sources_there(tables))
+    unknown = _burns_unknown(tables, sources) | _poisons_unknown(tables, sources)
+    return any_of_room(tables, tables.cases.table.sources.room[sources], unknown)
 
 
 def _say_not_computed(tables: Tables, row: int) -> tuple[str, str, Mapping[str, Any]]:
     table = tables.cases.table
-    mine = table.sources.room == row
+    mine = sources_of(tables, row)
     hazards: dict[str, list[str]] = {}
     for name, is_unknown in _UNKNOWN_HAZARDS:
-        for fluid in dict.fromkeys(table.sources.fluid[is_unknown(tables) & mine].tolist()):
+        fluids = table.sources.fluid[mine[is_unknown(tables, mine)]]
+        for fluid in dict.fromkeys(fluids.tolist()):
             gas = table.given.gases[int(table.given.fluids.gas[fluid])]
             hazards.setdefault(gas, []).append(name)
     tag = tables.room(row).record.tag

@@ -23,6 +23,19 @@ def sources_there(tables: Tables) -> Mask:
     return there
 
 
+def sources_of(tables: Tables, room: int) -> Integers:
+    """Rows of the sources that are there in one room, without a look at those of others."""
+    table = tables.cases.table
+    vessels = table.given.vessels.room
+    first, end = np.searchsorted(vessels, [room, room + 1])
+    rows = np.arange(first, end)
+    purge = table.sources.room[vessels.size :]
+    first, end = np.searchsorted(purge, [room, room + 1])
+    return np.concatenate(
+        [rows[table.stock.present[rows]], vessels.size + np.arange(first, end)]
+    )
+
+
 def holding_gas(tables: Tables) -> Mask:
     """Tell which rooms have anything that gives off gas."""
     return any_of_room(tables, tables.cases.table.sources.room, sources_there(tables))

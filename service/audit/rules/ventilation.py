@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
@@ -10,9 +11,9 @@ import numpy as np
 from service.audit.air import AIRFLOWS, AS_MEASURED, LOST
 from service.audit.bases import COMMON_PRACTICE
 from service.audit.columns import ROOM_KINDS, UNIT_STATES, Moments, all_of, is_one_of
-from service.audit.rules.kinds import Missing, Overdue, Threshold
+from service.audit.rules.kinds import Missing, Overdue, Threshold, never
 from service.audit.rules.rooms import any_of_room, beyond_a_mark, holding_gas
-from service.audit.rules.rule import Direction, Subject, Tables, unit_record
+from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables, unit_record
 from service.audit.rules.words import as_record, at_least, at_most, number
 from service.audit.severity import MINOR, OBSERVATION
 from service.physics.arrays import Floats, Mask, quotient, rounded
@@ -92,7 +93,7 @@ def _both_flows_known(tables: Tables) -> Mask:
     return all_of(~np.isnan(units.measured_flow), units.design_flow > 0.0, _of_gas(tables))
 
 
-def share_of_design(tables: Tables) -> Floats:
+def _share_of_design(tables: Tables) -> Floats:
     """Measured flow of each unit as a share of its design flow; not-a-number where unknown."""
     units = tables.cases.table.given.units
     return rounded(quotient(units.measured_flow, units.design_flow, where_zero=np.nan))
@@ -134,39 +135,59 @@ def _say_recirculates(tables: Tables, row: int) -> tuple[str, str, Mapping[str, 
     )
 
 
-def _no_unit(tables: Tables) -> Mask:
+@dataclass(frozen=True, slots=True)
+class NoUnit:
     """Rooms beyond a mark with the air as it is, that no unit serves; nothing airs a lift."""
-    table = tables.cases.table
-    units = table.given.units
-    served = any_of_room(tables, units.room, np.ones(units.room.size, dtype=np.bool_))
-    beyond = beyond_a_mark(tables, table.counts & (table.airflow == _AS_MEASURED))
-    return all_of(beyond, ~served, ~is_one_of(table.given.rooms.kind, _CARRYING))
 
+    slug: str = "ventilation/none"
+    subject: Subject = Subject.ROOMS
+    gas: str | None = None
+    worse_is: Direction = Direction.LOWER
+    method: str = "ventilation/restore"
+    source: str = COMMON_PRACTICE
 
-def _say_no_unit(tables: Tables, row: int) -> tuple[str, str, Mapping[str, Any]]:
-    table = tables.cases.table
-    room = tables.room(row).record
-    natural = float(table.air.moved[_AS_MEASURED, row]) * SECONDS_PER_HOUR
-    changes = natural / float(table.conditions.volume[row])
-    restore = float(_to_restore(tables)[row]) * SECONDS_PER_HOUR
-    back = float(table.given.bases.restore[row]) / 60.0
-    counted = restore / float(table.air.mixing_factor[_AS_MEASURED, row])
-    if natural < counted:
-        remedy = (
-            f"Bring outdoor air by a fan: {at_least(restore)} m3/h would have the room back inside "
-            f"its first mark within {back:.0f} min."
+    def judge(self, tables: Tables, at: np.datetime64) -> Judged:
+        """Measured by the air that nature moves, against what a fan would have to."""
+        table = tables.cases.table
+        units = table.given.units
+        served = any_of_room(tables, units.room, np.ones(units.room.size, dtype=np.bool_))
+        beyond = beyond_a_mark(tables, table.counts & (table.airflow == _AS_MEASURED))
+        carried = is_one_of(table.given.rooms.kind, _CARRYING)
+        return Judged(
+            broken=all_of(beyond, ~served, ~carried),
+            measure=_moved_per_hour(tables),
+            limit=_restore_per_hour(tables),
+            consequence=np.full(table.given.count, OBSERVATION),
+            turns_at=never(table.given.count),
         )
-    else:
-        remedy = (
-            f"Bring outdoor air by a fan whose flow is measured: that nature has the room back "
-            f"within {back:.0f} min is an assumption."
+
+    def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
+        """Say what nature is taken to do, and what a fan would."""
+        row, table = rows[0], tables.cases.table
+        room = tables.room(row).record
+        natural, restore = float(judged.measure[row]), float(judged.limit[row])
+        changes = natural / float(table.conditions.volume[row])
+        back = float(table.given.bases.restore[row]) / 60.0
+        if natural < restore / float(table.air.mixing_factor[_AS_MEASURED, row]):
+            remedy = (
+                f"Bring outdoor air by a fan: {at_least(restore)} m3/h would have the room back "
+                f"inside its first mark within {back:.0f} min."
+            )
+        else:
+            remedy = (
+                "Bring outdoor air by a fan whose flow is measured: that nature has the room back "
+                f"within {back:.0f} min is an assumption."
+            )
+        return Said(
+            f"{room.tag} goes beyond a mark and no ventilation unit serves it; by nature "
+            f"{natural:.3g} m3/h are taken to pass through it, {changes:.2g} air changes an hour.",
+            remedy,
+            {
+                "record": as_record(room),
+                "natural_air_m3_h": number(natural),
+                "restore_m3_h": number(restore),
+            },
         )
-    return (
-        f"{room.tag} goes beyond a mark and no ventilation unit serves it; by nature "
-        f"{natural:.3g} m3/h are taken to pass through it, {changes:.2g} air changes an hour.",
-        remedy,
-        {"natural_air_m3_h": number(natural), "restore_m3_h": number(restore)},
-    )
 
 
 def _to_restore(tables: Tables) -> Floats:
@@ -252,7 +273,7 @@ RULES: Final = (
         subject=Subject.UNITS,
         worse_is=Direction.LOWER,
         applies=_both_flows_known,
-        measure=share_of_design,
+        measure=_share_of_design,
         limit=_least_share,
         consequence=OBSERVATION,
         words=_say_below_design,
@@ -268,15 +289,7 @@ RULES: Final = (
         method="records/present",
         source=COMMON_PRACTICE,
     ),
-    Missing(
-        slug="ventilation/none",
-        subject=Subject.ROOMS,
-        missing=_no_unit,
-        consequence=OBSERVATION,
-        words=_say_no_unit,
-        method="ventilation/restore",
-        source=COMMON_PRACTICE,
-    ),
+    NoUnit(),
     Threshold(
         slug="ventilation/cannot-restore",
         subject=Subject.ROOMS,

@@ -60,10 +60,10 @@ def _is_counted(tables: Tables) -> Mask:
     """Vessels with anything in them whose contents are recorded."""
     table = tables.cases.table
     empty = (table.given.vessels.state == _EMPTY) & table.stock.count_holds
-    return all_of(table.stock.present, ~empty, ~np.isnan(share_of_capacity(tables)))
+    return all_of(table.stock.present, ~empty, ~np.isnan(_share_of_capacity(tables)))
 
 
-def share_of_capacity(tables: Tables) -> Floats:
+def _share_of_capacity(tables: Tables) -> Floats:
     """Recorded contents of each vessel as a share of its capacity; not-a-number where unknown."""
     vessels = tables.cases.table.given.vessels
     by_mass = quotient(vessels.contents_mass, vessels.capacity_mass, where_zero=np.nan)
@@ -134,7 +134,7 @@ def _is_rated_and_measured(tables: Tables) -> Mask:
     )
 
 
-def times_rated(tables: Tables) -> Floats:
+def _times_rated(tables: Tables) -> Floats:
     """Measured evaporation of each vessel by its rated one; not-a-number where unknown."""
     vessels = tables.cases.table.given.vessels
     return rounded(
@@ -147,7 +147,7 @@ def _above_rated(tables: Tables) -> Floats:
 
 
 def _how_far_above(tables: Tables) -> Integers:
-    return np.where(times_rated(tables) > FAR_ABOVE_RATED, MINOR, OBSERVATION)
+    return np.where(_times_rated(tables) > FAR_ABOVE_RATED, MINOR, OBSERVATION)
 
 
 def _say_above_rated(
@@ -310,7 +310,7 @@ RULES: Final = (
         subject=Subject.VESSELS,
         worse_is=Direction.HIGHER,
         applies=_is_counted,
-        measure=share_of_capacity,
+        measure=_share_of_capacity,
         limit=_whole,
         consequence=MAJOR,
         words=_say_overfilled,
@@ -334,7 +334,7 @@ RULES: Final = (
         subject=Subject.VESSELS,
         worse_is=Direction.HIGHER,
         applies=_is_rated_and_measured,
-        measure=times_rated,
+        measure=_times_rated,
         limit=_above_rated,
         consequence=_how_far_above,
         words=_say_above_rated,

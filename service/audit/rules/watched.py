@@ -29,13 +29,13 @@ from service.audit.hazards import (
 from service.audit.inventory import CYLINDER
 from service.audit.outages import out_now
 from service.audit.rules.kinds import never
-from service.audit.rules.rooms import any_of_room, beyond_a_mark, sources_there
+from service.audit.rules.rooms import any_of_room, beyond_a_mark, sources_of, sources_there
 from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables
 from service.audit.rules.words import as_record, listed, number
 from service.audit.safeguards import OXYGEN_GAS
 from service.audit.severity import MAJOR, MINOR, OBSERVATION
 from service.audit.sources import NO_VESSEL
-from service.physics.arrays import Mask
+from service.physics.arrays import Integers, Mask
 
 HYDROGEN: Final = "hydrogen"
 
@@ -56,41 +56,43 @@ def _watched(tables: Tables, at: np.datetime64) -> npt.NDArray[np.bool_]:
     return watched
 
 
-def _unwatched(tables: Tables, sources: Mask, at: np.datetime64) -> Mask:
-    """Which of some sources are of a gas that no detector of their room is for."""
+def _unwatched_rooms(tables: Tables, sources: Integers, at: np.datetime64) -> Mask:
+    """Rooms where some of these sources are of a gas that no detector there is for."""
     table = tables.cases.table
-    unwatched = np.zeros(sources.size, dtype=np.bool_)
-    rows = np.flatnonzero(sources)
-    gas = table.given.fluids.gas[table.sources.fluid[rows]]
-    unwatched[rows] = ~_watched(tables, at)[table.sources.room[rows], gas]
-    return unwatched
+    room = table.sources.room[sources]
+    gas = table.given.fluids.gas[table.sources.fluid[sources]]
+    return any_of_room(tables, room, ~_watched(tables, at)[room, gas])
 
 
-def _is_liquid_hydrogen(tables: Tables) -> Mask:
+def _all_sources(tables: Tables) -> Integers:
+    return np.flatnonzero(sources_there(tables))
+
+
+def _is_liquid_hydrogen(tables: Tables, sources: Integers) -> Mask:
     table = tables.cases.table
-    found = table.sources
+    vessel = table.sources.vessel[sources]
     hydrogen = np.array([name == HYDROGEN for name in table.given.gases])[table.given.fluids.gas]
-    in_vessel = np.flatnonzero(found.vessel != NO_VESSEL)
-    liquid = np.zeros(found.room.size, dtype=np.bool_)
-    liquid[in_vessel] = table.given.vessels.kind[found.vessel[in_vessel]] != CYLINDER
-    return liquid & of_fluid(hydrogen, found.fluid)
+    in_vessel = np.flatnonzero(vessel != NO_VESSEL)
+    liquid = np.zeros(sources.size, dtype=np.bool_)
+    liquid[in_vessel] = table.given.vessels.kind[vessel[in_vessel]] != CYLINDER
+    return liquid & of_fluid(hydrogen, table.sources.fluid[sources])
 
 
-def _is_carbon_dioxide(tables: Tables) -> Mask:
+def _is_carbon_dioxide(tables: Tables, sources: Integers) -> Mask:
     table = tables.cases.table
-    return of_fluid(table.given.fluids.carbon_dioxide, table.sources.fluid)
+    return of_fluid(table.given.fluids.carbon_dioxide, table.sources.fluid[sources])
 
 
-def _is_nitrous_oxide(tables: Tables) -> Mask:
+def _is_nitrous_oxide(tables: Tables, sources: Integers) -> Mask:
     table = tables.cases.table
-    return of_fluid(table.given.fluids.nitrous_oxide, table.sources.fluid)
+    return of_fluid(table.given.fluids.nitrous_oxide, table.sources.fluid[sources])
 
 
-def _burns(tables: Tables) -> Mask:
+def _burns(tables: Tables, sources: Integers) -> Mask:
     """Flammable gases; liquid hydrogen has a rule of its own."""
     table = tables.cases.table
-    burns = of_fluid(table.given.fluids.flammable, table.sources.fluid)
-    return burns & ~_is_liquid_hydrogen(tables)
+    burns = of_fluid(table.given.fluids.flammable, table.sources.fluid[sources])
+    return burns & ~_is_liquid_hydrogen(tables, sources)
 
 
 def _immediate_danger(tables: Tables, row: int) -> tuple[float, str]:
@@ -105,9 +107,9 @@ def _limit_of_shift(tables: Tables, row: int) -> tuple[float, str]:
 def _lower_limit(tables: Tables, row: int) -> tuple[float, str]:
     """The lowest lower flammable limit of the gases in a room."""
     table = tables.cases.table
-    found = table.sources
-    mine = np.flatnonzero(sources_there(tables) & _burns(tables) & (found.room == row))
-    limits = flammable_limit(table.given, found.room[mine], found.fluid[mine])
+    mine = sources_of(tables, row)
+    mine = mine[_burns(tables, mine)]
+    limits = flammable_limit(table.given, table.sources.room[mine], table.sources.fluid[mine])
     lowest = float(np.fmin.reduce(limits, initial=np.nan))
     return lowest, "its lower flammable limit"
 
@@ -151,7 +153,7 @@ class NoDetectorOfItsOwn:
     slug: str
     gas: str | None
     hazard: str
-    is_of_it: Callable[[Tables], Mask]  # sources
+    is_of_it: Callable[[Tables, Integers], Mask]  # of some sources
     harms: Callable[[Tables, int], tuple[float, str]]  # fraction of the gas, and what it is
     source: str
     subject: Subject = Subject.ROOMS
@@ -161,8 +163,9 @@ class NoDetectorOfItsOwn:
     def judge(self, tables: Tables, at: np.datetime64) -> Judged:
         """Broken where a gas of the family has no detector of its own in service."""
         table = tables.cases.table
-        there = sources_there(tables) & self.is_of_it(tables)
-        unwatched = any_of_room(tables, table.sources.room, _unwatched(tables, there, at))
+        sources = _all_sources(tables)
+        of_it = sources[self.is_of_it(tables, sources)]
+        unwatched = _unwatched_rooms(tables, of_it, at)
         hazard = _HAZARDS[self.hazard, self.gas or ""]
         beyond = beyond_a_mark(tables, table.counts & (table.hazard == hazard))
         relied_on = _watched(tables, at)[:, OXYGEN_GAS]
@@ -174,10 +177,9 @@ class NoDetectorOfItsOwn:
         """Say that an oxygen detector is none for it, in figures."""
         row = rows[0]
         room, table = tables.room(row).record, tables.cases.table
-        there = sources_there(tables) & self.is_of_it(tables) & (table.sources.room == row)
-        fluids = sorted(
-            {table.given.gases[gas] for gas in table.given.fluids.gas[table.sources.fluid[there]]}
-        )
+        mine = sources_of(tables, row)
+        fluid = table.sources.fluid[mine[self.is_of_it(tables, mine)]]
+        fluids = sorted({table.given.gases[gas] for gas in table.given.fluids.gas[fluid]})
         gas = listed([name.replace("-", " ") for name in fluids])
         first = float(table.conditions.low_marks[row, 0])
         fraction = float(fraction_of_low_mark(np.array(first)))
@@ -211,18 +213,18 @@ class NoHydrogenDetector:
 
     def judge(self, tables: Tables, at: np.datetime64) -> Judged:
         """Broken wherever liquid hydrogen is, however large the room."""
-        there = sources_there(tables) & _is_liquid_hydrogen(tables)
-        room = tables.cases.table.sources.room
-        return _judged(any_of_room(tables, room, _unwatched(tables, there, at)), MAJOR)
+        sources = _all_sources(tables)
+        liquid = sources[_is_liquid_hydrogen(tables, sources)]
+        return _judged(_unwatched_rooms(tables, liquid, at), MAJOR)
 
     def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
         """Name the vessels."""
         row, table = rows[0], tables.cases.table
-        room, found = tables.room(row), table.sources
-        there = sources_there(tables) & _is_liquid_hydrogen(tables) & (found.room == row)
+        room, mine = tables.room(row), sources_of(tables, row)
+        liquid = mine[_is_liquid_hydrogen(tables, mine)]
         vessels = [
             room.vessels[int(table.given.vessels.source[vessel])].record
-            for vessel in found.vessel[there]
+            for vessel in table.sources.vessel[liquid]
         ]
         return Said(
             f"{room.record.tag} holds liquid hydrogen in "
