@@ -56,7 +56,7 @@ def _moves_vessels(tables: Tables) -> Mask:
     return any_of_room(tables, vessels.room, carried & table.stock.present)
 
 
-def _wanting(tables: Tables) -> npt.NDArray[np.bool_]:
+def _wanting(tables: Tables) -> Mask:
     """Kinds that each room ought to have and has not, (rooms, kinds)."""
     given = tables.cases.table.given
     wanted = np.zeros((given.count, len(CONTROL_KINDS)), dtype=np.bool_)
@@ -66,6 +66,31 @@ def _wanting(tables: Tables) -> npt.NDArray[np.bool_]:
     of_room = given.controls.vessel == UNKNOWN
     wanted[given.controls.room[of_room], given.controls.kind[of_room]] = False
     return wanted
+
+
+def _wanting_of(room: RoomValues) -> list[str]:
+    """The same for one room, without a look at the others."""
+    moved = any(
+        vessel.state != "withdrawn"
+        and (vessel.mobile or (vessel.mobile is None and vessel.kind in CARRIED))
+        for vessel in room.vessels
+    )
+    wanted = {*WANTED, WHERE_VESSELS_ARE_MOVED} if moved else {*WANTED}
+    own = {vessel.record.id for vessel in room.vessels}
+    wanted -= {control.kind for control in room.controls if control.vessel_id not in own}
+    return [kind for kind in CONTROL_KINDS if kind in wanted]
+
+
+def _wanting_of(room: RoomValues) -> list[str]:
+    """The same of one room, by name: a table of all rooms would be made anew for each."""
+    moved = any(
+        vessel.state != "withdrawn"
+        and (vessel.mobile or (vessel.mobile is None and vessel.kind in CARRIED))
+        for vessel in room.vessels
+    )
+    there = {control.kind for control in room.controls if control.vessel_id is None}
+    wanted = (*WANTED, WHERE_VESSELS_ARE_MOVED) if moved else WANTED
+    return [kind for kind in CONTROL_KINDS if kind in wanted and kind not in there]
 
 
 def _how_many_wanting(tables: Tables) -> Floats:
