@@ -81,18 +81,6 @@ def _wanting_of(room: RoomValues) -> list[str]:
     return [kind for kind in CONTROL_KINDS if kind in wanted]
 
 
-def _wanting_of(room: RoomValues) -> list[str]:
-    """The same of one room, by name: a table of all rooms would be made anew for each."""
-    moved = any(
-        vessel.state != "withdrawn"
-        and (vessel.mobile or (vessel.mobile is None and vessel.kind in CARRIED))
-        for vessel in room.vessels
-    )
-    there = {control.kind for control in room.controls if control.vessel_id is None}
-    wanted = (*WANTED, WHERE_VESSELS_ARE_MOVED) if moved else WANTED
-    return [kind for kind in CONTROL_KINDS if kind in wanted and kind not in there]
-
-
 def _how_many_wanting(tables: Tables) -> Floats:
     counted: Floats = _wanting(tables).sum(axis=1).astype(np.float64)
     return counted
