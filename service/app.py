@@ -26,7 +26,7 @@ from service.api.limits import Limits
 from service.api.openapi import described
 from service.api.poll import LENGTH, PollLayer, answered_outermost, send_answer
 from service.api.problems import install_problem_handlers
-from service.api.routes import changes, docs, findings, health, keys, room_answers
+from service.api.routes import changes, curve, docs, findings, health, keys, room_answers
 from service.api.routes.declared import with_heads
 from service.api.routes.records import record_routers
 from service.api.service import Service
@@ -120,6 +120,7 @@ def _routes() -> tuple[BaseRoute, ...]:
     routers = (
         *record_routers(),
         room_answers.router,
+        curve.router,
         changes.router,
         findings.router,
         keys.router,

@@ -17,6 +17,7 @@
     ├── what is there
     │   ├── RecordNotFound        404  no such record for this key
     │   ├── AsOfTooEarly          404  a moment before the first, or one no longer kept
+    │   ├── NoSuchCase            404  the room has no case like the one asked for
     │   ├── PathNotFound          404  no such path
     │   ├── MethodRefused         405  the path does not take this method
     │   ├── NotAcceptable         406  no form of the answer that the caller takes
@@ -25,6 +26,7 @@
     │   └── Conflict              409  what is there stands against it
     │       ├── DuplicateTag           the tag is taken in this site and kind
     │       ├── DuplicateExternalId    the external id is taken likewise
+    │       ├── CannotCompute          the room's numbers cannot be computed
     │       ├── StillReferred          other records refer to what was to go
     │       ├── ReadOnlyRecord         a shipped basis or fluid
     │       ├── IdempotencyRunning     the first request with this key still runs
@@ -242,6 +244,17 @@ class AsOfTooEarly(RimewardError):
     status, type, title = 404, "as-of-too-early", "Nothing is kept from that moment"
 
 
+class NoSuchCase(RimewardError):
+    """The room has no case like the one asked for; the detail says which it has."""
+
+    status, type, title = 404, "no-such-case", "The room has no such case"
+
+    @classmethod
+    def parameter(cls, name: str, detail: str) -> Self:
+        """Name the parameter that no case of the room has, and what there is."""
+        return cls(errors=(FieldError("", "no-such-case", detail, parameter=name),))
+
+
 class PathNotFound(RimewardError):
     """The service has no such path."""
 
@@ -309,6 +322,12 @@ class DuplicateExternalId(Conflict):
     def __init__(self, kind: str = "record") -> None:
         detail = f"Another {kind} of this site has this external id."
         super().__init__(errors=(FieldError("/external_id", "external-id-taken", detail),))
+
+
+class CannotCompute(Conflict):
+    """The records of the room do not allow its numbers to be computed; the detail says why."""
+
+    type, title = "cannot-compute", "The room cannot be computed"
 
 
 class StillReferred(Conflict):

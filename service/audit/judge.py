@@ -40,16 +40,9 @@ _EPOCH: Final = datetime(1970, 1, 1, tzinfo=UTC)
 def assess_rooms(rooms: Sequence[RoomValues], *, at: datetime) -> tuple[Assessment, ...]:
     """Assess rooms at a moment; one that cannot be computed says so and hides no other."""
     moment = moments([at])[0]
-    tables = _tables(rooms, at, moment)
-    table = tables.cases.table
-    judged = [(rule, rule.judge(tables, moment)) for rule in RULES]
+    tables, judged = _judged(rooms, at, moment)
     judgements = _judgements(tables, judged)
-    bare = cases_of(without_margins(table.given), moment)
-    told = Told(
-        tables=tables,
-        without=with_boost(bare, moment),
-        leading=_leading(tables, judged),
-    )
+    told = _told(tables, judged, moment)
     turns = next_turns(tables, [(rule.subject, answer) for rule, answer in judged], moment)
     row_of = np.full(len(rooms), UNKNOWN)
     row_of[tables.sound] = np.arange(tables.sound.size)
@@ -57,6 +50,24 @@ def assess_rooms(rooms: Sequence[RoomValues], *, at: datetime) -> tuple[Assessme
         _assessment(told, room, position, int(row), judgements[position], turns[position], at)
         for position, (room, row) in enumerate(zip(rooms, row_of, strict=True))
     )
+
+
+def told_of(rooms: Sequence[RoomValues], *, at: datetime) -> Told:
+    """Solve rooms at a moment and lay out what there is to tell of them."""
+    moment = moments([at])[0]
+    return _told(*_judged(rooms, at, moment), moment)
+
+
+def _judged(
+    rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64
+) -> tuple[Tables, list[tuple[Rule, Judged]]]:
+    tables = _tables(rooms, at, moment)
+    return tables, [(rule, rule.judge(tables, moment)) for rule in RULES]
+
+
+def _told(tables: Tables, judged: Sequence[tuple[Rule, Judged]], moment: np.datetime64) -> Told:
+    bare = cases_of(without_margins(tables.cases.table.given), moment)
+    return Told(tables=tables, without=with_boost(bare, moment), leading=_leading(tables, judged))
 
 
 def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) -> Tables:

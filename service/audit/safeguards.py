@@ -76,6 +76,7 @@ class Safeguards:
     alone_suffices: Mask  # nobody inside counts as all
     nobody_counts: Mask  # a kind of room where nobody inside is a safeguard
     alarm: Floats  # [s] to the first alarm; not-a-number where there is none
+    out: Floats  # [s] until people are out; not-a-number where nothing warns them
     margin: Floats  # [s] between being out and the second mark; not-a-number where nobody is
     late: Mask  # the second mark comes before people are out
     needs_low: Mask
@@ -131,8 +132,7 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
     has_high = _any(warns & found.is_high[detector], case, table.size)
     # What is seen and heard is a warning from the start, before any alarm.
     warned = np.where(_NOTICED[table.release] & ~table.at_once, 0.0, first)
-    # A comparison with not-a-number is false: without any warning people are not out.
-    out = warned + out_after <= second
+    out = warned + out_after
     return Safeguards(
         detectors=found,
         detection=(has_low | ~needs_low) & (has_high | ~needs_high) & (needs_low | needs_high),
@@ -142,8 +142,10 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
         alone_suffices=alone & is_one_of(kind, _SEALED),
         nobody_counts=is_one_of(kind, [*_SEALED, _PIT]),
         alarm=rounded(first),
+        out=rounded(out),
         margin=rounded(second - warned - out_after),
-        late=~table.at_once & ~np.isnan(second) & ~out,
+        # A comparison with not-a-number is false: without any warning people are not out.
+        late=~table.at_once & ~np.isnan(second) & ~(out <= second),
         needs_low=needs_low,
         needs_high=needs_high,
         alarms=alarms,

@@ -49,9 +49,13 @@ class Told:
         ):
             object.__setattr__(self, name, value)
 
+    def rows(self, row: int) -> Integers:
+        """Rows of the table that the cases of a room are, in the order of its cases."""
+        return self._cases[row]
+
     def cases(self, row: int) -> tuple[Case, ...]:
         """The cases of a room, in the order of releases, the largest first."""
-        return tuple(self._all_cases[case] for case in self._cases[row].tolist())
+        return tuple(self._all_cases[case] for case in self.rows(row).tolist())
 
     def deciding(self, row: int) -> int | None:
         """Place of the case that the standing rests on."""

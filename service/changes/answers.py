@@ -241,7 +241,7 @@ def results_document(assessment: Assessment) -> bytes:
     return canonical(
         {
             "figures": dict(assessment.figures),
-            "cases": [_case_document(case) for case in assessment.cases],
+            "cases": [case_document(case) for case in assessment.cases],
             "judgements": [_judgement_document(judged) for judged in assessment.judgements],
             "deciding": assessment.deciding,
             "failed": assessment.failed,
@@ -255,7 +255,8 @@ def _fields(value: Case | Judgement | Ventilation) -> dict[str, Any]:
     return {name: getattr(value, name) for name in value.__slots__}
 
 
-def _case_document(case: Case) -> dict[str, Any]:
+def case_document(case: Case) -> dict[str, Any]:
+    """Write a case down, with its vessels and marks."""
     document = _fields(case)
     document["vessels"] = [plain(vessel) for vessel in case.vessels]
     document["vessel_ids"] = [vessel.id for vessel in case.vessels]

@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import math
 import zlib
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any, Final
 
@@ -14,6 +14,7 @@ from sqlalchemy import Connection
 from service.audit.assessment import METHOD_VERSION
 from service.audit.judge import assess_rooms
 from service.changes.answers import inputs_document, results_document
+from service.changes.rebuilt import VersionMissing, records_read
 from service.changes.replace import assessment_digest, entry_of, finding_digest
 from service.changes.room_values import values_of_rooms
 from service.store.engine import Database
@@ -24,7 +25,6 @@ from service.store.history import (
     StoredAssessment,
     chained,
     changes_of,
-    version_of,
     versions_of,
 )
 from service.store.live import list_records
@@ -203,8 +203,10 @@ class _Walk:
         ours = [one for one in stored if one.method_version == METHOD_VERSION]
         if not ours:
             return
-        records = self._records_read(position, ours)
-        if records is None:
+        try:
+            records = records_read(self._connection, ours)
+        except VersionMissing as missing:
+            self._fault(position, str(missing))
             return
         room_ids = [one.room_id for one in ours]
         values = values_of_rooms(records, room_ids)
@@ -222,27 +224,6 @@ class _Walk:
                     self._fault(
                         position, f"assessment of room {one.room_id}, recomputed: {difference}"
                     )
-
-    def _records_read(
-        self, position: int, stored: Iterable[StoredAssessment]
-    ) -> dict[str, Record] | None:
-        records: dict[str, Record] = {}
-        for one in stored:
-            for line in json.loads(one.inputs)["read"]:
-                if line["id"] in records:
-                    continue
-                record = version_of(
-                    EVERYTHING, self._connection, line["kind"], line["id"], line["revision"]
-                )
-                if record is None:
-                    self._fault(
-                        position,
-                        f"{line['kind']} {line['id']} revision {line['revision']}, which the"
-                        f" assessment of room {one.room_id} rests on, is not there",
-                    )
-                    return None
-                records[record.id] = record
-        return records
 
     def _check_live(self) -> None:
         live = {

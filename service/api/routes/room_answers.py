@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from datetime import datetime
-from typing import Annotated, Any
+from typing import Annotated
 
 from fastapi import APIRouter, Path, Query, Request
 from sqlalchemy import Connection
@@ -21,7 +21,7 @@ from service.changes.answers import assessment_answer, stored_status
 from service.errors import RecordNotFound
 from service.store.findings import findings_at, findings_of_rooms
 from service.store.heads import head_of
-from service.store.history import assessment_at, assessment_now, record_at
+from service.store.history import StoredAssessment, assessment_at, assessment_now, record_at
 from service.store.scope import Scope
 
 router = APIRouter(prefix="/v1/rooms", tags=["Rooms"])
@@ -84,7 +84,9 @@ def _tagged(request: Request, poll: Poll, body: bytes) -> Response:
     return Response(body, 200, dict(poll.headers), JSON)
 
 
-def _past(scope: Scope, connection: Connection, room_id: str, moment: datetime) -> tuple[Any, int]:
+def _past(
+    scope: Scope, connection: Connection, room_id: str, moment: datetime
+) -> tuple[StoredAssessment, int]:
     position = position_of(scope, connection, "room", room_id, moment)
     assessment = assessment_at(scope, connection, room_id, position)
     gone = record_at(scope, connection, "room", room_id, position) is None
@@ -98,27 +100,35 @@ def _poll_of_past(scope: Scope, connection: Connection, room_id: str, moment: da
     return poll_at(scope, connection, assessment, position, moment)
 
 
+def assessment_asked_for(
+    scope: Scope, connection: Connection, room_id: str, as_of: datetime | None, now: datetime
+) -> tuple[StoredAssessment, Poll, int | None]:
+    """Give the assessment of a room, how current it is, and its position where it is past.
+
+    Raises
+    ------
+    RecordNotFound
+        There is no such room for this key, or there was none then.
+    """
+    if as_of is not None:
+        assessment, position = _past(scope, connection, room_id, as_of)
+        return assessment, poll_at(scope, connection, assessment, position, as_of), position
+    found = assessment_now(scope, connection, room_id)
+    if found is None:
+        raise RecordNotFound.of("room")
+    head = head_of(scope, connection, found.site_id)
+    wanted = 0 if head is None else head.wanted_position
+    return found, polled(stored_status(found), wanted, now), None
+
+
 def _assessment(
     scope: Scope, connection: Connection, room_id: str, as_of: datetime | None, now: datetime
 ) -> tuple[Poll, bytes]:
-    if as_of is not None:
-        assessment, position = _past(scope, connection, room_id, as_of)
-        poll = poll_at(scope, connection, assessment, position, as_of)
-        findings = [
-            finding
-            for finding in findings_at(scope, connection, room_id, position)
-            if finding["state"] != "cleared"
-        ]
-        return poll, assessment_answer(assessment, findings, poll.currency)
-    assessment = assessment_now(scope, connection, room_id)
-    if assessment is None:
-        raise RecordNotFound.of("room")
-    head = head_of(scope, connection, assessment.site_id)
-    wanted = 0 if head is None else head.wanted_position
-    poll = polled(stored_status(assessment), wanted, now)
-    findings = [
-        finding
-        for finding in findings_of_rooms(scope, connection, [room_id])
-        if finding["state"] != "cleared"
-    ]
-    return poll, assessment_answer(assessment, findings, poll.currency)
+    assessment, poll, past = assessment_asked_for(scope, connection, room_id, as_of, now)
+    findings = (
+        findings_of_rooms(scope, connection, [room_id])
+        if past is None
+        else findings_at(scope, connection, room_id, past)
+    )
+    open_still = [finding for finding in findings if finding["state"] != "cleared"]
+    return poll, assessment_answer(assessment, open_still, poll.currency)
