@@ -2,6 +2,7 @@
 
 import json
 import re
+from dataclasses import replace
 
 import pytest
 
@@ -110,3 +111,14 @@ class TestRemedies:
     def test_nobody_rides_with_a_dewar(self):
         room = a_room(8, kind="lift", vessels=(still(25),))
         assert "Let nobody ride" in judged(room, "oxygen/largest-vessel").remedy
+
+
+def test_a_room_is_told_the_same_whichever_rooms_stand_beside_it():
+    """What is said of one is looked up in the tables of all."""
+    rooms = [
+        replace(pair.outside, record=replace(pair.outside.record, id=f"room-{place}"))
+        for place, pair in enumerate(PAIRS)
+    ]
+    together = assessed(*rooms)
+    for room, found in zip(rooms, together, strict=True):
+        assert found.judgements == assessed(room)[0].judgements

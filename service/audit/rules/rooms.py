@@ -31,9 +31,7 @@ def sources_of(tables: Tables, room: int) -> Integers:
     rows = np.arange(first, end)
     purge = table.sources.room[vessels.size :]
     first, end = np.searchsorted(purge, [room, room + 1])
-    return np.concatenate(
-        [rows[table.stock.present[rows]], vessels.size + np.arange(first, end)]
-    )
+    return np.concatenate([rows[table.stock.present[rows]], vessels.size + np.arange(first, end)])
 
 
 def holding_gas(tables: Tables) -> Mask:
