@@ -16,7 +16,7 @@ from service.errors import FieldsRefused, NotAcceptable
 
 CSV: Final = "text/csv"
 SVG: Final = "image/svg+xml"
-FORMATS: Final[Mapping[str, str]] = {"json": JSON, "csv": CSV}
+FORMATS: Final[Mapping[str, str]] = {"json": JSON, "csv": CSV, "svg": SVG}
 
 # What a program that opens tables would take for a formula.
 _FORMULA: Final = ("=", "+", "-", "@", "\t", "\r", "\n")

@@ -11,6 +11,7 @@ from sqlalchemy import Connection
 from starlette.responses import Response
 
 from service.api.access import LONGEST_PARAMETER, READ, allowed
+from service.api.curve_picture import curve_picture
 from service.api.deps import JSON, AsOf, Reader
 from service.api.forms import CSV, SVG, FormatText, csv_bytes, form_of
 from service.api.rendering import FRESH
@@ -37,6 +38,8 @@ router = APIRouter(prefix="/v1/rooms", tags=["Rooms"])
 FEWEST: Final = 2
 MOST: Final = 2000
 USUAL: Final = 200
+# A picture has its own style and nothing else.
+PICTURE_POLICY: Final = "default-src 'none'; style-src 'unsafe-inline'; frame-ancestors 'none'"
 WORDS: Final[Mapping[str, tuple[str, ...]]] = {
     "release": tuple(release.slug for release in RELEASES),
     "airflow": tuple(airflow for airflow in AIRFLOWS if airflow != PROVEN),
@@ -120,6 +123,8 @@ async def get_curve(
     now = read.service.clock.now()
     body = await read(_course, room_id, as_of, now, choice, points, _BODIES[form])
     headers = {**FRESH, "Vary": "Accept"}
+    if form == SVG:
+        headers["Content-Security-Policy"] = PICTURE_POLICY
     return Response(body, 200, headers, form)
 
 
@@ -156,4 +161,5 @@ def _as_csv(course: CourseOfRoom, _currency: str) -> bytes:
 _BODIES: Final[Mapping[str, Callable[[CourseOfRoom, str], bytes]]] = {
     JSON: _as_json,
     CSV: _as_csv,
+    SVG: curve_picture,
 }
