@@ -28,9 +28,7 @@ def times_of(run: Course, end: float, exact: Iterable[float], most: int) -> Floa
     joints = _some(joints[(joints > 0.0) & (joints < end)], most - kept.size)
     kept = np.concatenate([kept, joints])
     spare = most - kept.size
-    by_change = round(spare * _BY_CHANGE)
-    between = np.concatenate([_by_change(run, end, by_change), _by_time(end, spare - by_change)])
-    return np.unique(np.concatenate([kept, rounded(between)]))
+    return np.unique(np.concatenate([kept, rounded(_between(run, end, spare))]))
 
 
 def _some(values: Floats, most: int) -> Floats:
@@ -40,18 +38,25 @@ def _some(values: Floats, most: int) -> Floats:
     return values[np.linspace(0.0, values.size - 1.0, most).astype(np.int64)]
 
 
+def _between(run: Course, end: float, count: int) -> Floats:
+    times = np.minimum(run.times[0], end)
+    levels = fraction_at(run, times[np.newaxis, :])[0]
+    if not bool(np.any(levels != levels[0])):
+        return _by_time(end, count)
+    by_change = round(count * _BY_CHANGE)
+    return np.concatenate(
+        [_by_change(run, times, levels, by_change), _by_time(end, count - by_change)]
+    )
+
+
 def _by_time(end: float, count: int) -> Floats:
     return np.linspace(0.0, end, count + 2)[1:-1]
 
 
-def _by_change(run: Course, end: float, count: int) -> Floats:
+def _by_change(run: Course, times: Floats, levels: Floats, count: int) -> Floats:
     """Times between which the fraction moves by equal steps, up and down alike."""
-    times = np.minimum(run.times[0], end)
-    levels = fraction_at(run, times[np.newaxis, :])[0]
     way = np.diff(levels)
     gone = np.cumsum(np.abs(way))
-    if not gone.size or not gone[-1] > 0.0:
-        return _by_time(end, count)
     sought = gone[-1] * np.arange(1, count + 1) / (count + 1)
     segment = np.minimum(np.searchsorted(gone, sought), way.size - 1)
     into = sought - gone[segment] + np.abs(way[segment])
