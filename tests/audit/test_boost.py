@@ -204,6 +204,7 @@ def test_helium_is_boosted_by_the_detector_at_the_ceiling():
         assert (boosted < measured) is quicker
 
 
+@pytest.mark.slow
 @settings(max_examples=40)
 @given(
     st.floats(5.0, 400.0),
@@ -225,7 +226,7 @@ def test_a_boost_is_never_worse_than_none(litres_a_day, delay, arrangement, exch
     for case in boosted:
         plain = measured[case.release, case.hazard]
         assert case.oxygen_pct >= plain.oxygen_pct - 1e-8
-        assert case.alarm_s == plain.alarm_s
+        assert case.alarm_s == pytest.approx(plain.alarm_s, rel=1e-8)
         if plain.recovered_s is not None:
             assert case.recovered_s <= plain.recovered_s * (1 + 1e-9)
 
