@@ -26,7 +26,17 @@ from service.api.limits import Limits
 from service.api.openapi import described
 from service.api.poll import LENGTH, PollLayer, answered_outermost, send_answer
 from service.api.problems import install_problem_handlers
-from service.api.routes import changes, curve, docs, findings, health, keys, room_answers
+from service.api.routes import (
+    changes,
+    curve,
+    docs,
+    findings,
+    health,
+    keys,
+    methods,
+    room_answers,
+    summary,
+)
 from service.api.routes.declared import with_heads
 from service.api.routes.records import record_routers
 from service.api.service import Service
@@ -123,6 +133,8 @@ def _routes() -> tuple[BaseRoute, ...]:
         curve.router,
         changes.router,
         findings.router,
+        summary.router,
+        methods.router,
         keys.router,
         health.router,
         docs.router,

@@ -41,6 +41,8 @@ TAGS: Final = (
     ("Fluids", "Reference data of fluids; a site may add its own mixtures."),
     ("Changes", "Several record changes in one transaction."),
     ("Findings", "What the records of rooms show to be wrong, and what to do."),
+    ("Summary", "Sites in counts, and the rooms that stand worst."),
+    ("Methods", "The methods that results name and the rules that findings come from, in words."),
     ("Keys", "Who may ask, in which role and for which sites."),
     ("Operation", "Whether the process lives and can serve."),
 )

@@ -36,7 +36,7 @@ BEHIND: Final = "behind"
 FAILED: Final = "failed"
 
 _CURRENCY: Final = b'"currency":"'
-_JUDGES: Final = "records, not the air"
+JUDGES: Final = "records, not the air"
 _WORST_FIELDS: Final = (
     "release",
     "airflow",
@@ -89,7 +89,7 @@ def status_bytes(assessed: Assessed, position: int) -> bytes:
         "assessed_at": text_of(assessment.at),
         "currency": "",
         "basis": assessment.basis.tag,
-        "judges": _JUDGES,
+        "judges": JUDGES,
         "state": assessed.values.state,
         "standing": assessed.standing,
         "worst_oxygen_pct": assessed.worst_oxygen_pct,

@@ -19,6 +19,7 @@ NAMES: Final = tuple(FINDING_VERSION.columns.keys())
 """The columns of a finding."""
 
 _OLDER_THAN: Final = "older_than"
+_NEWER_THAN: Final = "newer_than"
 
 
 def append_findings(session: WriteSession, rows: Iterable[Mapping[str, Any]]) -> None:
@@ -68,8 +69,8 @@ def list_findings(
 ) -> list[dict[str, Any]]:
     """Return a page of findings; it goes on after the sort value and id of the last one seen.
 
-    Filters are columns, ``older_than`` (a moment: opened before it) and ``label.<name>`` (of the
-    room). A list of values has the column's as one of them.
+    Filters are columns, ``older_than`` and ``newer_than`` (moments: opened before, or since) and
+    ``label.<name>`` (of the room). A list of values has the column's as one of them.
 
     Raises
     ------
@@ -132,7 +133,9 @@ def _matching(
     columns: dict[str, Any] = {}
     for name, value in filters.items():
         if name == _OLDER_THAN:
-            query = query.where(FINDING.c.opened_at < _moment(value))
+            query = query.where(FINDING.c.opened_at < _moment(name, value))
+        elif name == _NEWER_THAN:
+            query = query.where(FINDING.c.opened_at >= _moment(name, value))
         elif name.startswith(LABEL):
             rooms = TABLES["room"]
             labelled = has_label(rooms, name.removeprefix(LABEL), str(value), dialect=dialect)
@@ -153,13 +156,13 @@ def _whole(row: Mapping[str, Any]) -> dict[str, Any]:
     return dict(row)
 
 
-def _moment(value: Any) -> datetime:
+def _moment(name: str, value: Any) -> datetime:
     if isinstance(value, datetime):
         return value
     try:
         return moment_of(value)
     except (TypeError, ValueError):
-        raise FieldsRefused.parameter(_OLDER_THAN, "wrong-type", "It must be a moment.") from None
+        raise FieldsRefused.parameter(name, "wrong-type", "It must be a moment.") from None
 
 
 _INSERT = insert(FINDING_VERSION)

@@ -129,3 +129,29 @@ def test_a_cleared_finding_is_left_out_until_asked_for_and_stands_in_the_past(as
     assert one == before[0]
     early = ask("GET", f"/v1/findings/{before[0]['id']}?as_of=2020-01-01T00:00:00Z")
     assert early.status_code == 404
+
+
+def test_findings_are_filtered_by_the_gas_the_subject_the_tag_of_the_room_and_the_age(ask, crowded):
+    everything = every_page(ask, "/v1/findings?limit=500")
+    first = everything[0]
+    room = ask.body("/v1/rooms?tag=F-1")["items"][0]
+    for asked, kept in (
+        ("gas=oxygen", lambda finding: finding["gas"] == "oxygen"),
+        (
+            f"subject_id={first['subject']['id']}",
+            lambda finding: finding["subject"]["id"] == first["subject"]["id"],
+        ),
+        ("room=f-1", lambda finding: finding["room_id"] == room["id"]),
+        (f"room=F-1&site={crowded.north.site['tag']}", lambda f: f["room_id"] == room["id"]),
+    ):
+        found = every_page(ask, f"/v1/findings?limit=500&{asked}")
+        assert found == [finding for finding in everything if kept(finding)]
+        assert found
+        now = ask.clock.now().isoformat().replace("+00:00", "Z")
+        assert every_page(ask, f"/v1/findings?limit=500&{asked}&as_of={now}") == found
+    assert ask.body("/v1/findings?room=NONE")["items"] == []
+    # The four rooms were made two days apart, and nothing has turned since.
+    young = every_page(ask, "/v1/findings?limit=500&newer_than_days=3&room=F-3")
+    assert young == every_page(ask, "/v1/findings?limit=500&room=F-3")
+    assert ask.body("/v1/findings?newer_than_days=1&room=F-0")["items"] == []
+    assert ask("GET", "/v1/findings?newer_than_days=x").status_code == 422

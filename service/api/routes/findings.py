@@ -50,6 +50,9 @@ FILTERS: Final[Mapping[str, Filter]] = {
     "site_id": Filter("The id of a site."),
     "site": Filter("The tag of a site."),
     "room_id": Filter("The id of a room."),
+    "room": Filter("The tag of a room, of any site that the key may see or of the one asked for."),
+    "gas": Filter("The gas judged, such as oxygen or carbon-dioxide."),
+    "subject_id": Filter("The id of the record that a finding is about."),
     "rule": Filter("A rule, such as oxygen/largest-vessel."),
     "family": Filter("A family of rules, such as oxygen."),
     "severity": Filter(f"One or more of {', '.join(SEVERITIES)}, with commas between."),
@@ -58,6 +61,7 @@ FILTERS: Final[Mapping[str, Filter]] = {
         "is said."
     ),
     "older_than_days": Filter("Opened more than so many days ago."),
+    "newer_than_days": Filter("Opened within so many days."),
 }
 SORTS: Final = frozenset(
     {"id", "opened_at", "changed_at", "rule", "family", "severity", "state", "position"}
@@ -107,9 +111,9 @@ def _filters(asked: Mapping[str, Any], now: datetime) -> dict[str, Any]:
         if filters.get(name) is not None:
             filters[name] = _some_of(name, filters[name], known)
     filters.setdefault("state", list(NOT_CLEARED))
-    if "older_than_days" in filters:
-        days = _days(filters.pop("older_than_days"))
-        filters["older_than"] = now - timedelta(days=days)
+    for name, moment in (("older_than_days", "older_than"), ("newer_than_days", "newer_than")):
+        if name in filters:
+            filters[moment] = now - timedelta(days=_days(name, filters.pop(name)))
     return filters
 
 
@@ -120,7 +124,7 @@ def _some_of(name: str, text: str, known: Sequence[str]) -> list[str]:
     return chosen
 
 
-def _days(text: str | None) -> float:
+def _days(name: str, text: str | None) -> float:
     try:
         days = float(text or "")
     except ValueError:
@@ -128,7 +132,7 @@ def _days(text: str | None) -> float:
     # Written so that what is no number is refused as well.
     if not 0.0 <= days <= MOST_DAYS:
         detail = f"A number of days from 0 to {MOST_DAYS:.0f}."
-        raise FieldsRefused.parameter("older_than_days", "out-of-range", detail)
+        raise FieldsRefused.parameter(name, "out-of-range", detail)
     return days
 
 
@@ -139,7 +143,7 @@ def _listed(
     listing: Listing,
     _as_of: datetime | None,
 ) -> tuple[list[dict[str, Any]], int | None]:
-    if not _resolve_site(scope, connection, filters):
+    if not _resolve(scope, connection, filters):
         return [], 0 if listing.total else None
     rows = list_findings(
         scope,
@@ -152,6 +156,26 @@ def _listed(
     )
     total = count(scope, connection, filters) if listing.total else None
     return [finding_answer(row) for row in rows], total
+
+
+def _resolve(scope: Scope, connection: Connection, filters: dict[str, Any]) -> bool:
+    """Put ids in place of tags; false: nothing of that name is there for this key."""
+    return _resolve_site(scope, connection, filters) and _resolve_room(scope, connection, filters)
+
+
+def _resolve_room(scope: Scope, connection: Connection, filters: dict[str, Any]) -> bool:
+    tag = filters.pop("room", None)
+    if tag is None:
+        return True
+    site_id = filters.get("site_id")
+    sites = (
+        [site_id] if site_id is not None else [head.site_id for head in heads_of(scope, connection)]
+    )
+    named = [record_by_tag(scope, connection, "room", site, tag) for site in sites]
+    ids = [room.id for room in named if room is not None]
+    asked = filters.get("room_id")
+    filters["room_id"] = ids if asked is None else [one for one in ids if one == asked]
+    return bool(filters["room_id"])
 
 
 def _resolve_site(scope: Scope, connection: Connection, filters: dict[str, Any]) -> bool:
@@ -173,11 +197,11 @@ def _listed_at(
     listing: Listing,
     as_of: datetime,
 ) -> tuple[list[dict[str, Any]], int | None]:
-    if not _resolve_site(scope, connection, filters):
+    if not _resolve(scope, connection, filters):
         return [], 0 if listing.total else None
     wanted_site = filters.pop("site_id", None)
     labels = {name: filters.pop(name) for name in list(filters) if name.startswith(LABEL)}
-    older_than = filters.pop("older_than", None)
+    older_than, newer_than = filters.pop("older_than", None), filters.pop("newer_than", None)
     rows: list[dict[str, Any]] = []
     for head in heads_of(scope, connection):
         if wanted_site in (None, head.site_id):
@@ -190,6 +214,7 @@ def _listed_at(
         for row in rows
         if all(_matches(row[name], wanted) for name, wanted in filters.items())
         and (older_than is None or row["opened_at"] < older_than)
+        and (newer_than is None or row["opened_at"] >= newer_than)
     ]
     return _page_of(matching, listing), len(matching) if listing.total else None
 

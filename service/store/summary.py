@@ -1,0 +1,190 @@
+"""Rooms and findings counted, and the rooms that stand worst: a few queries for any estate."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from datetime import datetime
+from typing import Any, Final
+
+from sqlalchemy import Connection, Select, case, func, or_, select
+
+from service.store.heads import Head, heads_of
+from service.store.scope import Scope, within
+from service.store.tables.registry import FINDING, HEAD, ROOM_STATE, TABLES
+
+IN_SERVICE: Final = "in-service"
+
+_ROOM: Final = TABLES["room"]
+_SITE: Final = TABLES["site"]
+_RANKS: Final = {"stop": 3, "action": 2, "attention": 1, "in-order": 0}
+_GRAVITY: Final = {"critical": 3, "major": 2, "minor": 1, "observation": 0}
+# Rooms that cannot be computed stand before those whose oxygen is known.
+_UNKNOWN_OXYGEN: Final = -1.0
+_NO_CASE: Final = 101.0
+
+
+@dataclass(frozen=True, slots=True)
+class SiteLine:
+    """A site of the summary, and where its history stands."""
+
+    site_id: str
+    tag: str
+    name: str | None
+    demo: bool
+    head: Head | None
+
+
+@dataclass(frozen=True, slots=True)
+class RoomCount:
+    """How many rooms of a site are in a state, a standing and a currency."""
+
+    site_id: str
+    state: str
+    standing: str
+    currency: str
+    count: int
+
+
+@dataclass(frozen=True, slots=True)
+class FindingCount:
+    """How many findings of rooms in service are in a state and of a severity."""
+
+    site_id: str
+    state: str
+    severity: str
+    count: int
+
+
+@dataclass(frozen=True, slots=True)
+class WorstRoom:
+    """A room of the summary's list, with the finding that sets its standing."""
+
+    room_id: str
+    site_id: str
+    tag: str
+    name: str | None
+    standing: str
+    worst_oxygen_pct: float | None
+    position: int
+    finding: dict[str, Any] | None
+
+
+def summary_sites(
+    scope: Scope, connection: Connection, site_ids: Sequence[str] | None
+) -> list[SiteLine]:
+    """Return the sites of a summary in the order of their tags; none named: all of the scope."""
+    columns = (_SITE.c.id, _SITE.c.tag, _SITE.c.name, _SITE.c.demo)
+    query = _asked(within(scope, select(*columns), _SITE.c.id), _SITE.c.id, site_ids)
+    heads = {head.site_id: head for head in heads_of(scope, connection)}
+    return [
+        SiteLine(row.id, row.tag, row.name, bool(row.demo), heads.get(row.id))
+        for row in connection.execute(query.order_by(_SITE.c.tag_folded, _SITE.c.id))
+    ]
+
+
+def room_counts(
+    scope: Scope,
+    connection: Connection,
+    site_ids: Sequence[str] | None,
+    *,
+    now: datetime,
+    method_version: str,
+) -> list[RoomCount]:
+    """Return rooms counted by site, state, standing and currency."""
+    old = or_(
+        ROOM_STATE.c.position < HEAD.c.wanted_position,
+        ROOM_STATE.c.method_version != method_version,
+    )
+    currency = case(
+        (ROOM_STATE.c.failed, "failed"),
+        (old, "recalculating"),
+        (ROOM_STATE.c.turns_at <= now, "behind"),
+        else_="current",
+    ).label("currency")
+    keys = (ROOM_STATE.c.site_id, _ROOM.c.state, ROOM_STATE.c.standing)
+    query = (
+        select(*keys, currency, func.count().label("counted"))
+        .join(_ROOM, _ROOM.c.id == ROOM_STATE.c.room_id)
+        .join(HEAD, HEAD.c.site_id == ROOM_STATE.c.site_id)
+        .group_by(*keys, currency)
+    )
+    asked = _asked(within(scope, query, ROOM_STATE.c.site_id), ROOM_STATE.c.site_id, site_ids)
+    return [
+        RoomCount(row.site_id, row.state, row.standing, row.currency, row.counted)
+        for row in connection.execute(asked)
+    ]
+
+
+def finding_counts(
+    scope: Scope, connection: Connection, site_ids: Sequence[str] | None
+) -> list[FindingCount]:
+    """Return findings that stand in rooms in service, counted by site, state and severity."""
+    keys = (FINDING.c.site_id, FINDING.c.state, FINDING.c.severity)
+    query = (
+        select(*keys, func.count().label("counted"))
+        .join(_ROOM, _ROOM.c.id == FINDING.c.room_id)
+        .where(FINDING.c.state != "cleared", _ROOM.c.state == IN_SERVICE)
+        .group_by(*keys)
+    )
+    asked = _asked(within(scope, query, FINDING.c.site_id), FINDING.c.site_id, site_ids)
+    return [
+        FindingCount(row.site_id, row.state, row.severity, row.counted)
+        for row in connection.execute(asked)
+    ]
+
+
+def worst_rooms(
+    scope: Scope, connection: Connection, site_ids: Sequence[str] | None, limit: int
+) -> list[WorstRoom]:
+    """Return the rooms in service that stand worst: by standing, then by their lowest oxygen."""
+    rank = case(_RANKS, value=ROOM_STATE.c.standing, else_=0)
+    oxygen = case(
+        (ROOM_STATE.c.failed, _UNKNOWN_OXYGEN),
+        else_=func.coalesce(ROOM_STATE.c.worst_oxygen_pct, _NO_CASE),
+    )
+    query = (
+        select(
+            ROOM_STATE.c.room_id,
+            ROOM_STATE.c.site_id,
+            _ROOM.c.tag,
+            _ROOM.c.name,
+            ROOM_STATE.c.standing,
+            ROOM_STATE.c.worst_oxygen_pct,
+            ROOM_STATE.c.position,
+        )
+        .join(_ROOM, _ROOM.c.id == ROOM_STATE.c.room_id)
+        .where(_ROOM.c.state == IN_SERVICE, ROOM_STATE.c.standing != "in-order")
+        .order_by(rank.desc(), oxygen, _ROOM.c.tag_folded, ROOM_STATE.c.room_id)
+        .limit(limit)
+    )
+    asked = _asked(within(scope, query, ROOM_STATE.c.site_id), ROOM_STATE.c.site_id, site_ids)
+    rows = connection.execute(asked).mappings().all()
+    findings = _gravest(scope, connection, [row["room_id"] for row in rows])
+    return [WorstRoom(**row, finding=findings.get(row["room_id"])) for row in rows]
+
+
+def _gravest(
+    scope: Scope, connection: Connection, room_ids: Sequence[str]
+) -> dict[str, dict[str, Any]]:
+    """The gravest finding that stands of each room, the oldest where there are several."""
+    query = select(
+        FINDING.c.id,
+        FINDING.c.room_id,
+        FINDING.c.rule,
+        FINDING.c.gas,
+        FINDING.c.severity,
+        FINDING.c.state,
+        FINDING.c.statement,
+    ).where(FINDING.c.room_id.in_(room_ids), FINDING.c.state != "cleared")
+    gravest: dict[str, dict[str, Any]] = {}
+    rank = case(_GRAVITY, value=FINDING.c.severity, else_=0)
+    accepted = case((FINDING.c.state == "accepted", 1), else_=0)
+    ordered = within(scope, query, FINDING.c.site_id).order_by(accepted, rank.desc(), FINDING.c.id)
+    for row in connection.execute(ordered).mappings():
+        gravest.setdefault(row["room_id"], {k: v for k, v in row.items() if k != "room_id"})
+    return gravest
+
+
+def _asked(query: Select[Any], column: Any, site_ids: Sequence[str] | None) -> Select[Any]:
+    return query if site_ids is None else query.where(column.in_(site_ids))
