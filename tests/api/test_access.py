@@ -101,7 +101,8 @@ def test_the_past_is_for_auditors_and_administrators(ask_one, estate_of_one, rol
     room = estate_of_one.north.room["id"]
     moment = "2027-03-01T08:00:00.5Z"
     ask_one.clock.advance(timedelta(seconds=1))
-    for path in (f"/v1/rooms/{room}", f"/v1/rooms/{room}/status", f"/v1/rooms/{room}/assessment"):
+    for answered in ("", "/status", "/assessment", "/curve"):
+        path = f"/v1/rooms/{room}{answered}"
         answer = ask_one("GET", f"{path}?as_of={moment}", key=role)
         assert answer.status_code == (200 if role in PAST else 403), answer.text
     answer = ask_one("GET", f"/v1/findings?as_of={moment}", key=role)
@@ -182,7 +183,7 @@ def test_another_sites_record_is_not_there_for_a_key_of_one_site(north, estate, 
 def test_another_sites_room_answers_nothing(north, estate, ask):
     room = estate.south.room["id"]
     ask.clock.advance(timedelta(seconds=1))
-    for path in ("status", "assessment"):
+    for path in ("status", "assessment", "curve"):
         for query in ("", "?as_of=2027-03-01T08:00:00.5Z", "?as_of=2020-01-01T00:00:00Z"):
             assert north("GET", f"/v1/rooms/{room}/{path}{query}").status_code == 404
     assert north("GET", f"/v1/rooms/{room}/status?at_least=1").status_code == 404
