@@ -598,7 +598,7 @@ ASSUMPTIONS: Final = (
         _flow,
         "Its flow was never measured: a share of the design flow, or none.",
         "never_measured_share",
-        True,
+        False,  # a finding of its own
         _as_designed,  # the whole design flow
     ),
     Assumption(
@@ -608,7 +608,7 @@ ASSUMPTIONS: Final = (
         _flow,
         "The measurement of its flow is overdue: the lower of design and measurement.",
         COMMON_PRACTICE,
-        True,
+        False,  # a finding of its own
         _still_as_measured,
     ),
     Assumption(

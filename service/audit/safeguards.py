@@ -127,7 +127,10 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
     kind = table.given.rooms.kind[table.room]
     alone = table.given.rooms.unaccompanied[table.room] == 1
     in_time = np.isnan(second[case]) | (alarm + out_after[case] <= second[case])
-    warns = found.warns_outside[detector] & ~np.isnan(alarm) & (table.at_once[case] | in_time)
+    # One that nobody says alarms at all is no safeguard, late though it is taken to warn.
+    recorded = ~np.isnan(table.given.detectors.alarms).all(axis=1)[detector]
+    warns = recorded & found.warns_outside[detector] & ~np.isnan(alarm)
+    warns &= table.at_once[case] | in_time
     has_low = _any(warns & found.is_low[detector], case, table.size)
     has_high = _any(warns & found.is_high[detector], case, table.size)
     # What is seen and heard is a warning from the start, before any alarm.

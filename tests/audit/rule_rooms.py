@@ -461,6 +461,12 @@ _POISON = a_fluid(
 _RECORDS = (
     Pair("records/cannot-compute", a_room(1e-3), a_room(0.0), "major"),
     Pair(
+        "records/count-stale",
+        a_room(vessels=(still(1, contents_volume=0.5 * LITRE, count_due=NOW + SECOND),)),
+        a_room(vessels=(still(1, contents_volume=0.5 * LITRE, count_due=NOW),)),
+        "observation",
+    ),
+    Pair(
         "records/hazard-not-computed",
         a_room(vessels=(still(1, fluid=replace(_POISON, hazards=frozenset({"asphyxiant"}))),)),
         a_room(vessels=(still(1, fluid=_POISON),)),

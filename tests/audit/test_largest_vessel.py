@@ -11,7 +11,6 @@ from tests.audit.builders import (
     HELIUM,
     LATER,
     LITRE,
-    METHANE,
     NITROGEN,
     OXYGEN,
     PER_DAY,

@@ -61,6 +61,7 @@ _RECORDS: Final[Mapping[str, str]] = {
     "controls/overdue": "An administrative measure was never checked, or not in date.",
     "records/cannot-compute": "The numbers recorded of a room cannot be.",
     "records/hazard-not-computed": "A site's own gas has a hazard for which no limit is at hand.",
+    "records/count-stale": "What a vessel holds was counted too long ago.",
     "records/assumed": "Something that matters was not recorded, and a cautious value was taken.",
     "records/assumed-deciding": "The standing rests on something that was not recorded.",
     "records/room-implausible": "Numbers of a room can be, but hardly are.",

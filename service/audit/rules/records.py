@@ -10,14 +10,18 @@ import numpy as np
 
 from service.audit.assumptions import ASSUMPTIONS
 from service.audit.bases import COMMON_PRACTICE
+from service.audit.columns import FILLED_BY, VESSEL_STATES, Moments, all_of
 from service.audit.hazards import flammable_limit, of_fluid
 from service.audit.rules import plausible
-from service.audit.rules.kinds import Missing, never
+from service.audit.rules.kinds import Missing, Overdue, never
 from service.audit.rules.rooms import any_of_room, sources_of, sources_there
 from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables, record_of
 from service.audit.rules.words import as_record, listed
 from service.audit.severity import MAJOR, MINOR, OBSERVATION
 from service.physics.arrays import Integers, Mask
+
+_EMPTY = VESSEL_STATES.index("empty")
+_AUTOMATIC = FILLED_BY.index("automatic")
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,6 +140,24 @@ def _say_not_computed(tables: Tables, row: int) -> tuple[str, str, Mapping[str, 
     )
 
 
+def _count_due(tables: Tables) -> Moments:
+    due: Moments = tables.cases.table.given.vessels.count_due
+    return due
+
+
+def _is_shown_as_recorded(tables: Tables) -> Mask:
+    """Vessels whose recorded contents are shown beside the full reading that counts.
+
+    Where the recorded reading is what is wanted, a lapsed count is an assumption, and told as one.
+    """
+    table = tables.cases.table
+    vessels = table.given.vessels
+    recorded = ~np.isnan(vessels.contents_volume) | ~np.isnan(vessels.contents_mass)
+    wanted = table.given.bases.as_recorded[vessels.room] | (vessels.state == _EMPTY)
+    by_hand = vessels.filled_by != _AUTOMATIC
+    return all_of(table.stock.present, recorded, ~wanted, by_hand, ~np.isnat(vessels.count_due))
+
+
 RULES: Final = (
     CannotCompute(),
     Missing(
@@ -146,6 +168,18 @@ RULES: Final = (
         words=_say_not_computed,
         method="records/sound",
         source="what cannot be computed needs action; " + COMMON_PRACTICE,
+    ),
+    Overdue(
+        slug="records/count-stale",
+        subject=Subject.VESSELS,
+        applies=_is_shown_as_recorded,
+        due=_count_due,
+        overdue="The count of what {tag} holds has been overdue since {due}.",
+        never_done="What {tag} holds was never counted.",
+        remedy="Read the contents again and record when; until then it is taken full.",
+        consequence=OBSERVATION,
+        method="records/due-dates",
+        source="count_every_days of the basis; " + COMMON_PRACTICE,
     ),
     AssumedRule(slug="records/assumed", consequence=OBSERVATION, decides=False),
     AssumedRule(slug="records/assumed-deciding", consequence=MINOR, decides=True),
