@@ -72,6 +72,42 @@ class PeakRead(Growing):
     airflow: str
 
 
+class MarkRead(Growing):
+    """A mark of a case, what it is set against, and whether the case is beyond it."""
+
+    place: int = Field(description="1 first, 2 second, 3 third.")
+    measure: str = Field(description="oxygen, peak, mean-15min, mean-8h or lower-limit.")
+    limit: str = Field(description="The value of the basis that sets it.")
+    limit_pct: float
+    value_pct: float
+    crossed: bool
+    at_s: float | None = Field(
+        description="When; for a mean, when the gas itself first passes the limit."
+    )
+
+
+class CaseRead(WorstRead):
+    """One release of the room under one airflow, for one hazard."""
+
+    counts: bool = Field(description="Towards the standing.")
+    vessels: list[dict[str, Any]] = Field(description="What is let go, in its revision.")
+    marks: list[MarkRead]
+    gas_m3: float = Field(description="Let go at the room's pressure and temperature.")
+    required_m3_h: float | None = Field(
+        description="Outdoor air that a fan must move to hold it inside the first mark."
+    )
+    required_reason: str | None = Field(description="Why there is no such flow.")
+    restore_m3_h: float | None = Field(
+        description="Outdoor air that a fan must move to bring the room back in time."
+    )
+    alarm_s: float | None = Field(description="To the first alarm.")
+    margin_s: float | None = Field(description="Between being out and the second mark.")
+    without_margins: dict[str, float | None] = Field(
+        description="The same with every stacked factor at 1, as by hand."
+    )
+    method: list[str]
+
+
 class VentilationRead(Growing):
     """The air of a room, as a fan moves it and as it counts."""
 
@@ -147,7 +183,7 @@ class AssessmentRead(StatusBasis):
     inputs: list[dict[str, Any]] = Field(description="The records read, in their revisions.")
     assumed: list[dict[str, Any]] = Field(description="What was missing, and what was taken.")
     figures: dict[str, Any]
-    cases: list[dict[str, Any]]
+    cases: list[CaseRead]
     methods: list[str]
     findings: list[FindingRead]
     cautions: str
