@@ -9,6 +9,7 @@ from fastapi import FastAPI, Request
 from starlette.types import Scope
 
 from service.api.keyring import KeyRing
+from service.api.questions import Questions
 from service.clock import Clock
 from service.store.engine import Database
 from service.store.memory import StatusMemory
@@ -30,6 +31,7 @@ class Service:
     """False from the moment the service begins to stop, so that nobody sends more."""
     in_flight: set[tuple[str, str, str]] = field(default_factory=set)
     """Requests with an Idempotency-Key that run now: key, path and token."""
+    questions: Questions = field(default_factory=Questions)
 
 
 def service_of(request: Request) -> Service:

@@ -45,10 +45,24 @@ class CourseOfRoom:
         )
 
 
+def room_asked_of(connection: Connection, assessment: StoredAssessment) -> RoomValues:
+    """Give the values that a room was assessed from.
+
+    Raises
+    ------
+    AsOfTooEarly
+        What the assessment rests on is no longer kept.
+    """
+    try:
+        return room_of(connection, assessment)
+    except VersionMissing as missing:
+        raise AsOfTooEarly(f"It cannot be computed again: {missing}.") from None
+
+
 def course_of_room(
-    connection: Connection, assessment: StoredAssessment, choice: Choice, points: int
+    assessment: StoredAssessment, room: RoomValues, choice: Choice, points: int
 ) -> CourseOfRoom:
-    """Compute a course from the versions that an assessment rests on, at its moment.
+    """Compute a course from the values that an assessment rests on, at its moment.
 
     Raises
     ------
@@ -56,13 +70,7 @@ def course_of_room(
         The room has no case like the one asked for.
     CannotCompute
         The records of the room do not allow it.
-    AsOfTooEarly
-        What the assessment rests on is no longer kept.
     """
-    try:
-        room = room_of(connection, assessment)
-    except VersionMissing as missing:
-        raise AsOfTooEarly(f"It cannot be computed again: {missing}.") from None
     try:
         curve = _curve(room, assessment, choice, points)
     except NotComputed as why:

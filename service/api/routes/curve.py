@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from dataclasses import dataclass
 from datetime import datetime
 from typing import Annotated, Any, Final
 
@@ -21,6 +22,7 @@ from service.api.schemas.curve import CurveRead
 from service.audit.air import AIRFLOWS, PROVEN
 from service.audit.curve import Choice
 from service.audit.hazards import HAZARDS
+from service.audit.inputs import RoomValues
 from service.audit.releases import RELEASES
 from service.changes.answers import rendered
 from service.changes.curve import (
@@ -29,8 +31,10 @@ from service.changes.curve import (
     course_of_room,
     curve_document,
     curve_rows,
+    room_asked_of,
 )
 from service.errors import CannotCompute, FieldsRefused, NoSuchCase, NotAcceptable
+from service.store.history import StoredAssessment
 from service.store.scope import Scope
 
 router = APIRouter(prefix="/v1/rooms", tags=["Rooms"])
@@ -121,7 +125,8 @@ async def get_curve(
     choice = Choice(release, airflow, hazard, gas, vessel_id)
     _refuse_unknown(choice)
     now = read.service.clock.now()
-    body = await read(_course, room_id, as_of, now, choice, points, _BODIES[form])
+    asked = await read(_asked_of, room_id, as_of, now)
+    body = await read.service.questions(_course, asked, choice, points, _BODIES[form])
     headers = {**FRESH, "Vary": "Accept"}
     if form == SVG:
         headers["Content-Security-Policy"] = PICTURE_POLICY
@@ -136,18 +141,26 @@ def _refuse_unknown(choice: Choice) -> None:
             raise FieldsRefused.parameter(name, "not-one-of", detail)
 
 
+@dataclass(frozen=True, slots=True)
+class _AskedOf:
+    """What a course is computed from, read in one snapshot."""
+
+    assessment: StoredAssessment
+    room: RoomValues
+    currency: str
+
+
+def _asked_of(
+    scope: Scope, connection: Connection, room_id: str, as_of: datetime | None, now: datetime
+) -> _AskedOf:
+    assessment, poll, _ = assessment_asked_for(scope, connection, room_id, as_of, now)
+    return _AskedOf(assessment, room_asked_of(connection, assessment), poll.currency)
+
+
 def _course(
-    scope: Scope,
-    connection: Connection,
-    room_id: str,
-    as_of: datetime | None,
-    now: datetime,
-    choice: Choice,
-    points: int,
-    body: Callable[[CourseOfRoom, str], bytes],
+    asked: _AskedOf, choice: Choice, points: int, body: Callable[[CourseOfRoom, str], bytes]
 ) -> bytes:
-    assessment, poll = assessment_asked_for(scope, connection, room_id, as_of, now)[:2]
-    return body(course_of_room(connection, assessment, choice, points), poll.currency)
+    return body(course_of_room(asked.assessment, asked.room, choice, points), asked.currency)
 
 
 def _as_json(course: CourseOfRoom, currency: str) -> bytes:
