@@ -7,7 +7,7 @@ from typing import Any
 from pydantic import Field
 
 from service.api.fields import Instant, RecordIdText
-from service.api.schemas.status import Currency, Growing
+from service.api.schemas.status import CaseRead, Currency, Growing
 
 
 class AirRead(Growing):
@@ -37,35 +37,6 @@ class ExtremeRead(AirRead):
     what: str = Field(description="lowest or highest, of what the hazard is judged by.")
 
 
-class CurveMarkRead(Growing):
-    """A mark of the case; one set against a mean is told at the time its limit is passed."""
-
-    place: int
-    measure: str = Field(description="oxygen, peak, mean-15min, mean-8h or lower-limit.")
-    limit: str = Field(description="The value of the basis that sets it.")
-    limit_pct: float
-    value_pct: float
-    crossed: bool
-    at_s: float | None
-
-
-class CurveCaseRead(Growing):
-    """The case whose course it is, as in the assessment."""
-
-    release: str
-    airflow: str
-    hazard: str
-    gas: str
-    counts: bool = Field(description="Towards the standing.")
-    fluids: list[str]
-    vessel_ids: list[RecordIdText]
-    oxygen_pct: float
-    at_s: float
-    recovered_s: float | None
-    mark: int
-    marks: list[CurveMarkRead]
-
-
 class CurveAlarmRead(Growing):
     """The first alarm of the case."""
 
@@ -90,7 +61,7 @@ class CurveRead(Growing):
     computed_by: str = Field(description="The method by which this course is computed.")
     note: str | None = Field(description="Where the two differ: what that means.")
     judges: str
-    case: CurveCaseRead
+    case: CaseRead = Field(description="The case whose course it is, as in the assessment.")
     cases_matching: int = Field(description="How many cases of the room are like that asked for.")
     before: AirRead = Field(description="The air as the release begins.")
     extreme: ExtremeRead
