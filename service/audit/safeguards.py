@@ -128,7 +128,8 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
     alone = table.given.rooms.unaccompanied[table.room] == 1
     in_time = np.isnan(second[case]) | (alarm + out_after[case] <= second[case])
     # One that nobody says alarms at all is no safeguard, late though it is taken to warn.
-    recorded = ~np.isnan(table.given.detectors.alarms).all(axis=1)[detector]
+    alarms_set = ~np.isnan(table.given.detectors.alarms)
+    recorded = np.logical_or.reduce(alarms_set, axis=1)[detector]
     warns = recorded & found.warns_outside[detector] & ~np.isnan(alarm)
     warns &= table.at_once[case] | in_time
     has_low = _any(warns & found.is_low[detector], case, table.size)
