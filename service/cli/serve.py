@@ -6,7 +6,6 @@ import socket
 import sys
 from argparse import ArgumentParser, ArgumentTypeError, Namespace
 from dataclasses import replace
-from threading import Thread
 from types import FrameType
 from typing import TYPE_CHECKING
 
@@ -16,6 +15,7 @@ if TYPE_CHECKING:
     from uvicorn import Config
 
     from service.app import Application
+    from service.store.engine import Database
 
 # How long an idle connection is kept: longer than pollers pause, so that they need no new one.
 KEEP_ALIVE_S = 75
@@ -98,15 +98,27 @@ def _serve(settings: Settings, listener: socket.socket) -> int:
     upgrade(settings.database_url)
     with Database(settings.database_url) as database:
         prepared(database, settings, demo=is_new and settings.demo, keys=True)
+        _load_properties(database)
         return _run_server(create_app(settings, database=database), settings, listener)
+
+
+def _load_properties(database: "Database") -> None:
+    """Load the property library, where a vessel needs it, before anybody has to wait for it.
+
+    It takes seconds, in which the whole process stands still.
+    """
+    from service.physics.properties import critical_point
+    from service.store.live import count_records
+    from service.store.scope import EVERYTHING
+
+    with database.reading() as connection:
+        cylinders = count_records(EVERYTHING, connection, "vessel", {"kind": "cylinder"})
+    if cylinders:
+        critical_point("nitrogen")
 
 
 def _run_server(app: "Application", settings: Settings, listener: socket.socket) -> int:
     from service.cli.server import AnnouncingServer
-    from service.physics.properties import critical_point
-
-    # The property library takes seconds to load, which no change should have to wait for.
-    Thread(target=critical_point, args=("nitrogen",), name="properties", daemon=True).start()
     host, port = listener.getsockname()[:2]
     scheme = "http" if settings.tls_cert is None else "https"
     named = f"[{host}]" if ":" in host else host

@@ -44,7 +44,7 @@ def test_ten_thousand_rooms_in_one_table_against_bare_numpy(report):
 
     def bare():
         rate = table.rates.sum(axis=1)
-        through = np.maximum(table.supply + rate, table.exhaust)
+        through = np.maximum(table.supply[:, 0] + rate, table.exhaust[:, 0])
         moving = through > 0.0
         steady = np.divide(rate, through, out=np.zeros_like(rate), where=moving)
         spent = table.durations.sum(axis=1)
