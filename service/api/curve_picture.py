@@ -24,6 +24,7 @@ from service.api.svg import (
 from service.audit.assessment import METHOD_VERSION, Case, Mark
 from service.audit.curve import Curve, Point
 from service.audit.hazards import FLAMMABLE, OXYGEN_HIGH, OXYGEN_LOW
+from service.audit.releases import OVERFILL
 from service.changes.answers import BEHIND, RECALCULATING
 from service.changes.curve import CourseOfRoom
 from service.physics.constants import OXYGEN_IN_AIR
@@ -337,7 +338,10 @@ def _way_out(curve: Curve) -> str:
 
 
 def _let_go(case: Case) -> str:
-    named = f" from {_some([vessel.tag for vessel in case.vessels])}" if case.vessels else ""
+    tags = [vessel.tag for vessel in case.vessels]
+    # Vessels that would do alike are one case of overfilling, for any one of them.
+    which = "any one of " if case.release == OVERFILL and len(tags) > 1 else ""
+    named = f" from {which}{_some(tags)}" if tags else ""
     return f"Let go: {_some(case.fluids)}{named}."
 
 
