@@ -79,6 +79,7 @@ def test_the_statement_says_whom_detection_protects():
         ("placed", "entrance"),
         ("alarms", (23.5,)),
         ("alarms", (4.0,)),
+        ("alarms", ()),
     ],
 )
 def test_a_detector_with_a_flaw_is_no_safeguard(flaw, value):
