@@ -17,6 +17,8 @@ from service.changes.shipped import ship
 from service.clock import text_of
 from tests.whole.installations import installation
 
+pytestmark = pytest.mark.slow  # A whole service, with the demo estate.
+
 README = (Path(__file__).resolve().parents[1] / "README.md").read_text(encoding="utf-8")
 SECTION = "## Five minutes with it"
 BASE = "http://127.0.0.1:8420/v1"

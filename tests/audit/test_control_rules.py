@@ -136,6 +136,7 @@ GRAVE = (
 )
 
 
+@pytest.mark.slow
 @given(room=st.sampled_from(GRAVE), controls=CONTROLS)
 def test_no_measure_is_a_safeguard_and_none_makes_a_room_worse(room, controls):
     """Whatever is recorded, the cases and every other rule say the same (judging 8)."""

@@ -349,6 +349,7 @@ def no_better(worse, better):
     return all(level <= better.get(key, 100.0) + 1e-8 for key, level in worse.items())
 
 
+@pytest.mark.slow
 @thorough
 @given(rooms, st.floats(1.0, 20.0))
 def test_more_outdoor_air_never_lowers_the_lowest_oxygen(room, factor):
@@ -386,6 +387,7 @@ def test_more_contents_never_raise_it(room, factor):
     assert all(after[key] <= level + 1e-8 for key, level in before.items())
 
 
+@pytest.mark.slow
 @thorough
 @given(rooms)
 def test_lost_air_is_never_better_than_the_air_as_measured(room):

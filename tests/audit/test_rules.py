@@ -113,6 +113,7 @@ class TestRemedies:
         assert "Let nobody ride" in judged(room, "oxygen/largest-vessel").remedy
 
 
+@pytest.mark.slow
 def test_a_room_is_told_the_same_whichever_rooms_stand_beside_it():
     """What is said of one is looked up in the tables of all."""
     rooms = [

@@ -192,6 +192,7 @@ def test_what_was_loaded_follows_from_its_records(estate):
     assert verify(estate.database).sound
 
 
+@pytest.mark.slow
 def test_the_estate_does_not_grow_stale(estate, sqlite_url):
     later = MOMENT + timedelta(days=1111)
     with opened(sqlite_url.removeprefix("sqlite:///"), later) as line:
@@ -201,6 +202,7 @@ def test_the_estate_does_not_grow_stale(estate, sqlite_url):
         assert all(later - moment_of(each) < timedelta(days=60) for each in counted if each)
 
 
+@pytest.mark.slow
 def test_the_command_loads_the_estate_and_takes_all_of_it_away_again(
     sqlite_url, monkeypatch, capsys
 ):

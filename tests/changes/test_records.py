@@ -252,6 +252,7 @@ def test_a_key_limited_to_sites_reaches_no_other(line):
     assert made.site_id == other.id
 
 
+@pytest.mark.slow
 def test_the_demo_estate_goes_without_a_trace(line):
     assert line.run(load_demo) > 20
     sites = line.read(list_records, "site", {}, sort="tag", descending=False, after=None, limit=10)

@@ -92,6 +92,7 @@ def test_an_unknown_fluid_is_named_as_such(ask):
         ask("acetylene")
 
 
+@pytest.mark.slow
 def test_the_library_is_loaded_by_the_first_question_and_not_before():
     """Its import takes seconds, which no command and no poll should pay for."""
     program = (
