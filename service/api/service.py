@@ -8,6 +8,7 @@ from datetime import timedelta
 from fastapi import FastAPI, Request
 from starlette.types import Scope
 
+from service.api.kept import KeptBodies
 from service.api.keyring import KeyRing
 from service.api.questions import Questions
 from service.clock import Clock
@@ -32,6 +33,7 @@ class Service:
     in_flight: set[tuple[str, str, str]] = field(default_factory=set)
     """Requests with an Idempotency-Key that run now: key, path and token."""
     questions: Questions = field(default_factory=Questions)
+    summaries: KeptBodies = field(default_factory=KeptBodies)
 
 
 def service_of(request: Request) -> Service:

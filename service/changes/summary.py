@@ -40,15 +40,16 @@ def summary_document(
 ) -> dict[str, Any]:
     """Sum up the sites asked for, each and all together; only rooms in service are judged here."""
     sites = summary_sites(scope, connection, site_ids)
-    rooms = room_counts(scope, connection, site_ids, now=now, method_version=METHOD_VERSION)
-    findings = finding_counts(scope, connection, site_ids)
+    named = [site.site_id for site in sites]
+    rooms = room_counts(scope, connection, named, now=now, method_version=METHOD_VERSION)
+    findings = finding_counts(scope, connection, named)
     return {
         "judges": JUDGES,
         "method_version": METHOD_VERSION,
         "sites": [_site(site, rooms, findings) for site in sites],
         "total": _counts(rooms, findings),
         "worst_rooms": [
-            _worst_room(room, sites) for room in worst_rooms(scope, connection, site_ids, worst)
+            _worst_room(room, sites) for room in worst_rooms(scope, connection, named, worst)
         ],
         "cautions": CAUTIONS,
     }

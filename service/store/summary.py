@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import datetime
@@ -9,7 +10,7 @@ from typing import Any, Final
 
 from sqlalchemy import Connection, Select, case, func, or_, select
 
-from service.store.heads import Head, heads_of
+from service.store.heads import INSTALLATION, Head, heads_of
 from service.store.scope import Scope, within
 from service.store.tables.registry import FINDING, HEAD, ROOM_STATE, TABLES
 
@@ -18,7 +19,11 @@ IN_SERVICE: Final = "in-service"
 _ROOM: Final = TABLES["room"]
 _SITE: Final = TABLES["site"]
 _RANKS: Final = {"stop": 3, "action": 2, "attention": 1, "in-order": 0}
-_GRAVITY: Final = {"critical": 3, "major": 2, "minor": 1, "observation": 0}
+_STANDS: Final = ("open", "acknowledged", "accepted")
+# How far a finding takes the standing of its room; what is accepted counts one step lower, and
+# never nothing where it was major or critical.
+_STEPS: Final = {"critical": 3, "major": 2, "minor": 1, "observation": 0}
+_ACCEPTED_STEPS: Final = {"critical": 2, "major": 1, "minor": 0, "observation": 0}
 # Rooms that cannot be computed stand before those whose oxygen is known.
 _UNKNOWN_OXYGEN: Final = -1.0
 _NO_CASE: Final = 101.0
@@ -33,6 +38,18 @@ class SiteLine:
     name: str | None
     demo: bool
     head: Head | None
+
+
+@dataclass(frozen=True, slots=True)
+class SiteState:
+    """What the line of a site can change by: its history, and the clock."""
+
+    site_id: str
+    position: int
+    chain_hash: str
+    wanted_position: int
+    due: int
+    """How many of its rooms may have turned by the clock alone."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -70,6 +87,32 @@ class WorstRoom:
     finding: dict[str, Any] | None
 
 
+def site_states(
+    scope: Scope, connection: Connection, site_ids: Sequence[str] | None, *, now: datetime
+) -> list[SiteState]:
+    """Return where sites stand, without a look at any room that is not due; none named: all.
+
+    Two summaries of equal states are equal: whatever else they tell moves a head when it changes.
+    """
+    # What belongs to no site is in no summary.
+    heads = select(HEAD).where(HEAD.c.site_id != INSTALLATION).order_by(HEAD.c.site_id)
+    # Counted here: where the database groups by site, SQLite walks through all rooms for it.
+    turned = select(ROOM_STATE.c.site_id).where(ROOM_STATE.c.turns_at <= now)
+    of_sites = _asked(within(scope, turned, ROOM_STATE.c.site_id), ROOM_STATE.c.site_id, site_ids)
+    due = Counter(connection.execute(of_sites).scalars())
+    asked = _asked(within(scope, heads, HEAD.c.site_id), HEAD.c.site_id, site_ids)
+    return [
+        SiteState(
+            row.site_id,
+            row.position,
+            row.chain_hash,
+            row.wanted_position,
+            due[row.site_id],
+        )
+        for row in connection.execute(asked)
+    ]
+
+
 def summary_sites(
     scope: Scope, connection: Connection, site_ids: Sequence[str] | None
 ) -> list[SiteLine]:
@@ -86,7 +129,7 @@ def summary_sites(
 def room_counts(
     scope: Scope,
     connection: Connection,
-    site_ids: Sequence[str] | None,
+    site_ids: Sequence[str],
     *,
     now: datetime,
     method_version: str,
@@ -117,14 +160,17 @@ def room_counts(
 
 
 def finding_counts(
-    scope: Scope, connection: Connection, site_ids: Sequence[str] | None
+    scope: Scope, connection: Connection, site_ids: Sequence[str]
 ) -> list[FindingCount]:
-    """Return findings that stand in rooms in service, counted by site, state and severity."""
+    """Return findings that stand in rooms in service, counted by site, state and severity.
+
+    Those cleared may be many times as many; naming sites and states lets the index skip them.
+    """
     keys = (FINDING.c.site_id, FINDING.c.state, FINDING.c.severity)
     query = (
         select(*keys, func.count().label("counted"))
         .join(_ROOM, _ROOM.c.id == FINDING.c.room_id)
-        .where(FINDING.c.state != "cleared", _ROOM.c.state == IN_SERVICE)
+        .where(FINDING.c.state.in_(_STANDS), _ROOM.c.state == IN_SERVICE)
         .group_by(*keys)
     )
     asked = _asked(within(scope, query, FINDING.c.site_id), FINDING.c.site_id, site_ids)
@@ -135,7 +181,7 @@ def finding_counts(
 
 
 def worst_rooms(
-    scope: Scope, connection: Connection, site_ids: Sequence[str] | None, limit: int
+    scope: Scope, connection: Connection, site_ids: Sequence[str], limit: int
 ) -> list[WorstRoom]:
     """Return the rooms in service that stand worst: by standing, then by their lowest oxygen."""
     rank = case(_RANKS, value=ROOM_STATE.c.standing, else_=0)
@@ -160,30 +206,28 @@ def worst_rooms(
     )
     asked = _asked(within(scope, query, ROOM_STATE.c.site_id), ROOM_STATE.c.site_id, site_ids)
     rows = connection.execute(asked).mappings().all()
-    findings = _gravest(scope, connection, [row["room_id"] for row in rows])
+    findings = _deciding(scope, connection, [row["room_id"] for row in rows])
     return [WorstRoom(**row, finding=findings.get(row["room_id"])) for row in rows]
 
 
-def _gravest(
+def _deciding(
     scope: Scope, connection: Connection, room_ids: Sequence[str]
 ) -> dict[str, dict[str, Any]]:
-    """The gravest finding that stands of each room, the oldest where there are several."""
-    query = select(
-        FINDING.c.id,
-        FINDING.c.room_id,
-        FINDING.c.rule,
-        FINDING.c.gas,
-        FINDING.c.severity,
-        FINDING.c.state,
-        FINDING.c.statement,
-    ).where(FINDING.c.room_id.in_(room_ids), FINDING.c.state != "cleared")
-    gravest: dict[str, dict[str, Any]] = {}
-    rank = case(_GRAVITY, value=FINDING.c.severity, else_=0)
-    accepted = case((FINDING.c.state == "accepted", 1), else_=0)
-    ordered = within(scope, query, FINDING.c.site_id).order_by(accepted, rank.desc(), FINDING.c.id)
+    """The finding that sets the standing of each room, the oldest where there are several."""
+    told = ("id", "rule", "gas", "severity", "state", "measure", "limit", "worse_is", "statement")
+    query = select(FINDING.c.room_id, *(FINDING.c[name] for name in told)).where(
+        FINDING.c.room_id.in_(room_ids), FINDING.c.state.in_(_STANDS)
+    )
+    severity = FINDING.c.severity
+    step = case(
+        (FINDING.c.state == "accepted", case(_ACCEPTED_STEPS, value=severity, else_=0)),
+        else_=case(_STEPS, value=severity, else_=0),
+    )
+    ordered = within(scope, query, FINDING.c.site_id).order_by(step.desc(), FINDING.c.id)
+    deciding: dict[str, dict[str, Any]] = {}
     for row in connection.execute(ordered).mappings():
-        gravest.setdefault(row["room_id"], {k: v for k, v in row.items() if k != "room_id"})
-    return gravest
+        deciding.setdefault(row["room_id"], {name: row[name] for name in told})
+    return deciding
 
 
 def _asked(query: Select[Any], column: Any, site_ids: Sequence[str] | None) -> Select[Any]:

@@ -1,8 +1,13 @@
 """The summary: counts that add up, the worst first, and nothing of another site."""
 
+from datetime import timedelta
+
 import pytest
 
+from service.api.kept import KeptBodies
+from service.api.routes import summary as route
 from service.api.schemas.summary import SummaryRead
+from service.clock import moment_of
 from tests.api.estate import a_room, a_vessel
 
 
@@ -61,6 +66,40 @@ def test_a_poll_of_the_summary_is_told_that_nothing_has_changed_until_something_
     second = ask("GET", "/v1/summary", headers=tag)
     assert second.status_code == 200
     assert second.json()["total"]["rooms"]["out-of-service"] == 1
+    assert ask("GET", "/v1/summary").content == second.content
+
+
+def test_a_summary_is_made_once_for_whoever_may_see_the_same(ask, crowded, monkeypatch):
+    made, summing = [], route.summary_document
+
+    def counted(scope, *arguments, **options):
+        made.append(scope.key_id)
+        return summing(scope, *arguments, **options)
+
+    monkeypatch.setattr(route, "summary_document", counted)
+    first = ask("GET", "/v1/summary", key="reader")
+    second = ask("GET", "/v1/summary", key="auditor")
+    assert (first.content, first.headers["etag"]) == (second.content, second.headers["etag"])
+    tag = {"If-None-Match": first.headers["etag"]}
+    assert ask("GET", "/v1/summary", headers=tag).status_code == 304
+    assert len(made) == 1
+    other = ask("GET", "/v1/summary", key=crowded.keys["reader"])
+    assert other.headers["etag"] != first.headers["etag"]
+    assert ask("GET", "/v1/summary?worst=1").headers["etag"] != first.headers["etag"]
+    assert len(made) == 3
+
+
+def test_bodies_are_kept_up_to_a_size_and_the_one_unasked_for_longest_goes_first():
+    kept = KeptBodies(limit_bytes=10)
+    kept.put("a", b"aaaa")
+    kept.put("b", b"bbbb")
+    assert kept.get("a") == b"aaaa"
+    kept.put("c", b"cccc")
+    assert [kept.get(tag) for tag in "abc"] == [b"aaaa", None, b"cccc"]
+    kept.put("c", b"cc")
+    assert kept.bytes_held == 6
+    kept.put("d", b"d" * 11)
+    assert (kept.get("d"), kept.bytes_held) == (None, 0)
 
 
 def test_one_site_is_summed_up_by_its_tag_or_its_id(ask, crowded):
@@ -84,17 +123,21 @@ def test_a_key_of_one_site_hears_of_no_other(ask, crowded):
     assert ask("GET", f"/v1/summary?site={south['tag']}", key=key).status_code == 404
 
 
-def test_what_the_clock_has_passed_is_counted_as_behind(ask, crowded):
-    assert ask.body("/v1/summary")["total"]["currency"]["behind"] == 0
-    turns = [
-        status["turns_at"]
+def test_what_the_clock_has_passed_is_counted_as_behind_and_has_another_tag(ask, crowded):
+    before = ask("GET", "/v1/summary")
+    assert before.json()["total"]["currency"]["behind"] == 0
+    tag = {"If-None-Match": before.headers["etag"]}
+    statuses = [
+        ask.body(f"/v1/rooms/{room['id']}/status")
         for room in ask.body("/v1/rooms?limit=500")["items"]
-        if (status := ask.body(f"/v1/rooms/{room['id']}/status"))["turns_at"]
     ]
-    if not turns:
-        room = ask.body("/v1/rooms?limit=1")["items"][0]
-        ask("PATCH", f"/v1/rooms/{room['id']}", {"name": "again"})
-    from service.clock import moment_of
-
-    ask.clock.advance(moment_of(min(turns)) - ask.clock.now())
-    assert ask.body("/v1/summary")["total"]["currency"]["behind"] >= 1
+    first = min(moment_of(status["turns_at"]) for status in statuses if status["turns_at"])
+    ask.clock.advance(first - timedelta(seconds=1) - ask.clock.now())
+    assert ask("GET", "/v1/summary", headers=tag).status_code == 304
+    ask.clock.advance(timedelta(seconds=1))
+    after = ask("GET", "/v1/summary", headers=tag)
+    assert after.status_code == 200
+    behind = after.json()["total"]["currency"]["behind"]
+    now = [ask.body(f"/v1/rooms/{status['room_id']}/status") for status in statuses]
+    assert behind == sum(s["currency"] == "behind" and s["state"] == "in-service" for s in now)
+    assert behind >= 1

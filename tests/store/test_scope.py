@@ -148,6 +148,11 @@ def asked_of(estate):
         "states.findings_from": (site, 1),
         "states.live_findings": (site,),
         "states.room_states": ([room],),
+        "summary.finding_counts": ([site],),
+        "summary.room_counts": ([site], {"now": MOMENT, "method_version": "0"}),
+        "summary.site_states": ([site], {"now": MOMENT}),
+        "summary.summary_sites": ([site],),
+        "summary.worst_rooms": ([site], 10),
     }
 
 

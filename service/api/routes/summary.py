@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from dataclasses import dataclass
 from hashlib import sha256
 from typing import Annotated
 
@@ -16,12 +18,14 @@ from service.api.deps import JSON, Reader
 from service.api.rendering import FRESH
 from service.api.routes.declared import READING, answering, not_modified
 from service.api.schemas.summary import SummaryRead
+from service.api.service import Service
+from service.audit.assessment import METHOD_VERSION
 from service.changes.answers import rendered
 from service.changes.summary import MOST_WORST, summary_document
-from service.clock import Clock
 from service.errors import RecordNotFound
 from service.store.live import get_record, record_by_tag
 from service.store.scope import Scope
+from service.store.summary import SiteState, site_states
 
 router = APIRouter(prefix="/v1/summary", tags=["Summary"])
 
@@ -48,24 +52,45 @@ async def get_summary(
 
     Send the ETag as If-None-Match; 304 says that nothing has changed.
     """
-    body = await read(_summary, read.service.clock, site, site_id, worst)
-    tag = str(EntityTag(sha256(body).hexdigest()[:32]))
+    asked = _Asked(site, site_id, worst, request.headers.get("if-none-match"))
+    tag, body = await read(_summary, read.service, asked)
     headers = {**FRESH, "ETag": tag}
-    if has_it_already(request.headers.get("if-none-match"), tag):
+    if body is None:
         return Response(status_code=304, headers=headers)
     return Response(body, 200, headers, JSON)
 
 
+@dataclass(frozen=True, slots=True)
+class _Asked:
+    """Which summary is asked for, and which the caller has."""
+
+    tag: str | None
+    site_id: str | None
+    worst: int
+    held: str | None
+
+
 def _summary(
-    scope: Scope,
-    connection: Connection,
-    clock: Clock,
-    tag: str | None,
-    site_id: str | None,
-    worst: int,
-) -> bytes:
-    sites = _sites(scope, connection, tag, site_id)
-    return rendered(summary_document(scope, connection, sites, now=clock.now(), worst=worst))
+    scope: Scope, connection: Connection, service: Service, asked: _Asked
+) -> tuple[str, bytes | None]:
+    """Give the tag of a summary and its body; none where the caller has it already."""
+    now = service.clock.now()
+    sites = _sites(scope, connection, asked.tag, asked.site_id)
+    tag = _tag(site_states(scope, connection, sites, now=now), asked.worst)
+    if has_it_already(asked.held, tag):
+        return tag, None
+    body = service.summaries.get(tag)
+    if body is None:
+        document = summary_document(scope, connection, sites, now=now, worst=asked.worst)
+        body = rendered(document)
+        service.summaries.put(tag, body)
+    return tag, body
+
+
+def _tag(sites: Sequence[SiteState], worst: int) -> str:
+    """Name a summary by where its sites stand: found without making it."""
+    stands = repr((METHOD_VERSION, worst, sites))
+    return str(EntityTag(sha256(stands.encode()).hexdigest()[:32]))
 
 
 def _sites(

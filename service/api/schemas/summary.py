@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Literal
+
 from pydantic import Field
 
 from service.api.fields import RecordIdText
@@ -55,14 +57,17 @@ class SiteSummary(Counted):
     position: int = Field(description="Where the site's history stands.")
 
 
-class GravestFinding(Answer):
-    """The gravest finding that stands of a room."""
+class DecidingFinding(Answer):
+    """The finding that sets the standing of a room, the oldest where there are several."""
 
     id: RecordIdText
     rule: str
     gas: str | None
     severity: Severity
     state: FindingState
+    measure: float | None
+    limit: float | None
+    worse_is: Literal["lower", "higher"]
     statement: str
 
 
@@ -77,7 +82,7 @@ class WorstRoomRead(Answer):
     position: int
     standing: Standing
     worst_oxygen_pct: float | None
-    finding: GravestFinding | None
+    finding: DecidingFinding | None
 
 
 class SummaryRead(Answer):
