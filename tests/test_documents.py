@@ -24,9 +24,10 @@ def test_every_method_stands_in_the_guide(slug):
     assert f"| `{slug}` |" in GUIDE
 
 
-@pytest.mark.parametrize("rule", RULES, ids=lambda rule: f"{rule.slug}-{rule.gas}")
-def test_every_rule_stands_in_the_changelog(rule):
-    assert f"`{rule.slug}`" in CHANGELOG
+# A slug may stand for several gases, and ids of tests may not stand twice.
+@pytest.mark.parametrize("slug", sorted({rule.slug for rule in RULES}))
+def test_every_rule_stands_in_the_changelog(slug):
+    assert f"`{slug}`" in CHANGELOG
 
 
 @pytest.mark.parametrize("command", COMMANDS, ids=lambda command: command.name)

@@ -35,6 +35,8 @@ def expected(method, path):
         return None
     if kind == "keys":
         return ADMINISTRATORS
+    if path.endswith("/versions"):
+        return PAST
     if method == "get":
         return EVERYBODY
     return ADMINISTRATORS if kind in REFERENCES else WRITERS
@@ -157,8 +159,28 @@ def test_a_key_of_one_site_lists_that_site_alone(north, estate):
         assert north("GET", "/v1/rooms?label.wing=SOUTH", role=role).json()["items"] == []
         findings = north("GET", "/v1/findings?limit=500", role=role).json()["items"]
         assert {finding["site_id"] for finding in findings} == {own}
-        for asked in (f"site_id={foreign}", "site=SOUTH"):
+        for asked in (f"site_id={foreign}", "site=SOUTH", "room=SOUTH-104"):
             assert north("GET", f"/v1/findings?{asked}", role=role).json()["items"] == []
+        summary = north("GET", "/v1/summary", role=role).json()
+        assert [site["site_id"] for site in summary["sites"]] == [own]
+        for asked in (f"site_id={foreign}", "site=SOUTH"):
+            assert north("GET", f"/v1/summary?{asked}", role=role).status_code == 404
+
+
+def test_a_key_of_one_site_sums_up_that_site_alone_and_reads_every_method_and_rule(north, estate):
+    own, foreign = estate.north.site["id"], estate.south.site["id"]
+    for role in ROLES:
+        summary = north("GET", "/v1/summary", role=role)
+        assert summary.status_code == 200
+        assert [site["site_id"] for site in summary.json()["sites"]] == [own]
+        assert {room["site_id"] for room in summary.json()["worst_rooms"]} <= {own}
+        assert summary.json()["total"]["rooms"]["in-service"] == 1
+        for asked in (f"site_id={foreign}", "site=SOUTH", f"site_id={own}&site=SOUTH"):
+            assert north("GET", f"/v1/summary?{asked}", role=role).status_code == 404
+        for path in ("methods", "rules"):
+            listed = north("GET", f"/v1/{path}", role=role).json()["items"]
+            one = north("GET", f"/v1/{path}/{listed[0]['slug']}", role=role)
+            assert one.json() == listed[0]
 
 
 def test_another_sites_record_is_not_there_for_a_key_of_one_site(north, estate, ask):
@@ -189,8 +211,10 @@ def test_another_sites_room_answers_nothing(north, estate, ask):
     assert north("GET", f"/v1/rooms/{room}/status?at_least=1").status_code == 404
     assert north("GET", f"/v1/findings?room_id={room}").json()["items"] == []
     finding = ask.body(f"/v1/findings?room_id={room}&limit=1")["items"]
+    assert finding
     for one in finding:
         assert north("GET", f"/v1/findings/{one['id']}").status_code == 404
+        assert north("GET", f"/v1/findings/{one['id']}/versions").status_code == 404
     external_id = estate.south.vessel["external_id"]
     assert north("GET", f"/v1/vessels/by-external-id/{external_id}").status_code == 404
 

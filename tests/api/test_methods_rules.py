@@ -2,6 +2,7 @@
 
 import pytest
 
+from service.api.routes import methods as route
 from service.api.schemas.methods import MethodsRead, RulesRead
 from service.audit.hazards import HAZARDS
 from service.audit.releases import RELEASES
@@ -56,8 +57,35 @@ def test_a_finding_leads_to_its_rule_its_method_and_their_sources(ask_one, estat
     rule = ask_one.body(f"/v1/rules/{finding['rule']}")
     assert rule["method"] == finding["method"]
     assert finding["source"] in rule["sources"]
-    method = ask_one.body(f"/v1/methods/{rule['method']}")
+    method = ask_one.body(rule["method_path"])
+    assert method["slug"] == rule["method"]
     assert all(source["title"] for source in method["sources"])
+
+
+def test_the_link_of_every_rule_leads_to_the_method_that_it_names(ask_one):
+    rules = ask_one.body("/v1/rules")["items"]
+    methods = {method["slug"]: method for method in ask_one.body("/v1/methods")["items"]}
+    assert {rule["slug"] for rule in rules} == {rule.slug for rule in RULES}
+    for path, slug in {rule["method_path"]: rule["method"] for rule in rules}.items():
+        assert ask_one.body(path) == methods[slug]
+
+
+@pytest.mark.parametrize(
+    "path",
+    [
+        "/v1/methods",
+        "/v1/rules",
+        "/v1/methods/mixing/displacement",
+        "/v1/rules/oxygen/largest-vessel",
+    ],
+)
+def test_another_version_of_the_method_is_answered_anew(ask_one, monkeypatch, path):
+    tag = {"If-None-Match": ask_one("GET", path).headers["etag"]}
+    assert ask_one("GET", path, headers=tag).status_code == 304
+    monkeypatch.setattr(route, "METHOD_VERSION", f"{route.METHOD_VERSION}-next")
+    again = ask_one("GET", path, headers=tag)
+    assert again.status_code == 200
+    assert again.headers["etag"] != tag["If-None-Match"]
 
 
 @pytest.mark.parametrize("path", ["/v1/methods/no/such", "/v1/rules/no/such"])

@@ -106,7 +106,10 @@ def _methods() -> Mapping[str, dict[str, Any]]:
 
 @cache
 def _rules() -> Mapping[str, dict[str, Any]]:
-    return {rule.slug: asdict(rule) for rule in described_rules()}
+    return {
+        rule.slug: asdict(rule) | {"method_path": f"/v1/methods/{rule.method}"}
+        for rule in described_rules()
+    }
 
 
 def _all(items: Mapping[str, dict[str, Any]]) -> bytes:
@@ -128,7 +131,9 @@ def _one(items: Mapping[str, dict[str, Any]], kind: str, family: str, name: str)
 
 
 def _answer(request: Request, body: bytes) -> Response:
-    tag = str(EntityTag(sha256(body).hexdigest()[:32]))
+    # The version as well: a method may change in its numbers and not in its words.
+    told = METHOD_VERSION.encode() + b"\n" + body
+    tag = str(EntityTag(sha256(told).hexdigest()[:32]))
     headers = {**FRESH, "ETag": tag}
     if has_it_already(request.headers.get("if-none-match"), tag):
         return Response(status_code=304, headers=headers)

@@ -49,6 +49,7 @@ class RuleRead(Answer):
     gases: list[str] = Field(description="The gases judged; none where it is about no gas.")
     severity: str
     method: str
+    method_path: str = Field(description="Where the method is told.")
     sources: list[str]
 
 
