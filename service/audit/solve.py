@@ -9,10 +9,12 @@ import numpy as np
 
 from service.audit.air import AIRFLOWS, AS_MEASURED, PROVEN
 from service.audit.cases import CLEAN_AIR, CaseTable
+from service.audit.columns import NITROUS_OXIDE
 from service.audit.hazards import (
     ABOUT_OXYGEN,
     CLEAN,
     HAS_MEANS,
+    HAZARDS,
     MEAN_8H,
     MEAN_15MIN,
     REACHED,
@@ -37,6 +39,7 @@ from service.physics.ventilation import (
 )
 
 _AS_MEASURED: Final = AIRFLOWS.index(AS_MEASURED)
+_NITROUS_OXIDE: Final = [hazard.gas for hazard in HAZARDS].index(NITROUS_OXIDE)
 
 # A mark that is not there, as a level that no course reaches.
 _BEYOND_ALL: Final = 1e9
@@ -293,8 +296,15 @@ def _smallest_for_mean(
 
 
 def proven_to_hold(table: CaseTable, results: Results) -> Mask:
-    """Tell which rooms' sustained releases stay inside every first mark with proven air."""
+    """Tell which rooms' sustained releases stay inside every first mark with proven air.
+
+    The mean of a working day is asked of it whether or not anybody works there: that a room is
+    recorded empty must not make another release milder.
+    """
     proven = table.airflow == AIRFLOWS.index(PROVEN)
+    beyond = results.mark > 0
+    narcotic = table.hazard == _NITROUS_OXIDE
+    beyond |= narcotic & (results.means[:, 1] > table.given.bases.nitrous_oxide[table.room, 0])
     holds = np.ones(table.given.count, dtype=np.bool_)
-    holds[table.room[proven & (results.mark > 0)]] = False
+    holds[table.room[proven & beyond]] = False
     return holds
