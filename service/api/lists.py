@@ -75,11 +75,15 @@ class Listing:
 class Asking:
     """The dependency that reads a list's query: its filters by name, its order and its page."""
 
-    takes_labels = True
-
     def __init__(
-        self, filters: Mapping[str, Filter], sorts: frozenset[str], usual_sort: str
+        self,
+        filters: Mapping[str, Filter],
+        sorts: frozenset[str],
+        usual_sort: str,
+        *,
+        labels: bool = True,
     ) -> None:
+        self.takes_labels = labels
         self._filters = filters
         self._sorts = sorts
         self._usual_sort = usual_sort

@@ -115,11 +115,39 @@ def findings_at(
     return _findings(connection, within(scope, query, table.c.site_id).order_by(table.c.id))
 
 
-def finding_history(scope: Scope, connection: Connection, finding_id: str) -> list[dict[str, Any]]:
-    """Return the versions of a finding, oldest first."""
+def finding_at(
+    scope: Scope, connection: Connection, finding_id: str, position: int
+) -> dict[str, Any] | None:
+    """Return a finding as it stood at a position of its site."""
+    table = FINDING_VERSION
+    query = select(*table.c).where(table.c.id == finding_id, table.c.position <= position)
+    newest = within(scope, query, table.c.site_id).order_by(table.c.number.desc()).limit(1)
+    found = _findings(connection, newest)
+    return found[0] if found else None
+
+
+def finding_history(
+    scope: Scope,
+    connection: Connection,
+    finding_id: str,
+    *,
+    descending: bool = False,
+    after: tuple[Any, str] | None = None,
+    limit: int = 100,
+) -> list[dict[str, Any]]:
+    """Return a page of the versions of a finding by their number, after the last one seen."""
     table = FINDING_VERSION
     query = within(scope, select(*table.c).where(table.c.id == finding_id), table.c.site_id)
-    return _findings(connection, query.order_by(table.c.number))
+    page = paged(query, table, sort="number", descending=descending, after=after, limit=limit)
+    return _findings(connection, page)
+
+
+def count_history(scope: Scope, connection: Connection, finding_id: str) -> int:
+    """Return how many versions of a finding there are."""
+    table = FINDING_VERSION
+    counted = select(func.count()).select_from(table).where(table.c.id == finding_id)
+    count: int = connection.execute(within(scope, counted, table.c.site_id)).scalar_one()
+    return count
 
 
 def _matching(
@@ -138,7 +166,7 @@ def _matching(
             query = query.where(FINDING.c.opened_at >= _moment(name, value))
         elif name.startswith(LABEL):
             rooms = TABLES["room"]
-            labelled = has_label(rooms, name.removeprefix(LABEL), str(value), dialect=dialect)
+            labelled = has_label(rooms, name.removeprefix(LABEL), value, dialect=dialect)
             query = query.where(exists().where(rooms.c["id"] == FINDING.c.room_id, labelled))
         else:
             columns[name] = value

@@ -77,24 +77,21 @@ def paged(
     return query.order_by(ordered.nulls_last(), identity).limit(limit)
 
 
-def has_label(table: Table, name: str, value: str, *, dialect: str) -> ColumnElement[bool]:
-    """Return the condition that a row has a label with a value."""
+def has_label(table: Table, name: str, value: str | None, *, dialect: str) -> ColumnElement[bool]:
+    """Return the condition that a row has a label with a value; None: that it has no such label."""
     labels = table.c["labels"]
     if dialect == SQLITE:
         # A path into the document could not hold every name that a label can have.
         each = func.json_each(labels).table_valued("key", "value")
-        found: ColumnElement[bool] = (
-            exists().select_from(each).where(each.c.key == name, each.c.value == value)
-        )
-        return found
+        named = exists().select_from(each).where(each.c.key == name)
+        return ~named if value is None else named.where(each.c.value == value)
     held: ColumnElement[str] = cast(labels, JSON).op("->>", return_type=Text())(name)
-    equal: ColumnElement[bool] = held == value
-    return equal
+    return held.is_(None) if value is None else held == value
 
 
 def _condition(table: Table, name: str, value: Any, dialect: str) -> ColumnElement[bool]:
     if name.startswith(LABEL):
-        return has_label(table, name.removeprefix(LABEL), str(value), dialect=dialect)
+        return has_label(table, name.removeprefix(LABEL), value, dialect=dialect)
     column = _column(table, _FOLDED.get(name, name), name)
     if value is None:
         return column.is_(None)

@@ -79,6 +79,25 @@ def test_findings_are_filtered_by_age(ask, crowded):
     assert 0 < len(found) < len(everything)
 
 
+def test_findings_are_filtered_by_the_moment_they_were_opened(ask, crowded):
+    everything = every_page(ask, "/v1/findings?limit=500")
+    middle = sorted(finding["opened_at"] for finding in everything)[len(everything) // 2]
+    moment = middle.replace("+00:00", "Z")
+    before = every_page(ask, f"/v1/findings?limit=500&opened_before={moment}")
+    since = every_page(ask, f"/v1/findings?limit=500&opened_since={moment}")
+    assert before == [finding for finding in everything if finding["opened_at"] < middle]
+    assert since == [finding for finding in everything if finding["opened_at"] >= middle]
+    assert before
+    assert since
+    # Of two that say how old, both hold.
+    both = f"/v1/findings?limit=500&opened_before={moment}&older_than_days=0.000001"
+    assert every_page(ask, both) == before
+    then = ask.clock.now().isoformat().replace("+00:00", "Z")
+    for asked, found in (("opened_before", before), ("opened_since", since)):
+        past = f"/v1/findings?limit=500&{asked}={moment}&as_of={then}"
+        assert every_page(ask, past) == found
+
+
 @pytest.mark.parametrize(
     ("query", "parameter"),
     [
@@ -88,6 +107,8 @@ def test_findings_are_filtered_by_age(ask, crowded):
         ("older_than_days=-1", "older_than_days"),
         ("older_than_days=", "older_than_days"),
         ("colour=red", "colour"),
+        ("opened_before=2027-03-01", "opened_before"),
+        ("opened_since=", "opened_since"),
         ("sort=evidence", "sort"),
     ],
 )
@@ -155,3 +176,57 @@ def test_findings_are_filtered_by_the_gas_the_subject_the_tag_of_the_room_and_th
     assert young == every_page(ask, "/v1/findings?limit=500&room=F-3")
     assert ask.body("/v1/findings?newer_than_days=1&room=F-0")["items"] == []
     assert ask("GET", "/v1/findings?newer_than_days=x").status_code == 422
+
+
+def test_tags_and_labels_of_the_past_are_those_of_then(ask, crowded):
+    site, room = crowded.north.site, ask.body("/v1/rooms?tag=F-1")["items"][0]
+    path = "/v1/findings?limit=500"
+    before = every_page(ask, f"{path}&room=F-1")
+    assert before
+    moment = ask.clock.advance(timedelta(minutes=1)).isoformat().replace("+00:00", "Z")
+    ask.clock.advance(timedelta(minutes=1))
+    changed = {"tag": "RENAMED", "labels": {"ward": None}}
+    assert ask("PATCH", f"/v1/rooms/{room['id']}", changed).status_code == 200
+    assert ask("PATCH", f"/v1/sites/{site['id']}", {"tag": "ELSEWHERE"}).status_code == 200
+    for asked in ("room=F-1", "site=NORTH", f"room_id={room['id']}&label.ward=1"):
+        assert every_page(ask, f"{path}&{asked}") == []
+    assert every_page(ask, f"{path}&room=F-1&site=NORTH&as_of={moment}") == before
+    assert every_page(ask, f"{path}&room_id={room['id']}&label.ward=1&as_of={moment}") == before
+    for asked in ("room=RENAMED", "site=ELSEWHERE", f"room_id={room['id']}&label.ward="):
+        assert every_page(ask, f"{path}&{asked}")
+        assert every_page(ask, f"{path}&{asked}&as_of={moment}") == []
+
+
+def test_a_filter_without_a_value_asks_for_what_has_none(ask, estate):
+    for asked in ("room=", "site="):
+        assert ask.body(f"/v1/findings?{asked}&total=true")["total"] == 0
+    without = every_page(ask, "/v1/findings?limit=500&gas=")
+    everything = every_page(ask, "/v1/findings?limit=500")
+    assert without == [finding for finding in everything if finding["gas"] is None]
+    assert without
+
+
+def test_what_a_finding_was_is_told_version_by_version(ask, estate):
+    room = ask.made("rooms", a_room(estate.north.site, "SMALL"))
+    vessel = ask.made("vessels", a_vessel(room, "BIG", capacity_l=60))
+    (finding,) = ask.body(f"/v1/findings?room_id={room['id']}&rule=oxygen/largest-vessel")["items"]
+    # A vessel of 2 L of liquid makes some 1.4 m3 of gas at most: 57 m3 keep 20.4 % of oxygen.
+    for litres in (50, 40, 2):
+        ask.clock.advance(timedelta(minutes=1))
+        changed = ask("PATCH", f"/v1/vessels/{vessel['id']}", {"capacity_l": litres})
+        assert changed.status_code == 200
+    path = f"/v1/findings/{finding['id']}/versions?limit=2"
+    versions = every_page(ask, path, key="auditor")
+    assert versions[0] == finding
+    assert [version["number"] for version in versions] == [1, 2, 3, 4]
+    assert [version["state"] for version in versions] == ["open", "open", "open", "cleared"]
+    measures = [version["measure"] for version in versions[:3]]
+    # Less liquid, more oxygen left.
+    assert measures == sorted(set(measures))
+    assert versions[-1] == ask.body(f"/v1/findings/{finding['id']}")
+    assert every_page(ask, f"{path}&sort=-number", key="auditor") == versions[::-1]
+    assert ask.body(f"{path}&total=true")["total"] == 4
+    for key in ("reader", "recorder"):
+        assert ask("GET", path, key=key).status_code == 403
+    assert ask("GET", f"{path}&label.ward=1").status_code == 422
+    assert ask("GET", "/v1/findings/nonsense/versions").status_code == 404

@@ -269,6 +269,8 @@ def test_filters_take_values_texts_lists_labels_and_nothing(database, estate):
         assert page(connection, "room", {"label.wing": "B"}) == [estate.room]
         assert page(connection, "room", {"label.wing": "b"}) == []
         assert page(connection, "room", {'label.$"[0]': "B"}) == []
+        assert page(connection, "room", {"label.wing": None}) == []
+        assert page(connection, "room", {"label.floor": None}) == [estate.room]
 
 
 @pytest.mark.parametrize(

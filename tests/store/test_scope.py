@@ -106,6 +106,8 @@ def asked_of(estate):
         "events.events_at": (site, 1),
         "events.last_feed_no": (),
         "findings.count": ({},),
+        "findings.count_history": ("f1",),
+        "findings.finding_at": ("f1", 1),
         "findings.finding_history": ("f1",),
         "findings.findings_at": (room, 1),
         "findings.findings_of_rooms": ([room],),

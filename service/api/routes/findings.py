@@ -10,12 +10,13 @@ from fastapi import APIRouter, Depends, Path, Request
 from sqlalchemy import Connection
 from starlette.responses import Response
 
-from service.api.access import LABEL, READ, allowed
+from service.api.access import READ, READ_PAST, allowed
 from service.api.conditional import not_modified as has_it_already
 from service.api.conditional import record_tag
 from service.api.deps import JSON, AsOf, Reader
 from service.api.fields import is_record_id
 from service.api.lists import Asking, Listing
+from service.api.past_findings import findings_listed_at
 from service.api.rendering import FRESH
 from service.api.resources import Filter
 from service.api.routes.declared import (
@@ -27,17 +28,18 @@ from service.api.routes.declared import (
 from service.api.schemas.findings import FindingPage, FindingRead
 from service.changes.answers import finding_answer, rendered
 from service.changes.cautions import CAUTIONS
+from service.clock import moment_of
 from service.errors import AsOfTooEarly, FieldsRefused, RecordNotFound
 from service.store.findings import (
     count,
+    count_history,
+    finding_at,
     finding_history,
-    findings_at,
     get_finding,
     list_findings,
 )
 from service.store.heads import heads_of, position_at
-from service.store.history import records_at
-from service.store.live import record_by_tag
+from service.store.live import list_records, record_by_tag
 from service.store.scope import Scope
 
 router = APIRouter(prefix="/v1/findings", tags=["Findings"])
@@ -60,6 +62,8 @@ FILTERS: Final[Mapping[str, Filter]] = {
         f"One or more of {', '.join(STATES)}, with commas between; those not cleared where none "
         "is said."
     ),
+    "opened_before": Filter("Opened before a moment, such as 2027-03-01T08:00:00Z."),
+    "opened_since": Filter("Opened at a moment or later."),
     "older_than_days": Filter("Opened more than so many days ago."),
     "newer_than_days": Filter("Opened within so many days."),
 }
@@ -82,7 +86,7 @@ async def list_all(
     """List findings, now or as they stood at a moment. `label.<name>` asks for a room's label."""
     moment = as_of or read.service.clock.now()
     filters = _filters(listing.filters, moment)
-    found = _listed if as_of is None else _listed_at
+    found = _listed if as_of is None else findings_listed_at
     items, total = await read(found, filters, listing, as_of)
     keys = [(item[listing.sort], item["id"]) for item in items]
     return listing.page(items, keys, total, cautions=CAUTIONS)
@@ -105,16 +109,56 @@ async def get(finding_id: Id, request: Request, read: Reader, as_of: AsOf) -> Re
     return Response(rendered(finding_answer(finding)), 200, headers, JSON)
 
 
+@router.get(
+    "/{finding_id}/versions",
+    dependencies=[allowed(READ_PAST)],
+    operation_id="listFindingVersions",
+    response_model=None,
+    responses=answering(FindingPage, (*LISTING, RecordNotFound), "Link"),
+)
+async def list_versions(
+    finding_id: Id,
+    listing: Annotated[Listing, Depends(Asking({}, frozenset({"number"}), "number", labels=False))],
+    read: Reader,
+) -> Response:
+    """List what a finding was: opened, worse or better, owned, accepted by whom, cleared."""
+    items, total = await read(_versions, finding_id, listing)
+    keys = [(item["number"], item["id"]) for item in items]
+    return listing.page(items, keys, total, cautions=CAUTIONS)
+
+
 def _filters(asked: Mapping[str, Any], now: datetime) -> dict[str, Any]:
     filters = dict(asked)
     for name, known in (("severity", SEVERITIES), ("state", STATES)):
         if filters.get(name) is not None:
             filters[name] = _some_of(name, filters[name], known)
     filters.setdefault("state", list(NOT_CLEARED))
-    for name, moment in (("older_than_days", "older_than"), ("newer_than_days", "newer_than")):
-        if name in filters:
-            filters[moment] = now - timedelta(days=_days(name, filters.pop(name)))
+    older, newer = _ages(filters, now)
+    if older:
+        filters["older_than"] = min(older)
+    if newer:
+        filters["newer_than"] = max(newer)
     return filters
+
+
+def _ages(filters: dict[str, Any], now: datetime) -> tuple[list[datetime], list[datetime]]:
+    """Take the filters by age out: opened before each of these, and since each of those."""
+    days, moments = ("older_than_days", "newer_than_days"), ("opened_before", "opened_since")
+    older, newer = (
+        [now - timedelta(days=_days(by_days, filters.pop(by_days)))] if by_days in filters else []
+        for by_days in days
+    )
+    for name, found in zip(moments, (older, newer), strict=True):
+        if name in filters:
+            found.append(_moment(name, filters.pop(name)))
+    return older, newer
+
+
+def _moment(name: str, text: str | None) -> datetime:
+    try:
+        return moment_of(text or "")
+    except ValueError as error:
+        raise FieldsRefused.parameter(name, "not-a-moment", str(error)) from None
 
 
 def _some_of(name: str, text: str, known: Sequence[str]) -> list[str]:
@@ -160,101 +204,51 @@ def _listed(
 
 def _resolve(scope: Scope, connection: Connection, filters: dict[str, Any]) -> bool:
     """Put ids in place of tags; false: nothing of that name is there for this key."""
-    return _resolve_site(scope, connection, filters) and _resolve_room(scope, connection, filters)
+    if not _resolve_site(scope, connection, filters):
+        return False
+    if not _resolve_room(scope, connection, filters):
+        return False
+    if not filters.keys() & {"site_id", "room_id"}:
+        # By site and state the index skips what is cleared, which is nearly all of it in time.
+        filters["site_id"] = [head.site_id for head in heads_of(scope, connection)]
+    return True
 
 
 def _resolve_room(scope: Scope, connection: Connection, filters: dict[str, Any]) -> bool:
-    tag = filters.pop("room", None)
-    if tag is None:
+    if "room" not in filters:
         return True
-    site_id = filters.get("site_id")
-    sites = (
-        [site_id] if site_id is not None else [head.site_id for head in heads_of(scope, connection)]
+    tag = filters.pop("room")
+    if tag is None:
+        return False
+    asked = {name: filters[name] for name in ("site_id",) if name in filters}
+    # A tag is there once a site at most.
+    sites = len(heads_of(scope, connection)) + 1
+    named = list_records(
+        scope,
+        connection,
+        "room",
+        {"tag": tag, **asked},
+        sort="id",
+        descending=False,
+        after=None,
+        limit=sites,
     )
-    named = [record_by_tag(scope, connection, "room", site, tag) for site in sites]
-    ids = [room.id for room in named if room is not None]
-    asked = filters.get("room_id")
-    filters["room_id"] = ids if asked is None else [one for one in ids if one == asked]
+    ids = [room.id for room in named]
+    wanted = filters.get("room_id")
+    filters["room_id"] = ids if wanted is None else [one for one in ids if one == wanted]
     return bool(filters["room_id"])
 
 
 def _resolve_site(scope: Scope, connection: Connection, filters: dict[str, Any]) -> bool:
     """Put the id of a site in place of its tag; false: there is no such site for this key."""
-    tag = filters.pop("site", None)
-    if tag is None:
+    if "site" not in filters:
         return True
-    site = record_by_tag(scope, connection, "site", None, tag)
+    tag = filters.pop("site")
+    site = None if tag is None else record_by_tag(scope, connection, "site", None, tag)
     if site is None or filters.get("site_id", site.id) != site.id:
         return False
     filters["site_id"] = site.id
     return True
-
-
-def _listed_at(
-    scope: Scope,
-    connection: Connection,
-    filters: dict[str, Any],
-    listing: Listing,
-    as_of: datetime,
-) -> tuple[list[dict[str, Any]], int | None]:
-    if not _resolve(scope, connection, filters):
-        return [], 0 if listing.total else None
-    wanted_site = filters.pop("site_id", None)
-    labels = {name: filters.pop(name) for name in list(filters) if name.startswith(LABEL)}
-    older_than, newer_than = filters.pop("older_than", None), filters.pop("newer_than", None)
-    rows: list[dict[str, Any]] = []
-    for head in heads_of(scope, connection):
-        if wanted_site in (None, head.site_id):
-            position = position_at(scope, connection, head.site_id, as_of)
-            found = findings_at(scope, connection, head.site_id, position)
-            rooms = _rooms_labelled(scope, connection, head.site_id, position, labels)
-            rows += [row for row in found if rooms is None or row["room_id"] in rooms]
-    matching = [
-        row
-        for row in rows
-        if all(_matches(row[name], wanted) for name, wanted in filters.items())
-        and (older_than is None or row["opened_at"] < older_than)
-        and (newer_than is None or row["opened_at"] >= newer_than)
-    ]
-    return _page_of(matching, listing), len(matching) if listing.total else None
-
-
-def _rooms_labelled(
-    scope: Scope, connection: Connection, site_id: str, position: int, labels: Mapping[str, Any]
-) -> frozenset[str] | None:
-    """Name the rooms that had some labels; null: no label was asked for."""
-    if not labels:
-        return None
-    wanted = {name.removeprefix(LABEL): value for name, value in labels.items()}
-    return frozenset(
-        room.id
-        for room in records_at(scope, connection, "room", site_id, position)
-        if all(room.fields["labels"].get(name) == value for name, value in wanted.items())
-    )
-
-
-def _matches(value: Any, wanted: Any) -> bool:
-    return value in wanted if isinstance(wanted, list) else value == wanted
-
-
-def _page_of(rows: Sequence[Mapping[str, Any]], listing: Listing) -> list[dict[str, Any]]:
-    """Take one page of findings of the past, in the order in which the database gives those now."""
-    answers = sorted((finding_answer(row) for row in rows), key=lambda answer: str(answer["id"]))
-    answers.sort(key=lambda answer: answer[listing.sort], reverse=listing.descending)
-    if listing.sort == "id" and listing.after is not None:
-        last = listing.after[1]
-        answers = [a for a in answers if (a["id"] < last if listing.descending else a["id"] > last)]
-    elif listing.after is not None:
-        at = listing.after
-        answers = [a for a in answers if _comes_after(a, listing, at)]
-    return answers[: listing.limit + 1]
-
-
-def _comes_after(answer: Mapping[str, Any], listing: Listing, after: tuple[Any, str]) -> bool:
-    value, last_id = after
-    if answer[listing.sort] == value:
-        return bool(answer["id"] > last_id)
-    return bool((answer[listing.sort] < value) == listing.descending)
 
 
 def _found(
@@ -268,11 +262,23 @@ def _found(
     position = position_at(scope, connection, finding["site_id"], as_of)
     if position == 0:
         raise AsOfTooEarly
-    versions = [
-        version
-        for version in finding_history(scope, connection, finding_id)
-        if version["position"] <= position
-    ]
-    if not versions:
+    then = finding_at(scope, connection, finding_id, position)
+    if then is None:
         raise RecordNotFound.of("finding")
-    return versions[-1]
+    return then
+
+
+def _versions(
+    scope: Scope, connection: Connection, finding_id: str, listing: Listing
+) -> tuple[list[dict[str, Any]], int | None]:
+    _found(scope, connection, finding_id, None)
+    rows = finding_history(
+        scope,
+        connection,
+        finding_id,
+        descending=listing.descending,
+        after=listing.after,
+        limit=listing.limit + 1,
+    )
+    total = count_history(scope, connection, finding_id) if listing.total else None
+    return [finding_answer(row) for row in rows], total
