@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from datetime import datetime
 from typing import Any, Final
 
-from sqlalchemy import Connection, Select, case, func, or_, select
+from sqlalchemy import Connection, Select, Subquery, case, func, or_, select
 
 from service.store.heads import INSTALLATION, Head, heads_of
 from service.store.scope import Scope, within
@@ -20,6 +20,8 @@ _ROOM: Final = TABLES["room"]
 _SITE: Final = TABLES["site"]
 _RANKS: Final = {"stop": 3, "action": 2, "attention": 1, "in-order": 0}
 _STANDS: Final = ("open", "acknowledged", "accepted")
+_NOT_ACCEPTED: Final = ("open", "acknowledged")
+_GRAVEST_FIRST: Final = ("critical", "major", "minor")
 # How far a finding takes the standing of its room; what is accepted counts one step lower, and
 # never nothing where it was major or critical.
 _STEPS: Final = {"critical": 3, "major": 2, "minor": 1, "observation": 0}
@@ -183,7 +185,13 @@ def finding_counts(
 def worst_rooms(
     scope: Scope, connection: Connection, site_ids: Sequence[str], limit: int
 ) -> list[WorstRoom]:
-    """Return the rooms in service that stand worst: by standing, then by their lowest oxygen."""
+    """Return the rooms in service that stand worst.
+
+    By standing, then by how many findings of each severity are not accepted, the gravest first,
+    then by their lowest oxygen.
+    """
+    found = _found_by_severity(scope, site_ids)
+    most = [func.coalesce(found.c[severity], 0).desc() for severity in _GRAVEST_FIRST]
     rank = case(_RANKS, value=ROOM_STATE.c.standing, else_=0)
     oxygen = case(
         (ROOM_STATE.c.failed, _UNKNOWN_OXYGEN),
@@ -200,14 +208,29 @@ def worst_rooms(
             ROOM_STATE.c.position,
         )
         .join(_ROOM, _ROOM.c.id == ROOM_STATE.c.room_id)
+        .outerjoin(found, found.c.room_id == ROOM_STATE.c.room_id)
         .where(_ROOM.c.state == IN_SERVICE, ROOM_STATE.c.standing != "in-order")
-        .order_by(rank.desc(), oxygen, _ROOM.c.tag_folded, ROOM_STATE.c.room_id)
+        .order_by(rank.desc(), *most, oxygen, _ROOM.c.tag_folded, ROOM_STATE.c.room_id)
         .limit(limit)
     )
     asked = _asked(within(scope, query, ROOM_STATE.c.site_id), ROOM_STATE.c.site_id, site_ids)
     rows = connection.execute(asked).mappings().all()
     findings = _deciding(scope, connection, [row["room_id"] for row in rows])
     return [WorstRoom(**row, finding=findings.get(row["room_id"])) for row in rows]
+
+
+def _found_by_severity(scope: Scope, site_ids: Sequence[str]) -> Subquery:
+    """How many findings that are not accepted each room has, by severity."""
+    counted = [
+        func.sum(case((FINDING.c.severity == severity, 1), else_=0)).label(severity)
+        for severity in _GRAVEST_FIRST
+    ]
+    query = select(FINDING.c.room_id, *counted).where(
+        FINDING.c.site_id.in_(site_ids),
+        FINDING.c.state.in_(_NOT_ACCEPTED),
+        FINDING.c.severity.in_(_GRAVEST_FIRST),
+    )
+    return within(scope, query, FINDING.c.site_id).group_by(FINDING.c.room_id).subquery()
 
 
 def _deciding(

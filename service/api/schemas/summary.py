@@ -93,6 +93,7 @@ class SummaryRead(Answer):
     sites: list[SiteSummary]
     total: Counted
     worst_rooms: list[WorstRoomRead] = Field(
-        description="By standing, then by lowest oxygen; rooms in order are left out."
+        description="By standing, then by how many findings of each severity are not accepted, "
+        "then by lowest oxygen; rooms in order are left out."
     )
     cautions: str
