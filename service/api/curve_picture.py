@@ -26,14 +26,9 @@ from service.audit.curve import Curve, Point
 from service.audit.hazards import FLAMMABLE, OXYGEN_HIGH, OXYGEN_LOW
 from service.audit.releases import OVERFILL
 from service.changes.answers import BEHIND, RECALCULATING
+from service.changes.cautions import CAUTIONS
 from service.changes.curve import CourseOfRoom
 from service.physics.constants import OXYGEN_IN_AIR
-
-CAUTION: Final = (
-    "A screening calculation by published methods under stated assumptions: it judges records, not "
-    "the air. Oxygen can be lower locally, and no calculation makes it safe to enter a room in "
-    "alarm. It does not replace review by a competent person."
-)
 
 _WIDTH: Final = 940.0
 _LEFT: Final = 62.0
@@ -359,7 +354,7 @@ def _foot(course: CourseOfRoom, currency: str) -> Iterator[str]:
         f"Basis {shortened(basis, _LONGEST_TAG)}, revision {assessment.basis_revision}; position "
         f"{assessment.from_position}, assessed {assessed}; computed by method {METHOD_VERSION}."
     )
-    for text in (rests, _NOT_CURRENT.get(currency, ""), course.note or "", CAUTION):
+    for text in (rests, _NOT_CURRENT.get(currency, ""), course.note or "", CAUTIONS):
         yield from wrapped(text, _TEXT, _WIDTH - 2 * _EDGE)
 
 

@@ -71,6 +71,7 @@ class Point:
     at_s: float
     oxygen_pct: float
     oxygen_kpa: float
+    released_pct: float | None  # the gas let go that counts, where oxygen is judged
     gas_pct: float | None  # the gas judged, where it is not oxygen
     lower_limit_pct: float | None  # share of the lower flammable limit
     events: tuple[str, ...]  # what happens at this very moment
@@ -91,6 +92,7 @@ class Curve:
     case: Case
     matching: int  # how many cases of the room are like the one asked for
     before: Point  # the air as the release begins
+    extreme: Point  # the worst of the course, by which the case is judged
     points: tuple[Point, ...]
     alarm: Alarm | None
     out_s: float | None  # when people are out
@@ -202,10 +204,12 @@ def _followed(traced: _Traced, matching: int, most: int) -> Curve:
     end = _end(traced, [at for at, _ in happens])
     happens = [*((at, what) for at, what in happens if at <= end), (end, END)]
     times = times_of(traced.run, end, [at for at, _ in happens], most)
+    worst = np.array([traced.case.at_s])
     return Curve(
         case=traced.case,
         matching=matching,
         before=_points(traced, np.zeros(1), np.array([traced.before]), ())[0],
+        extreme=_points(traced, worst, _levels(traced, worst), ())[0],
         points=_points(traced, times, _levels(traced, times), [*happens, *_flow_changes(traced)]),
         alarm=alarm,
         out_s=out,
@@ -288,18 +292,28 @@ def _points(
     kilopascal = rounded(rounded(oxygen_partial_pressure(oxygen, pressure)) / 1000.0)
     level, none = rounded(levels), np.full(levels.shape, np.nan)
     percent = 100.0 * float(table.gas_by_level[row])
-    gas = none if ABOUT_OXYGEN[hazard] else rounded(percent * level)
+    of_all = rounded(percent * level)
+    released, gas = (of_all, none) if ABOUT_OXYGEN[hazard] else (none, of_all)
     burns = traced.case.hazard == FLAMMABLE
     share = rounded(100.0 * level / REFERENCE_LIMIT) if burns else none
     at: dict[float, list[str]] = {}
     for time, what in happens:
         at.setdefault(time, []).append(what)
     return tuple(
-        Point(time, percent_oxygen, kpa, number(of_gas), number(of_limit), tuple(at.get(time, ())))
-        for time, percent_oxygen, kpa, of_gas, of_limit in zip(
+        Point(
+            time,
+            percent_oxygen,
+            kpa,
+            number(of_released),
+            number(of_gas),
+            number(of_limit),
+            tuple(at.get(time, ())),
+        )
+        for time, percent_oxygen, kpa, of_released, of_gas, of_limit in zip(
             times.tolist(),
             rounded(100.0 * oxygen).tolist(),
             kilopascal.tolist(),
+            released.tolist(),
             gas.tolist(),
             share.tolist(),
             strict=True,

@@ -131,14 +131,7 @@ def curve_document(course: CourseOfRoom, currency: str) -> dict[str, Any]:
         "case": case_document(curve.case),
         "cases_matching": curve.matching,
         "before": _point_document(curve.before),
-        "extreme": {
-            "what": curve.extreme_name,
-            "oxygen_pct": curve.case.oxygen_pct,
-            "oxygen_kpa": curve.case.oxygen_kpa,
-            "gas_pct": curve.case.peak_pct,
-            "lower_limit_pct": curve.case.lower_limit_pct,
-            "at_s": curve.case.at_s,
-        },
+        "extreme": {"what": curve.extreme_name, **_point_document(curve.extreme)},
         "alarm": None
         if curve.alarm is None
         else {"at_s": curve.alarm.at_s, "detector": plain(curve.alarm.detector)},
@@ -158,14 +151,15 @@ def _point_document(point: Point) -> dict[str, Any]:
         "at_s": point.at_s,
         "oxygen_pct": point.oxygen_pct,
         "oxygen_kpa": point.oxygen_kpa,
+        "released_pct": point.released_pct,
         "gas_pct": point.gas_pct,
         "lower_limit_pct": point.lower_limit_pct,
     }
 
 
 COLUMNS: Final = (
-    "room", *_WORDS, "position", "at_s", "oxygen_pct", "oxygen_kpa", "gas_pct", "lower_limit_pct",
-    "events",
+    "room", *_WORDS, "position", "at_s", "oxygen_pct", "oxygen_kpa", "released_pct",
+    "gas_pct", "lower_limit_pct", "events",
 )  # fmt: skip
 
 

@@ -11,6 +11,7 @@ import pytest
 import service.changes.curve as asked
 from service.api.schemas.curve import CurveRead
 from service.audit.assessment import METHOD_VERSION
+from service.changes.cautions import CAUTIONS
 from tests.api.estate import a_detector, a_room, a_unit, a_vessel
 
 SVG = "{http://www.w3.org/2000/svg}"
@@ -297,9 +298,8 @@ def test_a_picture_says_in_words_what_it_shows(ask_one, mixed):
         assert word in names["title"]
     said = " ".join(texts(picture))
     assert "Basis baseline" in said
-    assert "judges records" in said
+    assert CAUTIONS in said
     assert f"position {curve['position']}," in said
-    assert "no calculation makes it safe" in said
     for mark in curve["case"]["marks"]:
         if mark["crossed"]:
             assert f"{mark['limit_pct']:.3g} %, crossed" in said

@@ -1,5 +1,6 @@
 """The course of a case: the very numbers of the assessment, and an integrator's between them."""
 
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
@@ -20,6 +21,7 @@ from tests.audit.builders import (
     PER_DAY,
     PER_HOUR,
     a_detector,
+    a_fluid,
     a_room,
     a_unit,
     a_vessel,
@@ -47,6 +49,8 @@ ICE = a_room(
     detectors=(a_detector(tag="CO2", gas="carbon-dioxide", alarms=(0.5, 1.5)),),
 )
 HYDROGEN_ROOM = a_room(40.0, vessels=(a_vessel(40.0, HYDROGEN), a_vessel(10.0, OXYGEN)))
+# A site's own mixture, a tenth of it oxygen.
+LEAN = a_fluid("lean", molar_mass=0.0284, condensed_density=840.0, oxygen_fraction=0.1)
 ROOMS = {"guarded": GUARDED, "ice": ICE, "hydrogen": HYDROGEN_ROOM}
 
 
@@ -76,6 +80,7 @@ def test_each_case_has_the_extreme_and_the_times_of_the_assessment_exactly(name)
         assert found.case == case
         by = {"oxygen-low": "lowest"}.get(case.hazard, "highest")
         worst = at_event(found, by)
+        assert replace(worst, events=()) == found.extreme
         assert (worst.at_s, worst.oxygen_pct, worst.oxygen_kpa) == (
             case.at_s, case.oxygen_pct, case.oxygen_kpa,
         )  # fmt: skip
@@ -261,7 +266,7 @@ def test_a_toxic_gas_is_told_by_its_fraction_and_the_oxygen_it_takes():
     """Carbon dioxide has no oxygen of its own: the rest of the air is air of 20.95 %."""
     found = curve(ICE, hazard="toxic", release="spill")
     for point in found.points:
-        assert point.lower_limit_pct is None
+        assert (point.lower_limit_pct, point.released_pct) == (None, None)
         assert point.oxygen_pct == pytest.approx(FRESH * (1.0 - point.gas_pct / 100.0), rel=1e-8)
         assert point.oxygen_kpa == pytest.approx(point.oxygen_pct * PRESSURE / 1e5, rel=1e-8)
 
@@ -274,5 +279,21 @@ def test_a_flammable_gas_is_told_by_its_share_of_the_limit_too():
         assert point.lower_limit_pct == pytest.approx(point.gas_pct / 4.0 * 100.0, rel=1e-8)
 
 
-def test_oxygen_has_no_other_gas_to_tell():
-    assert {(p.gas_pct, p.lower_limit_pct) for p in curve(GUARDED).points} == {(None, None)}
+def test_oxygen_has_no_other_gas_to_tell_but_what_was_let_go():
+    """What is let go takes the place of air: x = x0 (1 - G) + xg G (a balance of volumes).
+
+    Nitrogen and argon bring no oxygen; oxygen brings nothing else.
+    """
+    for room, choice, brought in (
+        (GUARDED, {"hazard": "oxygen-low"}, 0.0),
+        (HYDROGEN_ROOM, {"hazard": "oxygen-high"}, 100.0),
+        (a_room(vessels=(a_vessel(40.0, LEAN),)), {"hazard": "oxygen-low"}, 10.0),
+    ):
+        found = curve(room, **choice)
+        assert {(p.gas_pct, p.lower_limit_pct) for p in found.points} == {(None, None)}
+        assert found.extreme.released_pct > 1.0
+        for point in (found.before, found.extreme, *found.points):
+            share = point.released_pct / 100.0
+            expected = FRESH * (1.0 - share) + brought * share
+            # Ten figures of a share near 1 leave so much of what is not there.
+            assert point.oxygen_pct == pytest.approx(expected, rel=1e-7, abs=1e-8)

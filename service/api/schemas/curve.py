@@ -16,6 +16,9 @@ class AirRead(Growing):
     at_s: float
     oxygen_pct: float
     oxygen_kpa: float
+    released_pct: float | None = Field(
+        description="The gas let go that counts, by volume, where oxygen is judged."
+    )
     gas_pct: float | None = Field(description="The gas judged, by volume, where it is not oxygen.")
     lower_limit_pct: float | None = Field(
         description="The share of the lower flammable limit, by the rule of Le Chatelier."
