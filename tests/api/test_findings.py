@@ -1,6 +1,7 @@
 """Findings over HTTP: listed, filtered, paged, and as they stood."""
 
 from datetime import timedelta
+from itertools import combinations
 
 import pytest
 
@@ -176,6 +177,65 @@ def test_findings_are_filtered_by_the_gas_the_subject_the_tag_of_the_room_and_th
     assert young == every_page(ask, "/v1/findings?limit=500&room=F-3")
     assert ask.body("/v1/findings?newer_than_days=1&room=F-0")["items"] == []
     assert ask("GET", "/v1/findings?newer_than_days=x").status_code == 422
+
+
+@pytest.mark.slow
+def test_filters_hold_together_two_by_two_now_and_in_the_past(ask, crowded):
+    """What matches two filters matches each of them, by a look at every finding."""
+    states = "open,acknowledged,accepted,cleared"
+    everything = every_page(ask, f"/v1/findings?limit=500&state={states}")
+    north, room = crowded.north.site, ask.body("/v1/rooms?tag=F-1")["items"][0]
+    ward = {one["id"] for one in ask.body("/v1/rooms?label.ward=1")["items"]}
+    ours = [finding for finding in everything if finding["room_id"] == room["id"]]
+    subject = next(f["subject"]["id"] for f in ours if f["subject"]["kind"] == "vessel")
+    moment = ours[0]["opened_at"]
+    five, three = (
+        (ask.clock.now() - timedelta(days=days)).isoformat(timespec="microseconds")[:26] + "Z"
+        for days in (5, 3)
+    )
+    filters = {
+        f"site_id={north['id']}": lambda f: f["site_id"] == north["id"],
+        f"site={north['tag']}": lambda f: f["site_id"] == north["id"],
+        f"room_id={room['id']}": lambda f: f["room_id"] == room["id"],
+        "room=F-1": lambda f: f["room_id"] == room["id"],
+        "rule=oxygen/largest-vessel": lambda f: f["rule"] == "oxygen/largest-vessel",
+        "family=oxygen": lambda f: f["family"] == "oxygen",
+        "severity=critical,minor": lambda f: f["severity"] in ("critical", "minor"),
+        "state=open,cleared": lambda f: f["state"] in ("open", "cleared"),
+        "gas=oxygen": lambda f: f["gas"] == "oxygen",
+        f"subject_id={subject}": lambda f: f["subject"]["id"] == subject,
+        "label.ward=1": lambda f: f["room_id"] in ward,
+        f"opened_before={three}": lambda f: f["opened_at"] < three,
+        f"opened_since={moment}": lambda f: f["opened_at"] >= moment,
+        "older_than_days=5": lambda f: f["opened_at"] < five,
+        "newer_than_days=5": lambda f: f["opened_at"] >= five,
+    }
+    now = ask.clock.now().isoformat().replace("+00:00", "Z")
+    met = 0
+
+    def matching(*asked):
+        # What is cleared is left out until a state is asked for.
+        states_asked = any(one.startswith("state=") for one in asked)
+        return [
+            finding
+            for finding in everything
+            if (states_asked or finding["state"] != "cleared")
+            and all(filters[one](finding) for one in asked)
+        ]
+
+    for one, other in combinations(filters, 2):
+        kept = matching(one, other)
+        met += bool(kept)
+        for past in ("", f"&as_of={now}"):
+            answer = ask.body(f"/v1/findings?limit=500&total=true&{one}&{other}{past}")
+            assert answer["items"] == kept, (one, other, past)
+            assert answer["total"] == len(kept)
+    for asked in filters:
+        kept = matching(asked)
+        assert kept, asked
+        assert every_page(ask, f"/v1/findings?limit=500&{asked}") == kept
+    assert any(finding["state"] == "cleared" for finding in everything)
+    assert met > len(filters)
 
 
 def test_tags_and_labels_of_the_past_are_those_of_then(ask, crowded):
