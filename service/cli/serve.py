@@ -119,6 +119,7 @@ def _load_properties(database: "Database") -> None:
 
 def _run_server(app: "Application", settings: Settings, listener: socket.socket) -> int:
     from service.cli.server import AnnouncingServer
+
     host, port = listener.getsockname()[:2]
     scheme = "http" if settings.tls_cert is None else "https"
     named = f"[{host}]" if ":" in host else host
