@@ -7,7 +7,7 @@ from typing import Final
 
 import numpy as np
 
-from service.audit.air import AIRFLOWS, LOST, PROVEN
+from service.audit.air import AIRFLOWS, BOOSTED, LOST, PROVEN
 from service.audit.cases import CaseTable
 from service.audit.columns import (
     DETECTOR_STATES,
@@ -45,6 +45,7 @@ _LOW, _HIGH, _METHANE = range(len(SETTLES))
 _SEALED = [ROOM_KINDS.index(kind) for kind in ("lift", "vehicle")]
 _PIT = ROOM_KINDS.index("pit")
 _NOTICED: Final = np.array([release.noticed for release in RELEASES])
+_BOOSTED = AIRFLOWS.index(BOOSTED)
 _OVERFILL = [release.slug for release in RELEASES].index(OVERFILL)
 
 # A mark that is not there, as a level that no course reaches.
@@ -123,6 +124,9 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
     alarms = _alarms(table, results, found, needs_low, needs_high)
     case, detector, alarm = alarms.case, alarms.detector, alarms.time
     first = _first(alarm, case, table.size)
+    # Boosted air is the air as measured until the alarm, so that their first alarm is one moment;
+    # sought anew, at the very end of a segment, it could be missed by a rounding.
+    first = np.where(table.airflow == _BOOSTED, first[table.measured], first)
     out_after = table.conditions.out_after_alarm[table.room]
     kind = table.given.rooms.kind[table.room]
     alone = table.given.rooms.unaccompanied[table.room] == 1

@@ -130,7 +130,7 @@ rooms = st.builds(
     units=st.lists(some_units(), max_size=3).map(tuple),
     detectors=st.lists(some_detectors(), max_size=3).map(tuple),
 )
-thorough = settings(max_examples=20)
+thorough = settings(max_examples=5)
 quick = settings(max_examples=10)
 
 CASE_RULES = tuple((rule.slug, rule.gas) for rule in RULES if isinstance(rule, CaseRule))
