@@ -6,15 +6,17 @@ import math
 from collections.abc import Iterable, Mapping, Sequence, Sized
 from dataclasses import dataclass, field, fields, replace
 from datetime import UTC, datetime
+from itertools import pairwise
 from typing import Any, Final, Generic, TypeAlias, TypeVar
 
 import numpy as np
 import numpy.typing as npt
 
 from service.audit.assessment import SEVERITIES
-from service.audit.inputs import FluidValues, Outage, RoomValues
+from service.audit.inputs import FluidValues, Outage, QuenchValues, RoomValues, VesselValues
 from service.physics.arrays import Floats, Integers, Mask
 from service.physics.constants import SECONDS_PER_DAY, SECONDS_PER_HOUR
+from service.physics.gas import gas_density
 
 Moments: TypeAlias = npt.NDArray[np.datetime64]
 
@@ -41,6 +43,9 @@ FILLED_BY: Final = ("automatic", "attended", "exchanged")
 VENTS: Final = ("room", "outdoors")
 ARRANGEMENTS: Final = ("supply", "exhaust", "balanced")
 UNIT_STATES: Final = ("running", "stopped", "failed")
+TERMINALS: Final = ("low", "high")
+INSULATIONS: Final = ("vacuum-multilayer", "vacuum-powder", "foam", "none")
+PHASES: Final = ("liquid", "gas")
 DETECTOR_STATES: Final = ("in-service", "fault", "off")
 PLACES: Final = ("inside", "entrance")
 SETTLES: Final = ("low", "high", "methane")
@@ -58,11 +63,15 @@ CONTROL_KINDS: Final = (
     "delivery-route",
     "bund",
 )
-MANUAL: Final = "manual"  # a boost that a person starts
+MANUAL: Final = "manual"  # a boost or a shut-off that a person starts
+#: What closes a shut-off besides a detector.
+TRIGGERS: Final = ("high-level", "excess-flow", MANUAL)
 BY_HAND: Final = -2  # the row of its detector
 CARBON_DIOXIDE: Final = "carbon-dioxide"
 NITROUS_OXIDE: Final = "nitrous-oxide"
 HELIUM: Final = "helium"
+# Temperature at which a cylinder is charged to its pressure. [K]  Common practice, no source.
+CHARGED_AT: Final = 288.15
 
 
 @dataclass(frozen=True, slots=True)
@@ -126,6 +135,9 @@ class Rooms:
     attended: Integers
     unaccompanied: Integers
     way_out: Floats
+    pit_area: Floats
+    pit_depth: Floats
+    pit_entered: Integers
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,7 +170,20 @@ class Vessels:
     relief_fitted: Integers
     relief_inspected: Mask
     relief_due: Moments
+    relief_to: Integers
     mobile: Integers
+    insulation: Integers
+    line: Integers  # row of the line that fills it
+    cold_area: Floats
+    working_pressure: Floats  # [Pa] absolute
+    withdrawal_bore: Floats
+    has_quench: Mask
+    quench_duration: Floats
+    quench_share: Floats
+    has_pipe: Mask
+    pipe_inspected: Mask
+    pipe_due: Moments
+    outlet_clear: Integers
     on_manifold: Mask  # names one
     group: Integers  # vessels of one manifold share one; unique to its room
 
@@ -184,6 +209,7 @@ class Units:
     fail_alarm: Integers
     boost_flow: Floats
     boost_detector: Integers  # row of the detectors; -1 where unknown, BY_HAND by a person
+    terminal: Integers  # height of the grille that it draws or blows through
 
 
 @dataclass(frozen=True, slots=True)
@@ -208,6 +234,34 @@ class Detectors:
     power_backed: Integers
     monitored: Integers
     zeroed_at: Floats
+
+
+@dataclass(frozen=True, slots=True)
+class Lines:
+    """One row a supply line and room that it runs through or fills a vessel in."""
+
+    room: Integers
+    source: Integers
+    fluid: Integers
+    phase: Integers
+    bore: Floats
+    length: Floats
+    source_pressure: Floats  # [Pa] absolute
+    restrictor: Floats  # [kg/s]
+    has_source: Mask  # the vessel that feeds it is a record
+    source_capacity: Floats  # [kg]
+    source_contents: Floats  # [kg]
+    source_count_due: Moments
+    source_state: Integers
+    has_shut_off: Mask
+    trigger: Integers  # row of TRIGGERS; -1 where unknown or a detector
+    detector: Integers  # row of the detectors; -1 where it is none of this room
+    named_detector: Mask  # its trigger is a detector, of this room or another
+    closes_in: Floats
+    fails_closed: Integers
+    tested: Mask
+    test_due: Moments
+    insulation: Integers
 
 
 @dataclass(frozen=True, slots=True)
@@ -252,6 +306,7 @@ class Columns:
     units: Units
     detectors: Detectors
     controls: Controls
+    lines: Lines
     fluids: Fluids
     gases: tuple[str, ...]  # names that detectors and fluids point at
 
@@ -288,6 +343,7 @@ def columns(rooms: Sequence[RoomValues]) -> Columns:
     vessels = _vessels(rooms, fluids)
     table = _rooms(rooms, fluids)
     detectors = _detectors(rooms, gases)
+    lines = _lines(rooms, fluids)
     fluid_table = _fluids(tuple(fluids.rows), gases)
     return Columns(
         rooms=table,
@@ -296,6 +352,7 @@ def columns(rooms: Sequence[RoomValues]) -> Columns:
         units=_units(rooms),
         detectors=detectors,
         controls=_controls(rooms),
+        lines=lines,
         fluids=fluid_table,
         gases=tuple(gases.rows),
     )
@@ -307,14 +364,26 @@ def taken(given: Columns, index: Integers) -> Columns:
     units, unit_room = members(given.units.room, index, given.count)
     detectors, detector_room = members(given.detectors.room, index, given.count)
     controls, control_room = members(given.controls.room, index, given.count)
+    lines, line_room = members(given.lines.room, index, given.count)
+    picked_vessels = replace(_picked(given.vessels, vessels), room=vessel_room)
+    picked_lines = replace(_picked(given.lines, lines), room=line_room)
     picked_units = replace(_picked(given.units, units), room=unit_room)
     picked_controls = replace(_picked(given.controls, controls), room=control_room)
     return replace(
         given,
         rooms=_picked(given.rooms, index),
         bases=_picked(given.bases, index),
-        vessels=_regrouped(replace(_picked(given.vessels, vessels), room=vessel_room)),
         # A row that points at another table follows what stood there in the same room.
+        vessels=_regrouped(
+            replace(
+                picked_vessels,
+                line=_followed(picked_vessels.line, vessel_room, lines, line_room),
+            )
+        ),
+        lines=replace(
+            picked_lines,
+            detector=_followed(picked_lines.detector, line_room, detectors, detector_room),
+        ),
         units=replace(
             picked_units,
             boost_detector=_followed(
@@ -369,7 +438,7 @@ def _followed(
     return found
 
 
-_Table = TypeVar("_Table", Rooms, Bases, Vessels, Units, Detectors, Controls)
+_Table = TypeVar("_Table", Rooms, Bases, Vessels, Units, Detectors, Controls, Lines)
 
 
 def _picked(table: _Table, rows: Integers) -> _Table:
@@ -402,6 +471,9 @@ def _rooms(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Rooms
         attended=_flags(room.attended for room in rooms),
         unaccompanied=_flags(room.unaccompanied for room in rooms),
         way_out=_floats(room.way_out for room in rooms),
+        pit_area=_floats(None if room.pit is None else room.pit.area for room in rooms),
+        pit_depth=_floats(None if room.pit is None else room.pit.depth for room in rooms),
+        pit_entered=_flags(None if room.pit is None else room.pit.entered for room in rooms),
     )
 
 
@@ -435,7 +507,14 @@ def _vessels(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Ves
         relief_fitted=_flags(vessel.relief_fitted for vessel in all_of),
         relief_inspected=_mask(vessel.relief_inspected for vessel in all_of),
         relief_due=moments(vessel.relief_inspection_due for vessel in all_of),
+        relief_to=_codes((vessel.relief_to for vessel in all_of), VENTS),
         mobile=_flags(vessel.mobile for vessel in all_of),
+        insulation=_codes((vessel.insulation for vessel in all_of), INSULATIONS),
+        line=_filling_lines(rooms),
+        cold_area=_floats(vessel.cold_area for vessel in all_of),
+        working_pressure=_floats(vessel.working_pressure for vessel in all_of),
+        withdrawal_bore=_floats(vessel.withdrawal_bore for vessel in all_of),
+        **_quenches([vessel.quench for vessel in all_of]),
         on_manifold=_mask(vessel.manifold is not None for vessel in all_of),
         group=_integers(
             group.rows.setdefault((row, vessel.manifold or place), len(group.rows))
@@ -443,6 +522,94 @@ def _vessels(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Ves
             for place, vessel in enumerate(room.vessels)
         ),
     )
+
+
+def _quenches(quenches: Sequence[QuenchValues | None]) -> dict[str, Any]:
+    """What is recorded of the quench of each vessel; nothing of one that is no magnet."""
+    nothing = QuenchValues()
+    known = [quench or nothing for quench in quenches]
+    return {
+        "has_quench": _mask(quench is not None for quench in quenches),
+        "quench_duration": _floats(quench.duration for quench in known),
+        "quench_share": _floats(quench.share_to_room for quench in known),
+        "has_pipe": _mask(quench.has_pipe for quench in known),
+        "pipe_inspected": _mask(quench.pipe_inspected for quench in known),
+        "pipe_due": moments(quench.pipe_inspection_due for quench in known),
+        "outlet_clear": _flags(quench.outlet_clear for quench in known),
+    }
+
+
+def _filling_lines(rooms: Sequence[RoomValues]) -> Integers:
+    """Row of the line that fills each vessel."""
+    found: list[int] = []
+    first = 0
+    for room in rooms:
+        rows = {line.record.id: first + place for place, line in enumerate(room.lines)}
+        found += [
+            UNKNOWN if vessel.supply_line_id is None else rows.get(vessel.supply_line_id, UNKNOWN)
+            for vessel in room.vessels
+        ]
+        first += len(room.lines)
+    return _integers(found)
+
+
+def _lines(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Lines:
+    all_of = [line for room in rooms for line in room.lines]
+    detectors = [detector.record.id for room in rooms for detector in room.detectors]
+    firsts = np.cumsum([0, *(len(room.detectors) for room in rooms)]).tolist()
+    here = [
+        {name: row for row, name in enumerate(detectors[begin:end], begin)}
+        for begin, end in pairwise(firsts)
+    ]
+    owners = _owners([room.lines for room in rooms])
+    triggers = [line.trigger for line in all_of]
+    sources = [line.source for line in all_of]
+    return Lines(
+        room=owners,
+        source=_positions([room.lines for room in rooms]),
+        fluid=_integers(fluids.row(line.fluid) for line in all_of),
+        phase=_codes((line.phase for line in all_of), PHASES),
+        bore=_floats(line.bore for line in all_of),
+        length=_floats(line.length for line in all_of),
+        source_pressure=_floats(line.source_pressure for line in all_of),
+        restrictor=_floats(line.restrictor for line in all_of),
+        has_source=_mask(source is not None for source in sources),
+        source_capacity=_floats(_mass(each, "capacity") for each in sources),
+        source_contents=_floats(_mass(each, "contents") for each in sources),
+        source_count_due=moments(None if each is None else each.count_due for each in sources),
+        source_state=_codes(
+            (None if each is None else each.state for each in sources), VESSEL_STATES
+        ),
+        has_shut_off=_mask(line.has_shut_off for line in all_of),
+        trigger=_codes((each if each in TRIGGERS else None for each in triggers), TRIGGERS),
+        detector=_integers(
+            here[owner].get(trigger or "", UNKNOWN)
+            for owner, trigger in zip(owners.tolist(), triggers, strict=True)
+        ),
+        named_detector=_mask(each is not None and each not in TRIGGERS for each in triggers),
+        closes_in=_floats(line.closes_in for line in all_of),
+        fails_closed=_flags(line.fails_closed for line in all_of),
+        tested=_mask(line.shut_off_tested for line in all_of),
+        test_due=moments(line.shut_off_test_due for line in all_of),
+        insulation=_codes((line.insulation for line in all_of), INSULATIONS),
+    )
+
+
+def _mass(vessel: VesselValues | None, of: str) -> float | None:
+    """Capacity or contents of a vessel by mass [kg]; litres are of liquid at its boiling point."""
+    if vessel is None:
+        return None
+    volume, mass = getattr(vessel, f"{of}_volume"), getattr(vessel, f"{of}_mass")
+    if volume is None:
+        return None if mass is None else float(mass)
+    fluid = vessel.fluid
+    if vessel.charge_pressure is not None:
+        compressed = gas_density(
+            fluid.molar_mass, pressure=vessel.charge_pressure, temperature=CHARGED_AT
+        )
+        return float(volume * compressed)
+    density = fluid.pressure_liquid_density or fluid.condensed_density
+    return float(volume) * density
 
 
 def _units(rooms: Sequence[RoomValues]) -> Units:
@@ -466,6 +633,7 @@ def _units(rooms: Sequence[RoomValues]) -> Units:
         fail_alarm=_flags(unit.fail_alarm for unit in all_of),
         boost_flow=_floats(unit.boost_flow for unit in all_of),
         boost_detector=_boost_detectors(rooms),
+        terminal=_codes((unit.terminal_height for unit in all_of), TERMINALS),
     )
 
 

@@ -77,8 +77,62 @@ class VesselValues:
     relief_fitted: bool | None = None
     relief_inspection_due: datetime | None = None  # None: never inspected or no interval
     relief_inspected: bool = False
+    relief_to: str | None = None  # room, outdoors
     manifold: str | None = None
     mobile: bool | None = None
+    supply_line_id: str | None = None  # the line that fills it
+    cold_area: float | None = None  # [m2] of the inner vessel
+    working_pressure: float | None = None  # [Pa] absolute
+    withdrawal_bore: float | None = None  # [m] of the hose that liquid is drawn through
+    quench: QuenchValues | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class QuenchValues:
+    """What is recorded of a magnet's quench and of the pipe that is to take it outdoors."""
+
+    duration: float | None = None  # [s]
+    share_to_room: float | None = None  # [1] as expected, with the pipe sound
+    has_pipe: bool = False
+    pipe_inspected: bool = False
+    pipe_inspection_due: datetime | None = None  # None: never inspected or no interval
+    outlet_clear: bool | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class LineValues:
+    """A supply line that runs through a room, or fills a vessel in it."""
+
+    record: Reference
+    fluid: FluidValues
+    phase: str  # liquid, gas
+    bore: float | None = None  # [m]
+    length: float | None = None  # [m]
+    source_pressure: float | None = None  # [Pa] absolute
+    restrictor: float | None = None  # [kg/s] that can pass it at most
+    source: VesselValues | None = None  # wherever it stands; None: not one of the records
+    has_shut_off: bool = False
+    trigger: str | None = None  # id of a detector, high-level, excess-flow or manual
+    closes_in: float | None = None  # [s]
+    fails_closed: bool | None = None
+    shut_off_tested: bool = False
+    shut_off_test_due: datetime | None = None  # None: never tested or no interval
+    insulation: str | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class OpeningValues:
+    """An opening of a room, as seen from it."""
+
+    record: Reference
+    kind: str  # door, hatch, window, grille, curtain, gap
+    other_room_id: str | None  # None: outdoors
+    width: float | None = None  # [m]
+    height: float | None = None  # [m]
+    area: float | None = None  # [m2]
+    exchange_flow: float | None = None  # [m3/s] each way
+    inflow: float | None = None  # [m3/s] net into this room; negative: out of it
+    normally_open: bool | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -183,4 +237,6 @@ class RoomValues:
     units: tuple[UnitValues, ...] = ()
     detectors: tuple[DetectorValues, ...] = ()
     controls: tuple[ControlValues, ...] = ()
+    lines: tuple[LineValues, ...] = ()
+    openings: tuple[OpeningValues, ...] = ()
     pit: PitValues | None = None

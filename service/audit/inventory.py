@@ -7,6 +7,7 @@ from typing import Final
 import numpy as np
 
 from service.audit.columns import (
+    CHARGED_AT,
     FILLED_BY,
     UNKNOWN,
     VENTS,
@@ -34,8 +35,6 @@ MAGNET: Final = VESSEL_KINDS.index("magnet")
 
 # From the high level to the shut valve, where nobody recorded it. [s]  Judging 1.
 CLOSES_IN: Final = 60.0
-# Temperature at which a cylinder is charged to its pressure. [K]  Common practice, no source.
-CHARGED_AT: Final = 288.15
 
 
 @dataclass(frozen=True, slots=True)
