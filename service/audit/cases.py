@@ -153,7 +153,7 @@ def _joined(
     member_row = member_row[by_case]
     member_source = codes("member_source")[by_case]
     member_gas = joined("member_gas")[by_case]
-    marks, measured_on = _marks(given, room, release, hazard, rooms)
+    marks, measured_on = marks_of(given, room, release, hazard, rooms)
     first = np.argmax(np.isfinite(marks), axis=1)
     weight = found.weight[hazard[member_row], member_source]
     gas_by_level = quotient(
@@ -207,7 +207,7 @@ def _padded(table: Floats, width: int) -> Floats:
     return filled
 
 
-def _marks(
+def marks_of(
     given: Columns, room: Conditions, release: Integers, hazard: Integers, rooms: Integers
 ) -> tuple[Floats, Integers]:
     """Levels of the marks of each case, and what each is measured on."""

@@ -76,6 +76,30 @@ def solve(table: CaseTable) -> Results:
     """Solve every case at once."""
     with np.errstate(all="raise", under="ignore"):
         runs, start = courses(table)
+        recovered, clearing = _back(table, runs, np.maximum(runs.highest, start))
+        return results_of(
+            table,
+            runs,
+            start,
+            gas=table.instant + (table.rates * table.durations).sum(axis=1),
+            recovered=recovered,
+            clearing=clearing,
+            required=_required(table, start),
+        )
+
+
+def results_of(
+    table: CaseTable,
+    runs: Course,
+    start: Floats,
+    *,
+    gas: Floats,
+    recovered: Floats,
+    clearing: Floats,
+    required: Floats,
+) -> Results:
+    """Set the courses of cases against their marks."""
+    with np.errstate(all="raise", under="ignore"):
         level = np.maximum(runs.highest, start)
         means = _means(table, runs)
         # A room full of gas may be so by a rounding more; not-a-number passes.
@@ -86,7 +110,6 @@ def solve(table: CaseTable) -> Results:
         limit = table.first_mark
         pressure = table.conditions.pressure[table.room]
         clean = CLEAN[table.hazard]
-        recovered, clearing = _back(table, runs, level)
         return Results(
             level=rounded(level),
             means=rounded(means),
@@ -96,10 +119,10 @@ def solve(table: CaseTable) -> Results:
             crossed=crossed,
             to_marks=_times_to_marks(table, runs, start, crossed),
             recovered=rounded(np.where(mark > 0, recovered, np.nan)),
-            gas=rounded(table.instant + (table.rates * table.durations).sum(axis=1)),
+            gas=rounded(gas),
             mark=mark,
             nearness=rounded((_of_first(table, measured) - clean) / (limit - clean)),
-            required=_required(table, start),
+            required=required,
             clearing=rounded(clearing),
             restore=rounded(clearing * table.air.mixing_factor[_AS_MEASURED, table.room]),
             course=runs,
@@ -109,11 +132,11 @@ def solve(table: CaseTable) -> Results:
 def courses(table: CaseTable) -> tuple[Course, Floats]:
     """Solve what starts from clean air first, and then what starts from there."""
     every = np.arange(table.size)
-    start = _starts(table, every)
+    start = starts(table, every)
     return _run(table, every, start), start
 
 
-def _starts(table: CaseTable, rows: Integers) -> Floats:
+def starts(table: CaseTable, rows: Integers) -> Floats:
     """Level that some cases start from: of clean air, or the worst of what goes on before."""
     start: Floats = CLEAN[table.hazard[rows]]
     base = table.starts_from[rows]
@@ -133,11 +156,12 @@ def _run(table: CaseTable, rows: Integers, start: Floats) -> Course:
         supply=table.supply[rows],
         exhaust=table.exhaust[rows],
         volume=table.volume[rows],
-        start=_after_instant(table, rows, start),
+        start=after_instant(table, rows, start),
     )
 
 
-def _after_instant(table: CaseTable, rows: Integers, start: Floats) -> Floats:
+def after_instant(table: CaseTable, rows: Integers, start: Floats) -> Floats:
+    """Level of some cases once what they let go at once is out."""
     gas, level, volume = table.instant[rows], table.instant_level[rows], table.volume[rows]
     pushed = released_fraction_after_displacement(
         gas, volume, fraction_before=start, dilution_volume=level
@@ -205,20 +229,21 @@ def _back(table: CaseTable, runs: Course, level: Floats) -> tuple[Floats, Floats
     through the room: whichever takes longer.
     """
     back = runs.back_below(table.first_mark)
-    clearing = _clearing(table, np.arange(table.size), level)
+    clearing = clearing_flow(table, np.arange(table.size), level)
     whole = table.conditions.volume[table.room]
     rows = np.flatnonzero(table.volume < whole)
     if rows.size:
         mixed = replace(table, volume=whole)
-        start = _starts(mixed, rows)
+        start = starts(mixed, rows)
         run = _run(mixed, rows, start)
         highest = np.maximum(run.highest, start)
         back[rows] = np.maximum(back[rows], run.back_below(table.first_mark[rows]))
-        clearing[rows] = np.maximum(clearing[rows], _clearing(mixed, rows, highest))
+        clearing[rows] = np.maximum(clearing[rows], clearing_flow(mixed, rows, highest))
     return back, clearing
 
 
-def _clearing(table: CaseTable, rows: Integers, level: Floats) -> Floats:
+def clearing_flow(table: CaseTable, rows: Integers, level: Floats) -> Floats:
+    """Air that must count to bring some cases back inside their first mark in time."""
     within = table.given.bases.restore[table.room[rows]]
     return flow_to_restore(level, table.first_mark[rows], volume=table.volume[rows], within=within)
 
