@@ -74,6 +74,25 @@ class Case:
     mark: int  # 0 none, 1 first, 2 second, 3 third
     without_margins: Mapping[str, float | None]
     method: tuple[str, ...]
+    from_room: Reference | None = None  # None: of the room itself
+
+
+@dataclass(frozen=True, slots=True)
+class Reached:
+    """A room of a network."""
+
+    room: Reference
+    steps: int  # from the source
+    through: Reference  # the opening or the unit that its air comes by
+
+
+@dataclass(frozen=True, slots=True)
+class Network:
+    """The rooms that a room's gas can reach, and where they end."""
+
+    rooms: tuple[Reached, ...]
+    cut: tuple[tuple[Reference, Reference, str], ...]  # by what, from which room, the room beyond
+    assumed: tuple[tuple[Reference, tuple[str, ...], float], ...]  # opening, fields, m3/h each way
 
 
 @dataclass(frozen=True, slots=True)
@@ -122,7 +141,9 @@ class Assessment:
     read: tuple[Reference, ...]  # records and revisions that it rests on
     assumed: tuple[Assumed, ...]
     cases: tuple[Case, ...]
-    deciding: int | None  # index in cases of the worst, by judging.md 5
+    incoming: tuple[Case, ...]  # of other rooms, as their gas comes here
+    deciding: int | None  # index in cases, and then incoming, of the worst, by judging.md 5
+    network: Network | None  # where the gas of the room itself can go; None: nowhere
     ventilation: Ventilation | None
     figures: Mapping[
         str, float | str | None

@@ -1,6 +1,6 @@
 """Cases with what became of them, the safeguards that hold, and how bad each is."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -8,10 +8,11 @@ from service.audit.assumptions import ASSUMPTIONS, Assumptions
 from service.audit.cases import CaseTable, cases_of
 from service.audit.columns import taken
 from service.audit.hazards import ABOUT_OXYGEN
+from service.audit.incoming import Incoming
 from service.audit.marks import mark_percent
 from service.audit.safeguards import Safeguards, safeguards
 from service.audit.severity import case_severity, without_safeguards, worst_by_room
-from service.audit.solve import Results, solve
+from service.audit.solve import Results, proven_to_hold, solve
 from service.physics.arrays import Floats, Integers, Mask
 
 _ALL_TOGETHER = -1  # every assumption of a room at its mildest at once
@@ -35,7 +36,21 @@ class Evaluation:
 def evaluate(table: CaseTable, at: np.datetime64) -> Evaluation:
     """Solve a table and judge its cases."""
     results = solve(table)
-    guards = safeguards(table, results, at)
+    return evaluation_of(table, results, safeguards(table, results, at))
+
+
+def evaluate_incoming(came: Incoming, base: Evaluation, at: np.datetime64) -> Evaluation:
+    """Judge the cases that came from other rooms by what the room that they came to has."""
+    guards = safeguards(came.table, came.results, at)
+    # Whether its air holds what goes on in the room itself is what its own cases say.
+    holds = proven_to_hold(base.table, base.results)[came.table.room]
+    return evaluation_of(
+        came.table, came.results, replace(guards, ventilation=guards.ventilation & holds)
+    )
+
+
+def evaluation_of(table: CaseTable, results: Results, guards: Safeguards) -> Evaluation:
+    """Say how bad each case is."""
     severity = case_severity(table, results, guards)
     limits, values = mark_percent(table, results)
     # Oxygen is always held against its first mark: its measure is one number however low it falls.

@@ -60,9 +60,20 @@ class Incoming:
 
 def incoming(table: CaseTable, found: Networks) -> Incoming:
     """Follow every case that counts through the network of its room."""
+    return _followed_through(table, found, None)
+
+
+def same_incoming(table: CaseTable, found: Networks, like: Incoming) -> Incoming:
+    """Follow the cases of a table that has the same rows with other numbers; row by row."""
+    told = np.zeros((table.size, found.rooms.shape[1]), dtype=np.bool_)
+    told[like.case, like.place] = True
+    return _followed_through(table, found, told)
+
+
+def _followed_through(table: CaseTable, found: Networks, told_of: Mask | None) -> Incoming:
     case, network = _cases(table, found)
     with np.errstate(all="raise", under="ignore"):
-        parts = [_NOTHING, *_parts(table, found, case, network)]
+        parts = [_NOTHING, *_parts(table, found, case, network, told_of)]
         told = np.concatenate([part[0] for part in parts])
         place = np.concatenate([part[1] for part in parts])
         runs = end_to_end([part[2] for part in parts])
@@ -103,7 +114,13 @@ def end_to_end(runs: Sequence[Course]) -> Course:
     )
 
 
-def _parts(table: CaseTable, found: Networks, case: Integers, network: Integers) -> Iterator[_Part]:
+def _parts(
+    table: CaseTable,
+    found: Networks,
+    case: Integers,
+    network: Integers,
+    told_of: Mask | None,
+) -> Iterator[_Part]:
     """Follow cases a few at a time; what is worth telling of them, by case and place.
 
     What goes on without any accident comes first: the others start from its worst in every room.
@@ -120,13 +137,20 @@ def _parts(table: CaseTable, found: Networks, case: Integers, network: Integers)
             # A case without a boil-off of its own starts from clean air.
             starts_there = np.flatnonzero(base != CLEAN_AIR)
             before[some[starts_there]] = before[row_of[base[starts_there]]]
-            part, highest = _followed(table, found, case[some], network[some], before[some])
+            part, highest = _followed(
+                table, found, case[some], network[some], before[some], told_of
+            )
             before[some] = np.maximum(before[some], highest)
             yield some[part[0]], part[1], part[2]
 
 
 def _followed(
-    table: CaseTable, found: Networks, case: Integers, network: Integers, before: Floats
+    table: CaseTable,
+    found: Networks,
+    case: Integers,
+    network: Integers,
+    before: Floats,
+    told_of: Mask | None,
 ) -> tuple[_Part, Floats]:
     rooms = found.rooms[network]
     there = rooms != NO_ROOM
@@ -144,7 +168,8 @@ def _followed(
         start=_starts(table, found, case, network, volume, before),
     )
     highest = run.levels.max(axis=2)
-    row, target = np.nonzero(there & _worth_telling(table, case, place, highest))
+    told = _worth_telling(table, case, place, highest) if told_of is None else told_of[case]
+    row, target = np.nonzero(there & told)
     neighbour = target > 0
     row, target = row[neighbour], target[neighbour]
     return (row, target, run.of_rooms(row, target)), highest

@@ -162,6 +162,7 @@ class UnitValues:
     boost_flow: float | None = None  # [m3/s] of the whole unit once boosted
     boost_trigger: str | None = None  # id of a detector, or manual
     terminal_height: str | None = None  # low, high
+    serves: tuple[str, ...] = ()  # ids of all its rooms
     outages: tuple[Outage, ...] = ()
 
 

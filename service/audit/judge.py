@@ -12,10 +12,12 @@ from service.audit.assessment import METHOD_VERSION, SEVERITIES, Assessment, Jud
 from service.audit.assumptions import assumptions
 from service.audit.boost import with_boost
 from service.audit.cases import CaseTable, case_table, cases_of
-from service.audit.columns import UNKNOWN, moments
-from service.audit.evaluation import deciding, evaluate
+from service.audit.columns import UNKNOWN, Moments, moments
+from service.audit.evaluation import Evaluation, deciding, evaluate, evaluate_incoming
+from service.audit.incoming import incoming, same_incoming
 from service.audit.inputs import Reference, RoomValues
 from service.audit.margins import without_margins
+from service.audit.networks import NO_ROOM, networks
 from service.audit.rules.case_records import case_records
 from service.audit.rules.registry import RULES
 from service.audit.rules.rule import (
@@ -30,25 +32,42 @@ from service.audit.rules.rule import (
 )
 from service.audit.rules.words import number
 from service.audit.severity import nearest
-from service.audit.told import Told
+from service.audit.told import Leading, Told
 from service.audit.turns import next_turns
-from service.physics.arrays import Integers
+from service.physics.arrays import Floats, Integers, Mask
 
 _EPOCH: Final = datetime(1970, 1, 1, tzinfo=UTC)
 
 
-def assess_rooms(rooms: Sequence[RoomValues], *, at: datetime) -> tuple[Assessment, ...]:
-    """Assess rooms at a moment; one that cannot be computed says so and hides no other."""
+def assess_rooms(
+    rooms: Sequence[RoomValues], *, at: datetime, beside: Sequence[RoomValues] = ()
+) -> tuple[Assessment, ...]:
+    """Assess rooms at a moment; one that cannot be computed says so and hides no other.
+
+    Those ``beside`` are there for the gas that comes from them, or goes on into them, alone.
+    """
+    asked, rooms = rooms, (*rooms, *beside)
     moment = moments([at])[0]
     tables, judged = _judged(rooms, at, moment)
-    judgements = _judgements(tables, judged)
+    judgements = _judgements(tables, judged, len(asked))
     told = _told(tables, judged, moment)
     turns = next_turns(tables, [(rule.subject, answer) for rule, answer in judged], moment)
+    turns = _with_networks(turns, tables)
+    read = _read_of_networks(tables)
     row_of = np.full(len(rooms), UNKNOWN)
     row_of[tables.sound] = np.arange(tables.sound.size)
     return tuple(
-        _assessment(told, room, position, int(row), judgements[position], turns[position], at)
-        for position, (room, row) in enumerate(zip(rooms, row_of, strict=True))
+        _assessment(
+            told,
+            room,
+            position,
+            int(row),
+            judgements[position],
+            turns[position],
+            read.get(int(row), set()),
+            at,
+        )
+        for position, (room, row) in enumerate(zip(asked, row_of[: len(asked)], strict=True))
     )
 
 
@@ -66,8 +85,13 @@ def _judged(
 
 
 def _told(tables: Tables, judged: Sequence[tuple[Rule, Judged]], moment: np.datetime64) -> Told:
-    bare = cases_of(without_margins(tables.cases.table.given), moment)
-    return Told(tables=tables, without=with_boost(bare, moment), leading=_leading(tables, judged))
+    bare = with_boost(cases_of(without_margins(tables.cases.table.given), moment), moment)
+    return Told(
+        tables=tables,
+        without=bare,
+        incoming_without=same_incoming(bare, tables.networks, tables.came),
+        leading=_leading(tables, judged),
+    )
 
 
 def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) -> Tables:
@@ -75,6 +99,8 @@ def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) ->
     cases = evaluate(table, moment)
     assumed = assumptions(table)
     sound = _sound(table)
+    found = networks(rooms, sound, table.given, table.conditions, table.air, np.unique(table.room))
+    came = incoming(table, found)
     return Tables(
         rooms=rooms,
         failed=table.failed,
@@ -83,6 +109,10 @@ def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) ->
         assumed=assumed,
         decides=deciding(cases, assumed, moment),
         records=case_records(rooms, sound, table),
+        networks=found,
+        came=came,
+        incoming=evaluate_incoming(came, cases, moment),
+        incoming_records=case_records(rooms, sound, came.table),
     )
 
 
@@ -91,35 +121,55 @@ def _sound(table: CaseTable) -> Integers:
     return np.array(sound, dtype=np.int64)
 
 
-def _leading(tables: Tables, judged: Sequence[tuple[Rule, Judged]]) -> Integers:
-    """Row of the case that each room's standing rests on, by judging 5; -1 where it has none.
+def _leading(tables: Tables, judged: Sequence[tuple[Rule, Judged]]) -> Leading:
+    """The case that each room's standing rests on, by judging 5.
 
     It is the case of the worst judgement; where that is about no case, the one nearest to a mark.
+    One of the room itself goes before one of another room that is as bad.
     """
-    table, severity = tables.cases.table, tables.cases.severity
     worst = np.full(len(tables.rooms), UNKNOWN)
-    of_cases = np.zeros(table.size, dtype=np.bool_)
     for rule, answer in judged:
         np.maximum.at(
             worst,
             rooms_of(tables, rule.subject)[answer.broken],
             answer.consequence[answer.broken],
         )
-        if rule.subject is Subject.CASES:
-            of_cases |= answer.broken
-    sets_it = of_cases & (severity == worst[tables.sound][table.room])
+    own, own_rank = _nearest(tables.cases, worst[tables.sound], _broken(judged, Subject.CASES))
+    came, came_rank = _nearest(
+        tables.incoming, worst[tables.sound], _broken(judged, Subject.INCOMING)
+    )
+    return Leading(own=own, incoming=np.where(came_rank > own_rank, came, UNKNOWN))
+
+
+def _broken(judged: Sequence[tuple[Rule, Judged]], subject: Subject) -> Mask:
+    """Cases that any rule finds beyond a mark."""
+    found = [answer.broken for rule, answer in judged if rule.subject is subject]
+    broken: Mask = np.logical_or.reduce(found)
+    return broken
+
+
+def _nearest(cases: Evaluation, worst: Integers, broken: Mask) -> tuple[Integers, Floats]:
+    """Row of the case that leads in each room, and how it ranks; -1 where there is none."""
+    table, near = cases.table, cases.results.nearness
+    sets_it = broken & (cases.severity == worst[table.room])
     rank = np.where(table.counts, np.where(sets_it, 1, 0), UNKNOWN)
-    return nearest(table, tables.cases.results, rank)
+    found = nearest(table, cases.results, rank)
+    there = found != UNKNOWN
+    ranks = np.full(found.size, -np.inf)
+    # A case that sets the standing goes before all that do not, however near these are.
+    beyond = float(np.abs(near).max(initial=0.0)) + 1.0
+    ranks[there] = np.where(rank[found[there]] == 1, beyond, near[found[there]])
+    return found, ranks
 
 
 def _judgements(
-    tables: Tables, judged: Sequence[tuple[Rule, Judged]]
+    tables: Tables, judged: Sequence[tuple[Rule, Judged]], asked: int
 ) -> tuple[tuple[Judgement, ...], ...]:
-    by_room: list[list[Judgement]] = [[] for _ in tables.rooms]
+    by_room: list[list[Judgement]] = [[] for _ in range(asked)]
     for rule, answer in judged:
         positions = rooms_of(tables, rule.subject)
         subjects: dict[tuple[int, Reference], list[int]] = {}
-        for row in np.flatnonzero(answer.broken):
+        for row in np.flatnonzero(answer.broken & (positions < asked)):
             subject = record_of(tables, rule.subject, int(row))
             subjects.setdefault((int(positions[row]), subject), []).append(int(row))
         for (position, subject), rows in subjects.items():
@@ -178,6 +228,7 @@ def _assessment(
     row: int,
     judgements: tuple[Judgement, ...],
     turn: np.datetime64,
+    read: set[Reference],
     at: datetime,
 ) -> Assessment:
     sound = row != UNKNOWN
@@ -188,9 +239,11 @@ def _assessment(
         at=at,
         method_version=METHOD_VERSION,
         failed=told.tables.failed[position],
-        read=records_read(room),
+        read=tuple(sorted(records_read(room) | read)),
         assumed=told.assumed(row) if sound else (),
         cases=told.cases(row) if sound else (),
+        incoming=told.incoming(row) if sound else (),
+        network=told.network(row) if sound else None,
         deciding=told.deciding(row) if sound else None,
         ventilation=told.ventilation(row) if sound else None,
         figures=told.figures(row) if sound else {},
@@ -199,8 +252,8 @@ def _assessment(
     )
 
 
-def records_read(room: RoomValues) -> tuple[Reference, ...]:
-    """Every record, in its revision, that the assessment of a room rests on."""
+def records_read(room: RoomValues) -> frozenset[Reference]:
+    """Every record, in its revision, that is read of a room and what stands in it."""
     read = {room.record, room.site, room.basis.record, *room.basis.derived_from}
     if room.purge_fluid is not None:
         read.add(room.purge_fluid.record)
@@ -209,7 +262,37 @@ def records_read(room: RoomValues) -> tuple[Reference, ...]:
     read |= {unit.record for unit in room.units}
     read |= {detector.record for detector in room.detectors}
     read |= {control.record for control in room.controls}
-    return tuple(sorted(read))
+    read |= {opening.record for opening in room.openings}
+    for line in room.lines:
+        read |= {line.record, line.fluid.record}
+        if line.source is not None:
+            read |= {line.source.record, line.source.fluid.record}
+    return frozenset(read)
+
+
+def _read_of_networks(tables: Tables) -> dict[int, set[Reference]]:
+    """What is read of other rooms, by row: of those that gas comes from, and on its way."""
+    read: dict[int, set[Reference]] = {}
+    for network in range(tables.networks.count):
+        rows = [row for row in tables.networks.rooms[network].tolist() if row != NO_ROOM]
+        on_the_way = set(records_read(tables.room(rows[0])))
+        for row in rows:
+            room = tables.room(row)
+            on_the_way |= {room.record, *(unit.record for unit in room.units)}
+            on_the_way |= {opening.record for opening in room.openings}
+        for row in rows:
+            read.setdefault(row, set()).update(on_the_way)
+    return read
+
+
+def _with_networks(turns: Moments, tables: Tables) -> Moments:
+    """Moments at which anything of the networks that a room stands in can change by itself."""
+    earliest = turns.copy()
+    for network in range(tables.networks.count):
+        rows = tables.networks.rooms[network]
+        positions = tables.sound[rows[rows != NO_ROOM]]
+        earliest[positions] = np.fmin(earliest[positions], np.fmin.reduce(turns[positions]))
+    return earliest
 
 
 def _aware(moment: np.datetime64) -> datetime | None:

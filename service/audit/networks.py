@@ -11,7 +11,7 @@ import numpy as np
 from service.audit.air import AIRFLOWS, LOST, Air, unknown_outdoor_share
 from service.audit.columns import ARRANGEMENTS, Columns
 from service.audit.conditions import Conditions, known
-from service.audit.inputs import OpeningValues, Reference, RoomValues
+from service.audit.inputs import OpeningValues, Reference, RoomValues, UnitValues
 from service.physics.arrays import Floats, Integers, Mask
 from service.physics.networks import door_exchange
 
@@ -60,7 +60,7 @@ class Cut:
 
     record: Reference
     room: Reference
-    beyond: str  # tag of the room that is left out
+    beyond: str  # id of the room that is left out
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,7 +115,8 @@ def networks(
             reached = _reached(edges, names, source, steps[source])
             if len(reached) > 1:
                 found.append(_Found(source, reached))
-    return _joined(found, joins, shared, names, edges)
+    in_rows = [rooms[position] for position in sound.tolist()]
+    return _joined(found, joins, shared, in_rows)
 
 
 def rooms_joined(room: RoomValues) -> frozenset[str]:
@@ -281,8 +282,7 @@ def _joined(
     found: Sequence[_Found],
     joins: Sequence[Join],
     shared: Sequence[SharedUnit],
-    names: Sequence[Reference],
-    edges: Mapping[int, Sequence[_Edge]],
+    rooms_of: Sequence[RoomValues],
 ) -> Networks:
     count, most = len(found), max((len(each.reached) for each in found), default=1)
     place_of = [{room: place for place, room in enumerate(each.reached)} for each in found]
@@ -324,7 +324,7 @@ def _joined(
         steps=steps,
         by=tuple(tuple(by for _, by in each.reached.values()) for each in found),
         assumed=tuple(assumed),
-        cut=tuple(tuple(_cuts(places, names, edges)) for places in place_of),
+        cut=tuple(tuple(_cuts(places, rooms_of)) for places in place_of),
     )
 
 
@@ -360,9 +360,7 @@ def _lay(join: Join, places: Mapping[int, int], exchange: Floats, passing: Float
     passing[there, here] += max(-join.inflow, 0.0)
 
 
-def _ways(
-    joins: Sequence[Join], places: Mapping[int, int], steps: Integers
-) -> tuple[Floats, Mask]:
+def _ways(joins: Sequence[Join], places: Mapping[int, int], steps: Integers) -> tuple[Floats, Mask]:
     """How what is pushed out of a room is shared by its open ways, further off or outdoors."""
     most = steps.size
     areas, outdoors = np.zeros((most, most)), np.zeros(most)
@@ -380,11 +378,20 @@ def _ways(
     return split, whole > 0.0
 
 
-def _cuts(
-    places: Mapping[int, int], names: Sequence[Reference], edges: Mapping[int, Sequence[_Edge]]
-) -> Iterator[Cut]:
+def _cuts(places: Mapping[int, int], rooms: Sequence[RoomValues]) -> Iterator[Cut]:
     """Ways on which air passes out of a network that goes no further."""
-    for room in places:
-        for edge in edges.get(room, ()):
-            if edge.there not in places:
-                yield Cut(edge.record, names[room], names[edge.there].tag)
+    inside = {rooms[row].record.id for row in places}
+    for row in places:
+        room = rooms[row]
+        for opening in room.openings:
+            beyond = opening.other_room_id
+            if beyond is not None and beyond not in inside and _passes(opening):
+                yield Cut(opening.record, room.record, beyond)
+        for unit in room.units:
+            if _may_recirculate(unit):
+                for beyond in sorted(set(unit.serves) - inside):
+                    yield Cut(unit.record, room.record, beyond)
+
+
+def _may_recirculate(unit: UnitValues) -> bool:
+    return unit.arrangement != "exhaust" and unit.outdoor_air_fraction != 1.0

@@ -139,7 +139,9 @@ def safeguards(table: CaseTable, results: Results, at: np.datetime64) -> Safegua
     has_low = _any(warns & found.is_low[detector], case, table.size)
     has_high = _any(warns & found.is_high[detector], case, table.size)
     # What is seen and heard is a warning from the start, before any alarm.
-    warned = np.where(_NOTICED[table.release] & ~table.at_once, 0.0, first)
+    # In another room nobody sees what lets the gas go.
+    noticed = _NOTICED[table.release] & (table.network == table.room)
+    warned = np.where(noticed & ~table.at_once, 0.0, first)
     out = warned + out_after
     return Safeguards(
         detectors=found,

@@ -38,10 +38,10 @@ def case_severity(table: CaseTable, results: Results, guards: Safeguards) -> Int
     row = np.where(guards.late & (results.mark > 0), 3, results.mark)
     column = np.where(by_itself, 0, _column(table, guards))
     by_table = table.given.bases.severity[table.room, np.maximum(row - 1, 0), column]
-    lower = (table.airflow == AIRFLOWS.index(LOST)) & _told_of_loss(table)[table.room]
+    lower = (table.airflow == AIRFLOWS.index(LOST)) & _told_of_loss(table)[table.network]
     everything = table.release == _SLUGS.index(ALL_VESSELS)
     by_table = np.where(lower | everything, np.maximum(by_table - 1, OBSERVATION), by_table)
-    unlikely = everything & ~_may_all_go(table)[table.room]
+    unlikely = everything & ~_may_all_go(table)[table.network]
     by_table = np.where(unlikely, OBSERVATION, by_table)
     least = np.where(by_itself, _WITHOUT_ACCIDENT[results.mark], NONE)
     severity = np.maximum(by_table, least)

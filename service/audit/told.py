@@ -9,14 +9,16 @@ from typing import Final
 import numpy as np
 
 from service.audit.air import AIRFLOWS, AS_MEASURED
-from service.audit.assessment import Assumed, Case, Ventilation
+from service.audit.assessment import Assumed, Case, Network, Ventilation
 from service.audit.assumptions import ASSUMPTIONS
 from service.audit.cases import CaseTable
+from service.audit.incoming import Incoming
 from service.audit.releases import RELEASES
 from service.audit.rules.rule import Tables, assumed_record
 from service.audit.rules.words import number
 from service.audit.solve import solve
 from service.audit.told_cases import told_cases
+from service.audit.told_networks import told_incoming, told_network
 from service.physics.arrays import Floats, Integers, Mask, rounded, sum_by_group
 from service.physics.constants import SECONDS_PER_HOUR, ZERO_CELSIUS
 
@@ -26,13 +28,24 @@ _KILOPASCAL: Final = 1000.0  # [Pa]
 
 
 @dataclass(frozen=True, slots=True)
+class Leading:
+    """The case that each room's standing rests on: of the room itself, or of another; else -1."""
+
+    own: Integers
+    incoming: Integers  # goes before the room's own where there is one
+
+
+@dataclass(frozen=True, slots=True)
 class Told:
     """Evaluated rooms, and how to tell one of them by its row of the columns."""
 
     tables: Tables
     without: CaseTable  # the same cases with every stacked factor at 1
-    leading: Integers  # row of the case that each room's standing rests on
+    incoming_without: Incoming
+    leading: Leading
     _all_cases: Sequence[Case] = field(init=False)  # by row, whether shown or not
+    _all_incoming: Sequence[Case] = field(init=False)
+    _incoming: tuple[Integers, ...] = field(init=False)
     _cases: tuple[Integers, ...] = field(init=False)  # rows shown, by room
     _assumed: tuple[Integers, ...] = field(init=False)
     _ventilation: Mapping[str, Floats] = field(init=False)
@@ -42,7 +55,9 @@ class Told:
         """Lay out once what every room is told from."""
         for name, value in (
             ("_all_cases", told_cases(self.tables, self.without, solve(self.without))),
+            ("_all_incoming", told_incoming(self.tables, self.incoming_without)),
             ("_cases", _rows_by_room(self.tables)),
+            ("_incoming", _rows_by_room(self.tables.beside())),
             ("_assumed", _by_room(self.tables.assumed.room, self.tables)),
             ("_ventilation", _ventilation(self.tables)),
             ("_figures", _figures(self.tables)),
@@ -57,10 +72,21 @@ class Told:
         """The cases of a room, in the order of releases, the largest first."""
         return tuple(self._all_cases[case] for case in self.rows(row).tolist())
 
+    def incoming(self, row: int) -> tuple[Case, ...]:
+        """The cases of other rooms as their gas comes to a room."""
+        return tuple(self._all_incoming[case] for case in self._incoming[row].tolist())
+
     def deciding(self, row: int) -> int | None:
-        """Place of the case that the standing rests on."""
-        found = np.flatnonzero(self._cases[row] == self.leading[row])
+        """Place of the case that the standing rests on, among its own and then what came."""
+        came = np.flatnonzero(self._incoming[row] == self.leading.incoming[row])
+        if came.size:
+            return int(self._cases[row].size + came[0])
+        found = np.flatnonzero(self._cases[row] == self.leading.own[row])
         return int(found[0]) if found.size else None
+
+    def network(self, row: int) -> Network | None:
+        """Where the gas of a room can go."""
+        return told_network(self.tables, row)
 
     def assumed(self, row: int) -> tuple[Assumed, ...]:
         """What was assumed of a room and what stands in it."""

@@ -19,6 +19,7 @@ from service.audit.assessment import (
     Case,
     Judgement,
     Mark,
+    Network,
     Ventilation,
 )
 from service.audit.findings import counts
@@ -108,7 +109,7 @@ def status_bytes(assessed: Assessed, position: int) -> bytes:
 def _worst(assessment: Assessment) -> dict[str, Any] | None:
     if assessment.deciding is None:
         return None
-    return _brief(assessment.cases[assessment.deciding])
+    return _brief((*assessment.cases, *assessment.incoming)[assessment.deciding])
 
 
 def _brief(case: Case) -> dict[str, Any]:
@@ -116,18 +117,20 @@ def _brief(case: Case) -> dict[str, Any]:
     brief["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
     brief["fluids"] = list(case.fluids)
     brief["vessel_ids"] = [vessel.id for vessel in case.vessels]
+    brief["from_room"] = None if case.from_room is None else plain(case.from_room)
     return brief
 
 
 def _highest_oxygen(assessment: Assessment) -> dict[str, Any] | None:
-    rich = [case for case in assessment.cases if case.hazard == "oxygen-high" and case.counts]
+    cases = (*assessment.cases, *assessment.incoming)
+    rich = [case for case in cases if case.hazard == "oxygen-high" and case.counts]
     return _brief(max(rich, key=lambda case: case.oxygen_pct)) if rich else None
 
 
 def _peaks(assessment: Assessment) -> list[dict[str, Any]]:
     """Tell the worst case that counts of each toxic gas, and of what can burn."""
     worst: dict[str, Case] = {}
-    for case in assessment.cases:
+    for case in (*assessment.cases, *assessment.incoming):
         if case.counts and case.hazard in _ABOUT_GAS:
             first = worst.setdefault(case.gas, case)
             worst[case.gas] = max(first, case, key=_severity_of_peak)
@@ -242,10 +245,14 @@ def results_document(assessment: Assessment) -> bytes:
         {
             "figures": dict(assessment.figures),
             "cases": [case_document(case) for case in assessment.cases],
+            "incoming": [case_document(case) for case in assessment.incoming],
+            "network": _network_document(assessment.network),
             "judgements": [_judgement_document(judged) for judged in assessment.judgements],
             "deciding": assessment.deciding,
             "failed": assessment.failed,
-            "methods": sorted({slug for case in assessment.cases for slug in case.method}),
+            "methods": sorted(
+                {slug for case in (*assessment.cases, *assessment.incoming) for slug in case.method}
+            ),
         }
     )
 
@@ -263,7 +270,32 @@ def case_document(case: Case) -> dict[str, Any]:
     document["marks"] = [_mark_document(mark) for mark in case.marks]
     document["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
     document["without_margins"] = dict(case.without_margins)
+    document["from_room"] = None if case.from_room is None else plain(case.from_room)
     return document
+
+
+def _network_document(network: Network | None) -> dict[str, Any] | None:
+    """Write down where the gas of a room can go, and what was assumed of the way."""
+    if network is None:
+        return None
+    return {
+        "rooms": [
+            {
+                "room": plain(reached.room),
+                "steps": reached.steps,
+                "through": plain(reached.through),
+            }
+            for reached in network.rooms
+        ],
+        "cut": [
+            {"through": plain(through), "room": plain(room), "beyond_room_id": beyond}
+            for through, room, beyond in network.cut
+        ],
+        "assumed": [
+            {"opening": plain(opening), "fields": list(fields), "exchange_flow_m3_h": flow}
+            for opening, fields, flow in network.assumed
+        ],
+    }
 
 
 def _mark_document(mark: Mark) -> dict[str, Any]:
@@ -297,6 +329,8 @@ def assessment_answer(
             "assumed": inputs["assumed"],
             "figures": results["figures"],
             "cases": results["cases"],
+            "incoming": results.get("incoming", []),
+            "network": results.get("network"),
             "methods": results["methods"],
             "findings": [finding_answer(finding) for finding in findings],
             "cautions": CAUTIONS,

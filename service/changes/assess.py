@@ -5,15 +5,19 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from datetime import datetime
+from types import MappingProxyType
+from typing import Final
 
 from service.audit.assessment import Assessment
 from service.audit.findings import Finding, clear, reconcile, standing
 from service.audit.inputs import RoomValues
 from service.audit.judge import assess_rooms
 from service.changes.apply import Applied
-from service.changes.neighbourhood import Neighbourhood
+from service.changes.neighbourhood import Neighbourhood, ReadRecord
 from service.changes.room_values import values_of_rooms
 from service.store.records import Record
+
+_NOTHING_READ: Final[Mapping[str, frozenset[ReadRecord]]] = MappingProxyType({})
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,7 +36,7 @@ class Assessed:
         """Give the lowest oxygen of the cases that count; none for an empty room."""
         lowest = [
             case.oxygen_pct
-            for case in self.assessment.cases
+            for case in (*self.assessment.cases, *self.assessment.incoming)
             if case.counts and case.hazard == "oxygen-low"
         ]
         return min(lowest, default=None)
@@ -46,20 +50,32 @@ def assess(
     at: datetime,
     positions: Mapping[str, int],
     new_id: Callable[[], str],
+    around: frozenset[str] = frozenset(),
+    last_read: Mapping[str, frozenset[ReadRecord]] = _NOTHING_READ,
 ) -> tuple[Assessed, ...]:
     """Assess rooms at a moment and match the outcome with earlier findings.
 
-    ``positions`` are the positions that the sites' changes will have.
+    ``positions`` are the positions that the sites' changes will have. Rooms of ``around`` are
+    there for the gas between rooms; of these the ones in ``last_read`` are assessed as well, where
+    they now rest on other records than those they were last assessed from.
     """
-    rooms = values_of_rooms(records, room_ids)
-    if not rooms:
+    asked = frozenset(room_ids)
+    if not asked:
         return ()
+    joined = last_read.keys() - asked
+    rooms = values_of_rooms(records, asked | joined)
+    beside = values_of_rooms(records, around - asked - joined)
     return tuple(
         _matched(
             room, assessment, findings.get(room.record.id, ()), at, positions[room.site.id], new_id
         )
-        for room, assessment in zip(rooms, assess_rooms(rooms, at=at), strict=True)
+        for room, assessment in zip(rooms, assess_rooms(rooms, at=at, beside=beside), strict=True)
+        if room.record.id in asked or _read(assessment) != last_read[room.record.id]
     )
+
+
+def _read(assessment: Assessment) -> frozenset[ReadRecord]:
+    return frozenset((record.id, record.revision) for record in assessment.read)
 
 
 def findings_of_gone(

@@ -7,10 +7,14 @@ from dataclasses import dataclass, field
 from datetime import datetime
 from typing import Any, Final
 
+import orjson
+
 from service.audit.findings import Finding
 from service.changes.kinds import KINDS, blank_fields, rooms_reached
 from service.changes.requested import CHANGE, CREATE, REMOVE, Placed
 from service.store.findings import findings_of_rooms
+from service.store.history import assessments_now
+from service.store.joined import rooms_joined_to
 from service.store.live import (
     controls_of_vessels,
     equipment_of,
@@ -33,6 +37,8 @@ from service.store.tables.ventilation_units import MANUAL
 OXYGEN: Final = "oxygen"
 
 TagKey = tuple[str, str | None, str]
+ReadRecord = tuple[str, int]  # id and revision
+_STEPS: Final = "neighbour_steps"
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,6 +64,10 @@ class Neighbourhood:
     far_rooms: Mapping[str, frozenset[str]] = field(default_factory=dict)
     #: Sites whose rooms are too many to be computed with the change.
     left_to_sweep: frozenset[str] = frozenset()
+    #: Rooms that gas may come from, or go on to: what is assessed cannot do without them.
+    around: frozenset[str] = frozenset()
+    #: Of these the ones that a change may reach, each with the records it was last assessed from.
+    joined: Mapping[str, frozenset[ReadRecord]] = field(default_factory=dict)
     prior: Mapping[str, Prior] = field(default_factory=dict)
     findings: Mapping[str, tuple[Finding, ...]] = field(default_factory=dict)
 
@@ -80,6 +90,13 @@ def neighbourhood(session: WriteSession, places: Sequence[Placed]) -> Neighbourh
     loader.take_present(places)
     reached, far, sweep = loader.rooms_of(places)
     loader.take_rooms(reached)
+    steps = loader.most_steps()
+    joined = loader.joined_to(reached, 2 * steps)
+    around = joined | loader.joined_to(reached | joined, 2 * steps)
+    if len(reached | joined) > session.rooms_per_change:
+        sweep |= frozenset(place.site_id for place in places if place.site_id is not None)
+        reached = joined = around = frozenset()
+    loader.take_rooms(around)
     return Neighbourhood(
         moment=session.moment,
         records=loader.records,
@@ -89,9 +106,11 @@ def neighbourhood(session: WriteSession, places: Sequence[Placed]) -> Neighbourh
         referrers=loader.referrers,
         far_rooms=far,
         left_to_sweep=sweep,
-        prior=loader.prior_of(reached),
+        around=around,
+        joined=loader.last_read(joined),
+        prior=loader.prior_of(reached | joined),
         # Of rooms that go as well, even where the rest is left to the sweep: it would miss them.
-        findings=loader.findings_of(reached | _removed_rooms(places)),
+        findings=loader.findings_of(reached | joined | _removed_rooms(places)),
     )
 
 
@@ -108,6 +127,8 @@ def rooms_alone(session: WriteSession, room_ids: Iterable[str]) -> Neighbourhood
     loader = _Loader(session)
     wanted = frozenset(room_ids)
     loader.take_rooms(wanted)
+    around = loader.joined_to(wanted, 2 * loader.most_steps())
+    loader.take_rooms(around)
     return Neighbourhood(
         moment=session.moment,
         records=loader.records,
@@ -115,6 +136,7 @@ def rooms_alone(session: WriteSession, room_ids: Iterable[str]) -> Neighbourhood
         tags_taken={},
         external_ids_taken={},
         referrers={},
+        around=around,
         prior=loader.prior_of(wanted),
         findings=loader.findings_of(wanted),
     )
@@ -270,6 +292,30 @@ class _Loader:
         self._take("fluid", self._ids_in("vessel", "fluid_id"))
         self._take("fluid", self._ids_in("room", "purge_fluid_id"))
 
+    def most_steps(self) -> int:
+        """How many steps a network goes at most, by the bases of the sites that were loaded."""
+        bases = [record for record in self.records.values() if record.kind == "basis"]
+        return max((_steps(self.records, basis) for basis in bases), default=0)
+
+    def joined_to(self, room_ids: frozenset[str], steps: int) -> frozenset[str]:
+        """Name the rooms that stand within some steps of rooms, these left out."""
+        found: set[str] = set(room_ids)
+        newest = set(room_ids)
+        for _ in range(steps):
+            if not newest:
+                break
+            newest = rooms_joined_to(EVERYTHING, self._session.connection, newest) - found
+            found |= newest
+        return frozenset(found - room_ids)
+
+    def last_read(self, room_ids: frozenset[str]) -> dict[str, frozenset[ReadRecord]]:
+        """Read which records rooms were last assessed from; nothing of one never assessed."""
+        read: dict[str, frozenset[ReadRecord]] = dict.fromkeys(room_ids, frozenset())
+        for one in assessments_now(EVERYTHING, self._session.connection, sorted(room_ids)):
+            lines = orjson.loads(one.inputs)["read"]
+            read[one.room_id] = frozenset((line["id"], line["revision"]) for line in lines)
+        return read
+
     def _ids_in(self, kind: str, name: str) -> set[str]:
         return {
             record.fields[name]
@@ -304,6 +350,13 @@ class _Loader:
         for row in findings_of_rooms(EVERYTHING, connection, sorted(room_ids)):
             found.setdefault(row["room_id"], []).append(Finding(**row))
         return {room_id: tuple(findings) for room_id, findings in found.items()}
+
+
+def _steps(records: Mapping[str, Record], basis: Record) -> int:
+    origin = records.get(basis.fields["derived_from_id"] or "")
+    own = (basis.fields["values"] or {}).get(_STEPS)
+    copied = None if origin is None else (origin.fields["values"] or {}).get(_STEPS)
+    return int(next(steps for steps in (own, copied, 0) if steps is not None))
 
 
 def _said(place: Placed) -> frozenset[str]:

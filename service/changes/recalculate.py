@@ -37,6 +37,7 @@ def recalculate(session: WriteSession, room_ids: Sequence[str], *, operation: st
         at=session.moment,
         positions=next_positions(heads),
         new_id=partial(new_record_id, session.moment),
+        around=before.around,
     )
     replace(session, heads, Outcome(operation, (), assessed, before.prior))
     return len(assessed)

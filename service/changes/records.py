@@ -5,9 +5,9 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import partial
-from typing import Any
+from typing import Any, Final
 
-from service.changes.apply import Pair, applied
+from service.changes.apply import Applied, Pair, applied
 from service.changes.assess import assess, findings_of_gone
 from service.changes.neighbourhood import neighbourhood
 from service.changes.replace import Effect, Outcome, next_positions, replace
@@ -25,6 +25,9 @@ from service.store.ids import new_record_id
 from service.store.live import get_record, record_by_external_id, record_by_tag
 from service.store.records import Record
 from service.store.session import WriteSession
+
+#: Kinds of record that say nothing of what passes from room to room.
+_FELT_HERE: Final = frozenset({"detector", "control"})
 
 
 @dataclass(frozen=True, slots=True)
@@ -114,6 +117,8 @@ def carry_out(
         at=session.moment,
         positions=next_positions(heads),
         new_id=partial(new_record_id, session.moment),
+        around=before.around,
+        last_read=before.joined if _passes_on(after) else {},
     )
     cleared = findings_of_gone(after, before, at=session.moment, positions=next_positions(heads))
     outcome = Outcome(operation, after.pairs, assessed, before.prior, left_to_sweep, cleared)
@@ -128,6 +133,11 @@ def carry_out(
         for place, pair in zip(places, after.pairs, strict=True)
     )
     return WrittenTogether(items, positions, effects, recalculating)
+
+
+def _passes_on(after: Applied) -> bool:
+    """Tell whether a change can be felt in other rooms than those it is made in."""
+    return any(pair.changed and pair.record.kind not in _FELT_HERE for pair in after.pairs)
 
 
 def _one(session: WriteSession, change: RecordChange) -> Written:

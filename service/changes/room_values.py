@@ -225,6 +225,7 @@ def _unit_values(unit: Record, room_id: str, zone: str) -> UnitValues:
         boost_flow=_scaled(fields["boost_flow_m3_h"], 1.0 / HOUR),
         boost_trigger=fields["boost_trigger"],
         terminal_height=fields["terminal_height"],
+        serves=tuple(sorted(served["room_id"] for served in fields["serves"])),
         outages=_outages(fields["outages"]),
     )
 

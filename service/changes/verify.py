@@ -208,11 +208,13 @@ class _Walk:
         except VersionMissing as missing:
             self._fault(position, str(missing))
             return
-        room_ids = [one.room_id for one in ours]
+        room_ids = {one.room_id for one in ours}
         values = values_of_rooms(records, room_ids)
+        others = {record.id for record in records.values() if record.kind == "room"} - room_ids
+        beside = values_of_rooms(records, others)
         for one, again in zip(
             sorted(ours, key=lambda one: one.room_id),
-            assess_rooms(values, at=ours[0].assessed_at),
+            assess_rooms(values, at=ours[0].assessed_at, beside=beside),
             strict=True,
         ):
             self._report.recomputed += 1

@@ -8,6 +8,7 @@ from typing import Final
 
 from service.audit.assessment import SEVERITIES
 from service.audit.rules.case_rules import CaseRule
+from service.audit.rules.neighbours import NeighbourRule
 from service.audit.rules.registry import RULES
 from service.audit.rules.rule import Rule, family
 
@@ -109,13 +110,16 @@ def _described(rules: list[Rule]) -> Described:
 
 
 def _looks_for(rule: Rule) -> str:
+    if isinstance(rule, NeighbourRule):
+        told = f"{_RELEASES[rule.case.release]} {_HAZARDS[family(rule.case)]}"
+        return f"In another room: {told[0].lower()}{told[1:]} in this one."
     if isinstance(rule, CaseRule):
         return f"{_RELEASES[rule.release]} {_HAZARDS[family(rule)]}."
     return _RECORDS[rule.slug]
 
 
 def _severity(rule: Rule) -> str:
-    if isinstance(rule, CaseRule):
+    if isinstance(rule, CaseRule | NeighbourRule):
         return BY_TABLE
     consequence = getattr(rule, "consequence", None)
     return SEVERITIES[consequence] if isinstance(consequence, int) else GRADED

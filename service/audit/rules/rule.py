@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import StrEnum
 from typing import Any, Final, Protocol
 
@@ -12,7 +12,9 @@ import numpy as np
 from service.audit.assumptions import ASSUMPTIONS, Assumptions
 from service.audit.columns import Moments
 from service.audit.evaluation import Evaluation
+from service.audit.incoming import Incoming
 from service.audit.inputs import Reference, RoomValues
+from service.audit.networks import Networks
 from service.audit.rules.case_records import CaseRecords
 from service.physics.arrays import Floats, Integers, Mask
 
@@ -21,6 +23,7 @@ class Subject(StrEnum):
     """Which table a rule judges, row by row."""
 
     CASES = "cases"
+    INCOMING = "incoming"  # cases of other rooms, in the room that their gas comes to
     ROOMS = "rooms"
     DETECTORS = "detectors"
     VESSELS = "vessels"
@@ -68,6 +71,14 @@ class Tables:
     assumed: Assumptions
     decides: Mask  # by assumption
     records: CaseRecords
+    networks: Networks
+    came: Incoming
+    incoming: Evaluation  # of the cases that came
+    incoming_records: CaseRecords
+
+    def beside(self) -> Tables:
+        """The same with the cases that came from other rooms in place of the rooms' own."""
+        return replace(self, cases=self.incoming, records=self.incoming_records)
 
     def room(self, row: int) -> RoomValues:
         """The room of a row of the columns."""
@@ -121,6 +132,7 @@ def rooms_of(tables: Tables, subject: Subject) -> Integers:
     given = table.given
     rows = {
         Subject.CASES: table.room,
+        Subject.INCOMING: tables.incoming.table.room,
         Subject.ROOMS: np.arange(given.count),
         Subject.DETECTORS: given.detectors.room,
         Subject.VESSELS: given.vessels.room,
@@ -139,6 +151,8 @@ def record_of(tables: Tables, subject: Subject, row: int) -> Reference:
         return tables.rooms[row].record
     if subject in _EQUIPMENT:
         return _EQUIPMENT[subject](tables, row)
+    if subject is Subject.INCOMING:
+        return tables.room(int(tables.incoming.table.room[row])).record
     return tables.room(int(table.room[row]) if subject is Subject.CASES else row).record
 
 
