@@ -9,6 +9,7 @@ from service.physics.arrays import Floats, Integers, non_negative, positive, quo
 from service.physics.constants import GRAVITY
 from service.physics.course import Course
 from service.physics.errors import OutOfRange
+from service.physics.relaxation import SMALLEST
 
 # Steps that each doubling of time is cut into, and how often the step with the peak is halved:
 # a peak is then placed to a part in thirty thousand of its time, and its height to 1e-9.
@@ -356,8 +357,12 @@ def _segment(matrix: Floats, length: Floats, start: Floats) -> _Run:
 
 
 def _carried(exponential: Floats, state: Floats) -> Floats:
-    carried: Floats = np.matmul(exponential, state[..., np.newaxis])[..., 0]
-    return carried
+    return _without_traces(np.matmul(exponential, state[..., np.newaxis])[..., 0])
+
+
+def _without_traces(values: Floats) -> Floats:
+    """Values with what is no molecule in any room as none, so that no product underflows."""
+    return np.where(values < SMALLEST, 0.0, values)
 
 
 def _exponentials(matrix: Floats, length: Floats, most: int) -> list[Floats]:
@@ -373,7 +378,7 @@ def _exponentials(matrix: Floats, length: Floats, most: int) -> list[Floats]:
         _by_series(matrix, length * 2.0**-share, fastest) for share in range(most, squared - 1, -1)
     ]
     for _ in range(squared):
-        found.append(np.matmul(found[-1], found[-1]))
+        found.append(_without_traces(np.matmul(found[-1], found[-1])))
         found[-1][:, -1, -1] = 1.0
     return found[::-1]
 
@@ -386,7 +391,7 @@ def _by_series(matrix: Floats, step: Floats, fastest: Floats) -> Floats:
     total = np.broadcast_to(one, matrix.shape)
     for term in range(_TERMS, 0, -1):
         total = one + np.matmul(positive_part, total) / term
-    carried: Floats = np.exp(-turned) * total
+    carried = _without_traces(np.exp(-turned) * total)
     carried[:, -1, -1] = 1.0
     return carried
 
