@@ -58,6 +58,11 @@ def _room_of(fields: Fields) -> frozenset[str]:
     return frozenset() if room_id is None else frozenset({room_id})
 
 
+def _rooms_on_both_sides(fields: Fields) -> frozenset[str]:
+    sides = (fields.get("room_id"), fields.get("other_room_id"))
+    return frozenset(room_id for room_id in sides if room_id is not None)
+
+
 def _rooms_served(fields: Fields) -> frozenset[str]:
     return frozenset(served["room_id"] for served in fields.get("serves") or ())
 
@@ -93,12 +98,12 @@ KINDS: Final[Mapping[str, Kind]] = {
             defaults={"kind": "room", "state": "in-service"},
         ),
         Kind(
-            # It reaches no room yet: what passes through it is not computed.
             "opening",
             links=(
                 Link("room_id", "room", "room"),
                 Link("other_room_id", "other_room", "room"),
             ),
+            rooms=_rooms_on_both_sides,
             site_from=("room_id", "other_room_id"),
         ),
         Kind(

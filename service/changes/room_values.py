@@ -13,6 +13,7 @@ from service.audit.inputs import (
     ControlValues,
     DetectorValues,
     FluidValues,
+    OpeningValues,
     Outage,
     PitValues,
     Reference,
@@ -43,6 +44,7 @@ class _Placed:
     units: dict[str, list[Record]]
     detectors: dict[str, list[Record]]
     controls: dict[str, list[Record]]
+    openings: dict[str, list[Record]]
 
 
 def values_of_rooms(records: Mapping[str, Record], room_ids: Iterable[str]) -> list[RoomValues]:
@@ -56,7 +58,7 @@ def values_of_rooms(records: Mapping[str, Record], room_ids: Iterable[str]) -> l
 
 
 def _placed(records: Mapping[str, Record]) -> _Placed:
-    placed = _Placed({}, {}, {}, {})
+    placed = _Placed({}, {}, {}, {}, {})
     for record in sorted(records.values(), key=lambda record: record.id):
         if record.kind == "vessel" and record.fields["room_id"] is not None:
             placed.vessels.setdefault(record.fields["room_id"], []).append(record)
@@ -68,6 +70,9 @@ def _placed(records: Mapping[str, Record]) -> _Placed:
         elif record.kind == "control":
             for room_id in rooms_reached(record, records):
                 placed.controls.setdefault(room_id, []).append(record)
+        elif record.kind == "opening":
+            for room_id in sorted(rooms_reached(record, records)):
+                placed.openings.setdefault(room_id, []).append(record)
     return placed
 
 
@@ -109,6 +114,9 @@ def _room_values(records: Mapping[str, Record], placed: _Placed, room: Record) -
         ),
         controls=tuple(
             _control_values(control, zone) for control in placed.controls.get(room.id, ())
+        ),
+        openings=tuple(
+            _opening_values(opening, room.id) for opening in placed.openings.get(room.id, ())
         ),
         pit=_pit_values(fields["pit"]),
     )
@@ -263,6 +271,24 @@ def _control_values(control: Record, zone: str) -> ControlValues:
         area=fields["area_m2"],
         check_due=_due(fields["checked_on"], fields["check_every_days"], zone),
         checked=fields["checked_on"] is not None,
+    )
+
+
+def _opening_values(opening: Record, room_id: str) -> OpeningValues:
+    """Give an opening as the room sees it that stands on one of its sides."""
+    fields = opening.fields
+    is_here = fields["room_id"] == room_id
+    inflow = _scaled(fields["net_flow_m3_h"], 1.0 / HOUR)
+    return OpeningValues(
+        record=reference(opening),
+        kind=fields["kind"],
+        other_room_id=fields["other_room_id"] if is_here else fields["room_id"],
+        width=fields["width_m"],
+        height=fields["height_m"],
+        area=fields["area_m2"],
+        exchange_flow=_scaled(fields["exchange_flow_m3_h"], 1.0 / HOUR),
+        inflow=inflow if is_here or inflow is None else -inflow,
+        normally_open=fields["normally_open"],
     )
 
 

@@ -20,6 +20,7 @@ from sqlalchemy import (
     delete,
     func,
     insert,
+    or_,
     select,
     update,
 )
@@ -39,6 +40,7 @@ Changing = TypeVar("Changing", Update, Delete)
 _SHARED: Final = frozenset({"basis", "fluid"})
 _UNIT: Final = "ventilation-unit"
 _CONTROL: Final = "control"
+_OPENING: Final = "opening"
 
 
 class Referrer(NamedTuple):
@@ -137,7 +139,7 @@ def count_records(
 
 
 def equipment_of(scope: Scope, connection: Connection, room_ids: Iterable[str]) -> list[Record]:
-    """Return what stands in rooms, the units that serve them, and the controls of all that.
+    """Return what stands in rooms, what serves them and opens on them, and the controls of it.
 
     They are in the order of their kinds, then in record order.
     """
@@ -145,7 +147,7 @@ def equipment_of(scope: Scope, connection: Connection, room_ids: Iterable[str]) 
     # A unit that serves two of the rooms is found once for each.
     found = {
         record.id: record
-        for kind in (_UNIT, "vessel", "detector", _CONTROL)
+        for kind in (_UNIT, "vessel", "detector", _CONTROL, _OPENING)
         for record in _many(scope, connection, kind, _by_rooms(kind), rooms)
     }
     order = {kind: number for number, kind in enumerate(TABLES)}
@@ -356,6 +358,9 @@ def _by_rooms(kind: str) -> Select[*tuple[Any, ...]]:
         standing = select(vessels.c["id"]).where(vessels.c["room_id"].in_(_SOME))
         either = table.c["room_id"].in_(_SOME) | table.c["vessel_id"].in_(standing)
         return select(table).where(either)
+    if kind == _OPENING:
+        sides = (table.c["room_id"].in_(_SOME), table.c["other_room_id"].in_(_SOME))
+        return select(table).where(or_(*sides))
     if kind != _UNIT:
         return _naming(kind, "room_id")
     joined = table.join(serving, serving.c["unit_id"] == table.c["id"])
