@@ -42,3 +42,6 @@ ATMOSPHERE_EXPONENT: Final = (
 
 SECONDS_PER_HOUR: Final = 3600.0
 SECONDS_PER_DAY: Final = 86_400.0
+
+#: Radiation of a black body. [W/(m2 K4)]  SI (BIPM, 2019), CODATA 2018.
+STEFAN_BOLTZMANN: Final = 5.670_374_419e-8

@@ -143,6 +143,70 @@ _SOURCES: Final = (
         "from memory",
     ),
     Source(
+        "carslaw-jaeger",
+        "H. S. Carslaw and J. C. Jaeger, Conduction of heat in solids, 2nd edition, Oxford (1959)",
+        "from memory",
+    ),
+    Source(
+        "shaw-briscoe",
+        "P. Shaw and F. Briscoe, Evaporation from spills of hazardous liquids on land and water, "
+        "UKAEA Safety and Reliability Directorate, SRD R100 (1978)",
+        "from memory",
+    ),
+    Source(
+        "yellow-book",
+        "TNO, Methods for the calculation of physical effects, CPR 14E (the Yellow Book)",
+        "from memory",
+    ),
+    Source(
+        "api-520",
+        "API Standard 520, Sizing, selection and installation of pressure-relieving devices, part "
+        "1, with annex C on flashing liquids",
+        "from memory",
+    ),
+    Source(
+        "iso-9300",
+        "ISO 9300, Measurement of gas flow by means of critical flow nozzles",
+        "from memory",
+    ),
+    Source(
+        "lehmann-zahn",
+        "W. Lehmann and G. Zahn, Safety aspects for LHe cryostats and LHe transport containers, "
+        "ICEC 7 (1978), page 569",
+        "from memory",
+    ),
+    Source(
+        "iso-21013-3",
+        "ISO 21013-3:2016, Cryogenic vessels, pressure-relief accessories, sizing and capacity "
+        "determination",
+        "from memory",
+    ),
+    Source(
+        "churchill-chu",
+        "S. W. Churchill and H. H. S. Chu, Correlating equations for laminar and turbulent free "
+        "convection from a vertical plate, International Journal of Heat and Mass Transfer 18 "
+        "(1975)",
+        "from memory",
+    ),
+    Source(
+        "nusselt-film",
+        "W. Nusselt, Die Oberflächenkondensation des Wasserdampfes, Zeitschrift des VDI 60 (1916)",
+        "from memory",
+    ),
+    Source(
+        "brown-solvason",
+        "W. G. Brown and K. R. Solvason, Natural convection through rectangular openings in "
+        "partitions, International Journal of Heat and Mass Transfer 5 (1962); B. H. Shaw (1971, "
+        "1976) and O. M. Lidwell, Journal of Hygiene 79 (1977), on air through open doors",
+        "from memory",
+    ),
+    Source(
+        "moler-van-loan",
+        "C. Moler and C. Van Loan, Nineteen dubious ways to compute the exponential of a matrix, "
+        "SIAM Review 20 (1978); uniformisation after A. Jensen (1953)",
+        "from memory",
+    ),
+    Source(
         "chandrupatla",
         "T. R. Chandrupatla, A new hybrid quadratic/bisection algorithm for finding the zero of a "
         "nonlinear function without using derivatives, Advances in Engineering Software 28 (1997)",
@@ -413,6 +477,86 @@ _METHODS: Final = (
         ("common-practice",),
         "any room; one that cannot be computed never passes for safe",
         False,
+    ),
+    Method(
+        "spill/pool-on-floor",
+        "G5",
+        "Liquid let go on a floor: a thin pool that the heat of the floor evaporates in seconds, "
+        "so that all of it counts at once.",
+        "A = V / 5 mm, at most the floor; t = pi a (m L / (2 A k dT))^2",
+        ("shaw-briscoe", "yellow-book", "carslaw-jaeger"),
+        "dry concrete at room temperature; wet or insulated floors are slower",
+        True,
+    ),
+    Method(
+        "overfill/bund",
+        "G5",
+        "Liquid that runs into a bund: by no time more gas than has run in, or than the floor "
+        "inside of it can have evaporated.",
+        "m(t) = min(f t, 2 A k dT / L sqrt(t / (pi a)))",
+        ("carslaw-jaeger",),
+        "a bund that is recorded, with its area, on dry concrete",
+        True,
+    ),
+    Method(
+        "line-break/liquid",
+        "G6",
+        "Liquid out of a line or hose that is broken right through, all of which evaporates.",
+        "m = Cd A sqrt(2 rho (p1 - p2)), Cd = 1; at most what a restrictor lets through",
+        ("api-520",),
+        "subcooled liquid; saturated liquid flashes and flows less",
+        True,
+    ),
+    Method(
+        "line-break/gas",
+        "G6",
+        "Gas out of a line that is broken right through or left open.",
+        "m = Cd A p1 sqrt(M / (R T)) f(gamma, p2 / p1), choked below the critical ratio; at most "
+        "what a restrictor lets through",
+        ("iso-9300", "api-520"),
+        "gas at room temperature; the length of the line brings no credit",
+        True,
+    ),
+    Method(
+        "vacuum-loss/heat-flux",
+        "G3",
+        "What evaporates when the insulating vacuum of a vessel is lost.",
+        "m = q A / L; q = 38 kW/m2 for helium, hydrogen and neon, 6 with multilayer insulation, "
+        "2.8 for others and 6.9 with the jacket torn open; A = 1.3 (36 pi V^2)^(1/3) if unknown",
+        ("lehmann-zahn", "churchill-chu", "nusselt-film"),
+        "a large breach; the figures for nitrogen and what is warmer are a bracket that no "
+        "standing measurement is known for",
+        True,
+    ),
+    Method(
+        "quench/mean-and-peak",
+        "G7",
+        "The helium of a magnet that quenches: its share into the room, at once.",
+        "V = share rho_l V_l / rho_gas; mean rate V / t, peak twice as much",
+        ("common-practice",),
+        "all of the liquid; the share by the quench pipe as recorded, or its failure",
+        True,
+    ),
+    Method(
+        "neighbours/network",
+        "L1 to L4",
+        "Gas that goes from room to room: by open doors and openings, by the air that a release "
+        "pushes out, and by units that blow back the air of several rooms.",
+        "V dG/dt = R + sum Q G - W G in every room, with steady flows in each segment; the state "
+        "is carried over a segment by the exponential of one matrix; W balances what comes in",
+        ("laboratory-odh", "moler-van-loan"),
+        "well-mixed rooms, at most 12 of them and as many steps from the source as the basis says; "
+        "what is pushed out of a room leaves by its open ways by their areas, as a bound",
+        True,
+    ),
+    Method(
+        "neighbours/door-exchange",
+        "L5",
+        "Air that passes an open doorway each way because one side is warmer.",
+        "Q = Cd/3 W H^1.5 sqrt(g dT / T), Cd = 0.6; dT = 1 K where nothing is recorded",
+        ("brown-solvason",),
+        "an open doorway in still air; of no credit to the room of the release",
+        True,
     ),
     Method(
         "records/plausible",

@@ -1,4 +1,4 @@
-"""Which rooms a change reaches: controls by their vessel, openings none."""
+"""Which rooms a change reaches: controls by their vessel, openings on both their sides."""
 
 from functools import partial
 
@@ -120,18 +120,18 @@ def test_a_room_a_vessel_and_its_control_are_made_at_once(line, site):
     assert line.remove(room).removed
 
 
-def test_an_opening_recalculates_nothing_and_keeps_both_its_rooms(line, site):
+def test_an_opening_recalculates_both_its_rooms_and_keeps_them(line, site):
     first, second = line.a_room(tag="first"), line.a_room(tag="second")
     made = line.create(
         "opening", tag="O", room_id=first.id, other_room="second", kind="door", net_flow_m3_h=-30.0
     )
     assert made.record.site_id == site.id
-    assert made.effects == ()
-    assert line.change(made.record, normally_open=True).effects == ()
+    assert reached(made) == {"first", "second"}
+    assert reached(line.change(made.record, normally_open=True)) == {"first", "second"}
     for room in (first, second):
         with pytest.raises(StillReferred, match="opening O"):
             line.remove(room)
-    assert line.remove(made.record).effects == ()
+    assert reached(line.remove(made.record)) == {"first", "second"}
     assert line.remove(second).removed
 
 

@@ -41,6 +41,14 @@ WANTED = {
     "records/assumed": "N",
     "records/sound": "N",
     "severity/table": "N",
+    "spill/pool-on-floor": "G5",
+    "overfill/bund": "G5",
+    "line-break/liquid": "G6",
+    "line-break/gas": "G6",
+    "vacuum-loss/heat-flux": "G3",
+    "quench/mean-and-peak": "G7",
+    "neighbours/network": "L1 to L4",
+    "neighbours/door-exchange": "L5",
 }
 
 
@@ -107,7 +115,12 @@ def test_every_work_is_keyed_by_its_own_key():
 
 def test_a_method_that_is_no_estimate_but_a_bound_says_so():
     bounds = {slug for slug, method in METHODS.items() if method.bound}
-    assert bounds == {"mixing/displacement", "filling/overfill", "layering/two-zone-bound"}
+    assert bounds == {
+        "mixing/displacement", "filling/overfill", "layering/two-zone-bound",
+        "spill/pool-on-floor", "overfill/bund", "line-break/liquid", "line-break/gas",
+        "vacuum-loss/heat-flux", "quench/mean-and-peak", "neighbours/network",
+        "neighbours/door-exchange",
+    }  # fmt: skip
 
 
 def test_every_method_says_where_it_holds_and_by_what_formula():

@@ -33,8 +33,8 @@ OpeningArea = Annotated[float, Quantity(units.SQUARE_METRES, gt=0.0, le=10_000.0
 class OpeningCreate(OfSite):
     """A new opening between a room and another one, or the outdoors.
 
-    What passes through openings is not computed yet, so that it recalculates no room; its rooms
-    cannot be removed before it.
+    Gas that is let go on one side is followed to the other, so that both rooms are recalculated,
+    and with them the rooms further on that this changes. Its rooms cannot be removed before it.
     """
 
     room_id: RecordIdText | None = Field(
@@ -56,14 +56,19 @@ class OpeningCreate(OfSite):
         default=None, description="The free area; at most width times height where these are sent."
     )
     exchange_flow_m3_h: CubicMetresPerHour | None = Field(
-        default=None, description="Air that passes each way at the same time, in balance."
+        default=None,
+        description="Air that passes each way at the same time, in balance. Unknown and open: what "
+        "one degree of difference moves through it.",
     )
     net_flow_m3_h: SignedCubicMetresPerHour | None = Field(
         default=None,
         description="Air that passes one way: positive from the other room (or the outdoors) into "
         "'room', negative out of 'room'.",
     )
-    normally_open: bool | None = None
+    normally_open: bool | None = Field(
+        default=None,
+        description="Whether air passes; one that nobody says is shut counts as open between rooms.",
+    )
 
 
 @patch_of(
