@@ -67,7 +67,7 @@ class OpeningCreate(OfSite):
     )
     normally_open: bool | None = Field(
         default=None,
-        description="Whether air passes; one that nobody says is shut counts as open between rooms.",
+        description="Whether air passes; one that is not said to be shut counts as open indoors.",
     )
 
 
