@@ -31,6 +31,12 @@ from service.api.schemas.openings import (
 from service.api.schemas.record import AnyRecordRead, RecordCreate
 from service.api.schemas.rooms import RoomCreate, RoomPatch, RoomRead, RoomWritten
 from service.api.schemas.sites import SiteCreate, SitePatch, SiteRead, SiteWritten
+from service.api.schemas.supply_lines import (
+    SupplyLineCreate,
+    SupplyLinePatch,
+    SupplyLineRead,
+    SupplyLineWritten,
+)
 from service.api.schemas.ventilation_units import (
     VentilationUnitCreate,
     VentilationUnitPatch,
@@ -135,6 +141,10 @@ RESOURCES: Final[Mapping[str, Resource]] = {
         Resource(
             "vessel", "vessels", "Vessel", "Vessels",
             VesselCreate, VesselPatch, VesselRead, VesselWritten,
+        ),
+        Resource(
+            "supply-line", "supply-lines", "SupplyLine", "SupplyLines",
+            SupplyLineCreate, SupplyLinePatch, SupplyLineRead, SupplyLineWritten,
         ),
         Resource(
             "detector", "detectors", "Detector", "Detectors",

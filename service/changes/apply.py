@@ -25,6 +25,7 @@ from service.errors import (
 )
 from service.store.records import Record, folded_tag
 from service.store.rows import instant_names, number_names
+from service.store.tables.supply_lines import TRIGGERS
 from service.store.tables.ventilation_units import MANUAL
 
 
@@ -166,12 +167,23 @@ def _fields_after(
     base = blank_fields(kind) if present is None else dict(present.fields)
     for link in KINDS[kind].links:
         _resolve(records, names, place, link, sent, base)
-    if sent.get("serves") is not None:
-        sent["serves"] = list(_served_rooms(records, names, place, sent["serves"]))
+    for name in ("serves", "rooms"):
+        if sent.get(name) is not None:
+            sent[name] = list(_named_rooms(records, names, place, name, sent[name]))
     if kind == "detector" and sent.get("gas") not in (None, OXYGEN):
         sent["gas"] = _gas_tag(records, names, place, sent["gas"])
     if kind == "ventilation-unit" and sent.get("boost_trigger") not in (None, MANUAL):
-        sent["boost_trigger"] = _detector_id(records, names, place, sent["boost_trigger"])
+        sent["boost_trigger"] = _detector_id(
+            records, names, place, sent["boost_trigger"], "/boost_trigger"
+        )
+    if kind == "supply-line" and (sent.get("shutoff") or {}).get("trigger") is not None:
+        sent["shutoff"] = dict(sent["shutoff"])
+        if sent["shutoff"]["trigger"] not in TRIGGERS:
+            sent["shutoff"]["trigger"] = _detector_id(
+                records, names, place, sent["shutoff"]["trigger"], "/shutoff/trigger"
+            )
+    if kind == "vessel" and sent.get("filling") is not None:
+        sent["filling"] = _filling(records, names, place, sent["filling"])
     unknown = sorted(sent.keys() - base.keys())
     if unknown:
         raise FieldsRefused(
@@ -254,18 +266,44 @@ def _target(
     return target.id, target.fields["tag"]
 
 
-def _served_rooms(
-    records: Mapping[str, Record], names: _Names, place: Placed, serves: Sequence[Mapping[str, Any]]
+def _filling(
+    records: Mapping[str, Record], names: _Names, place: Placed, sent: Mapping[str, Any]
+) -> dict[str, Any]:
+    """Replace the line that fills a vessel, by id or tag, with the id."""
+    filling = dict(sent)
+    said_by_tag = "supply_line" in filling
+    by_tag, by_id = filling.pop("supply_line", None), filling.get("supply_line_id")
+    pointer = "/filling/supply_line_id" if by_tag is None else "/filling/supply_line"
+    if by_tag is not None and by_id is not None:
+        raise FieldsRefused.at(
+            pointer, "said-twice", "Send 'supply_line_id' or 'supply_line', not both."
+        )
+    if by_tag is not None:
+        by_id = names.find("supply-line", place.site_id, by_tag) or ""
+    if by_id is not None:
+        filling["supply_line_id"] = _target(records, place, "supply-line", by_id, pointer)[0]
+    elif said_by_tag:
+        filling["supply_line_id"] = None
+    return filling
+
+
+def _named_rooms(
+    records: Mapping[str, Record],
+    names: _Names,
+    place: Placed,
+    field: str,
+    serves: Sequence[Mapping[str, Any]],
 ) -> Iterator[dict[str, Any]]:
     for number, served in enumerate(serves):
-        pointer = f"/serves/{number}"
+        pointer = f"/{field}/{number}"
         by_id, by_tag = served.get("room_id"), served.get("room")
         if (by_id is None) == (by_tag is None):
             raise FieldsRefused.at(pointer, "missing", "Send 'room_id' or 'room', one of them.")
         room_id = by_id if by_tag is None else names.find("room", place.site_id, by_tag)
         pointer += "/room_id" if by_tag is None else "/room"
         found = _target(records, place, "room", room_id, pointer)
-        yield {"room_id": found[0], "share": served["share"]}
+        rest = {name: value for name, value in served.items() if name not in ("room_id", "room")}
+        yield {"room_id": found[0], **rest}
 
 
 def _gas_tag(records: Mapping[str, Record], names: _Names, place: Placed, gas: str) -> str:
@@ -277,9 +315,11 @@ def _gas_tag(records: Mapping[str, Record], names: _Names, place: Placed, gas: s
     return str(records[fluid_id].fields["tag"])
 
 
-def _detector_id(records: Mapping[str, Record], names: _Names, place: Placed, said: str) -> str:
+def _detector_id(
+    records: Mapping[str, Record], names: _Names, place: Placed, said: str, pointer: str
+) -> str:
     detector_id = names.find("detector", place.site_id, said) or said
-    return _target(records, place, "detector", detector_id, "/boost_trigger")[0]
+    return _target(records, place, "detector", detector_id, pointer)[0]
 
 
 def _refuse_fixed(present: Record, fields: Mapping[str, Any]) -> None:

@@ -45,6 +45,8 @@ class Kind:
     room_by_vessel: str | None = None
     #: Fields that may hold the id of another record, and are no link.
     may_name: frozenset[str] = frozenset()
+    #: Ids of other records, or words in their place, that stand inside a field.
+    names: Callable[[Fields], frozenset[str]] = _no_rooms
     #: Fields by which a record reaches every room of its site, of its sites, or of its vessels.
     reaches_far: frozenset[str] = frozenset()
     #: Where the site comes from when it is not said: fields with a room's or vessel's id, or rooms.
@@ -56,6 +58,20 @@ class Kind:
 def _room_of(fields: Fields) -> frozenset[str]:
     room_id = fields.get("room_id")
     return frozenset() if room_id is None else frozenset({room_id})
+
+
+def _rooms_run_through(fields: Fields) -> frozenset[str]:
+    return frozenset(room["room_id"] for room in fields.get("rooms") or ())
+
+
+def _detector_that_shuts(fields: Fields) -> frozenset[str]:
+    trigger = (fields.get("shutoff") or {}).get("trigger")
+    return frozenset() if trigger is None else frozenset({trigger})
+
+
+def _line_that_fills(fields: Fields) -> frozenset[str]:
+    line_id = (fields.get("filling") or {}).get("supply_line_id")
+    return frozenset() if line_id is None else frozenset({line_id})
 
 
 def _rooms_on_both_sides(fields: Fields) -> frozenset[str]:
@@ -128,7 +144,19 @@ KINDS: Final[Mapping[str, Kind]] = {
             ),
             defaults={"state": "in-service"},
             rooms=_room_of,
+            names=_line_that_fills,
             site_from=("room_id",),
+        ),
+        Kind(
+            "supply-line",
+            links=(
+                Link("source_vessel_id", "source_vessel", "vessel"),
+                Link("fluid_id", "fluid", "fluid", keeps_tag=True),
+            ),
+            defaults={"rooms": []},
+            rooms=_rooms_run_through,
+            names=_detector_that_shuts,
+            site_from=("rooms", "source_vessel_id"),
         ),
         Kind(
             "control",
@@ -162,7 +190,7 @@ KINDS: Final[Mapping[str, Kind]] = {
 def rooms_reached(record: Record | None, records: Mapping[str, Record]) -> frozenset[str]:
     """Name the rooms a record reaches: itself, the one it or its vessel stands in, those it serves.
 
-    ``records`` holds the vessel.
+    ``records`` holds the vessel, and the lines that it feeds with the vessels that these fill.
     """
     if record is None:
         return frozenset()
@@ -173,14 +201,30 @@ def rooms_reached(record: Record | None, records: Mapping[str, Record]) -> froze
     if kind.room_by_vessel is not None:
         vessel = records.get(record.fields[kind.room_by_vessel] or "")
         rooms |= frozenset() if vessel is None else _room_of(vessel.fields)
+    if record.kind == "supply-line":
+        return rooms | _rooms_filled(record, records)
+    if record.kind == "vessel":
+        for line in records.values():
+            if line.kind == "supply-line" and line.fields["source_vessel_id"] == record.id:
+                rooms |= _rooms_run_through(line.fields) | _rooms_filled(line, records)
     return rooms
+
+
+def _rooms_filled(line: Record, records: Mapping[str, Record]) -> frozenset[str]:
+    """Name the rooms of the vessels that a line fills."""
+    filled = [
+        _room_of(vessel.fields)
+        for vessel in records.values()
+        if vessel.kind == "vessel" and line.id in _line_that_fills(vessel.fields)
+    ]
+    return frozenset().union(*filled)
 
 
 def refers_to(record: Record, record_id: str) -> bool:
     """Tell whether a record names another in its fields, so that this one cannot go."""
     kind, fields = KINDS[record.kind], record.fields
     named = {fields[link.field] for link in kind.links} | {fields[name] for name in kind.may_name}
-    return record_id in named | kind.rooms(fields)
+    return record_id in named | kind.rooms(fields) | kind.names(fields)
 
 
 def reaches_far(before: Record | None, after: Record | None) -> bool:

@@ -19,6 +19,7 @@ from service.store.live import (
     controls_of_vessels,
     equipment_of,
     get_records,
+    lines_around,
     record_by_external_id,
     record_by_tag,
     referrers_of,
@@ -26,12 +27,14 @@ from service.store.live import (
     rooms_with_fluid,
     sites_with_basis,
     units_boosted_by,
+    vessels_filled_by,
 )
 from service.store.records import Record, folded_tag
-from service.store.rows import triggering_detector
+from service.store.rows import filling_line, triggering_detector
 from service.store.scope import EVERYTHING
 from service.store.session import WriteSession
 from service.store.states import room_states
+from service.store.tables.supply_lines import TRIGGERS
 from service.store.tables.ventilation_units import MANUAL
 
 OXYGEN: Final = "oxygen"
@@ -228,6 +231,23 @@ class _Loader:
         for unit in self._of("ventilation-unit", changed):
             detector_id = triggering_detector(unit)
             self._take("detector", () if detector_id is None else {detector_id})
+        lines = lines_around(
+            EVERYTHING,
+            connection,
+            vessel_ids=changed.get("vessel", ()),
+            detector_ids=changed.get("detector", ()),
+        )
+        for line in lines:
+            self.records.setdefault(line.id, line)
+        for line in self._of("supply-line", changed):
+            detector_id = triggering_detector(line)
+            self._take("detector", () if detector_id is None else {detector_id})
+        touched = {line.id for line in lines} | changed.get("supply-line", set())
+        for vessel in vessels_filled_by(EVERYTHING, connection, touched):
+            self.records.setdefault(vessel.id, vessel)
+        for vessel in self._of("vessel", changed):
+            line_id = filling_line(vessel)
+            self._take("supply-line", () if line_id is None else {line_id})
         for control in self._of("control", changed):
             vessel_id = control.fields["vessel_id"]
             self._take("vessel", () if vessel_id is None else {vessel_id})
@@ -289,6 +309,9 @@ class _Loader:
         self._take("site", {room.site_id for room in rooms if room.site_id is not None})
         self._take("basis", self._ids_in("site", "basis_id"))
         self._take("basis", self._ids_in("basis", "derived_from_id"))
+        # A line is fed from wherever its vessel stands.
+        self._take("vessel", self._ids_in("supply-line", "source_vessel_id"))
+        self._take("fluid", self._ids_in("supply-line", "fluid_id"))
         self._take("fluid", self._ids_in("vessel", "fluid_id"))
         self._take("fluid", self._ids_in("room", "purge_fluid_id"))
 
@@ -377,15 +400,20 @@ def _mentions(kind: str, site_id: str | None, fields: Mapping[str, Any]) -> Iter
             yield _Mention(link.kind, site_id, tag=by_tag)
             if link.keeps_tag:
                 yield _Mention(link.kind, site_id, record_id=by_tag)
-    for served in fields.get("serves") or ():
+    for served in (*(fields.get("serves") or ()), *(fields.get("rooms") or ())):
         if served.get("room_id") is not None:
             yield _Mention("room", site_id, record_id=served["room_id"])
         if served.get("room") is not None:
             yield _Mention("room", site_id, tag=served["room"])
+    filling = fields.get("filling") or {}
+    if filling.get("supply_line_id") is not None:
+        yield _Mention("supply-line", site_id, record_id=filling["supply_line_id"])
+    if filling.get("supply_line") is not None:
+        yield _Mention("supply-line", site_id, tag=filling["supply_line"])
     gas = fields.get("gas")
     if kind == "detector" and gas is not None and gas != OXYGEN:
         yield _Mention("fluid", site_id, tag=gas)
-    trigger = fields.get("boost_trigger")
-    if trigger is not None and trigger != MANUAL:
+    trigger = fields.get("boost_trigger") or (fields.get("shutoff") or {}).get("trigger")
+    if trigger is not None and trigger not in (MANUAL, *TRIGGERS):
         yield _Mention("detector", site_id, record_id=trigger)
         yield _Mention("detector", site_id, tag=trigger)

@@ -36,6 +36,7 @@ _DONE: Final[Mapping[str, tuple[tuple[str, ...], ...]]] = {
         ("relief", "inspected_on"),
         ("quench", "pipe", "inspected_on"),
     ),
+    "supply-line": (("shutoff", "tested_on"),),
     "detector": (("calibrated_on",), ("silenced_since",)),
     "control": (("checked_on",),),
 }
@@ -214,6 +215,18 @@ def _serves(unit: Record, detector: Record) -> bool:
     return detector.fields["room_id"] in {each["room_id"] for each in unit.fields["serves"]}
 
 
+def _detector_shuts(record: Record, records: Records) -> Iterator[FieldError]:
+    for line in records.values():
+        shuts = line.kind == "supply-line" and (line.fields["shutoff"] or {}).get("trigger")
+        rooms = {each["room_id"] for each in line.fields["rooms"]} if shuts else set()
+        if shuts == record.id and record.fields["room_id"] not in rooms:
+            yield FieldError(
+                "/room_id",
+                "not-run-through",
+                f"It shuts supply line {line.fields['tag']}, which does not run through that room.",
+            )
+
+
 def _detector_boosts(record: Record, records: Records) -> Iterator[FieldError]:
     for unit in records.values():
         boosted = unit.kind == "ventilation-unit" and unit.fields["boost_trigger"] == record.id
@@ -334,6 +347,68 @@ def _vessel_parts(record: Record, _records: Records) -> Iterator[FieldError]:
         yield FieldError("/neck_plug", "not-with-kind", f"A {kind} has none.")
 
 
+def _vessel_lines(record: Record, records: Records) -> Iterator[FieldError]:
+    fields = record.fields
+    line_id = (fields["filling"] or {}).get("supply_line_id")
+    line = records.get(line_id or "")
+    if line is not None and line.fields["fluid_id"] != fields["fluid_id"]:
+        yield FieldError(
+            "/filling/supply_line_id", "other-fluid", f"The line brings {line.fields['fluid']}."
+        )
+    if line is not None and line.fields["phase"] != "liquid":
+        yield FieldError("/filling/supply_line_id", "not-liquid", "The line brings gas.")
+    for other in records.values():
+        fed = other.kind == "supply-line" and other.fields["source_vessel_id"] == record.id
+        if fed and other.fields["fluid_id"] != fields["fluid_id"]:
+            yield FieldError(
+                "/fluid",
+                "other-fluid",
+                f"It feeds supply line {other.fields['tag']}, of {other.fields['fluid']}.",
+            )
+
+
+def _line_rooms(record: Record, _records: Records) -> Iterator[FieldError]:
+    rooms = [each["room_id"] for each in record.fields["rooms"]]
+    if not rooms:
+        yield FieldError("/rooms", "missing", "Name the rooms that the line runs through.")
+    if len(set(rooms)) < len(rooms):
+        yield FieldError("/rooms", "named-twice", "Name each room once.")
+
+
+def _line_fluids(record: Record, records: Records) -> Iterator[FieldError]:
+    fields = record.fields
+    if fields["fluid_id"] is None:
+        yield FieldError("/fluid", "missing", "A line needs its fluid.")
+        return
+    source = records.get(fields["source_vessel_id"] or "")
+    if source is not None and source.fields["fluid_id"] != fields["fluid_id"]:
+        yield FieldError(
+            "/source_vessel_id", "other-fluid", f"The vessel holds {source.fields['fluid']}."
+        )
+    if source is not None and source.fields["kind"] == "dry-ice-box":
+        yield FieldError("/source_vessel_id", "not-with-kind", "No line is fed by a box of ice.")
+    for vessel in records.values():
+        filled = vessel.kind == "vessel" and record.id == (vessel.fields["filling"] or {}).get(
+            "supply_line_id"
+        )
+        if filled and vessel.fields["fluid_id"] != fields["fluid_id"]:
+            yield FieldError(
+                "/fluid",
+                "other-fluid",
+                f"It fills vessel {vessel.fields['tag']}, of {vessel.fields['fluid']}.",
+            )
+
+
+def _line_trigger(record: Record, records: Records) -> Iterator[FieldError]:
+    shutoff = record.fields["shutoff"] or {}
+    detector = records.get(shutoff.get("trigger") or "")
+    rooms = {each["room_id"] for each in record.fields["rooms"]}
+    if detector is not None and detector.fields["room_id"] not in rooms:
+        yield FieldError(
+            "/shutoff/trigger", "not-run-through", "The detector stands in none of its rooms."
+        )
+
+
 def _detector_room(record: Record, _records: Records) -> Iterator[FieldError]:
     if record.fields["room_id"] is None:
         yield FieldError("/room_id", "missing", "A detector stands in a room.")
@@ -383,8 +458,15 @@ _RULES: Final[Mapping[str, tuple[Callable[[Record, Records], Iterator[FieldError
     "room": (_room_volume, _room_pit, _room_height),
     "opening": (_opening_rooms, _opening_size),
     "ventilation-unit": (_unit_shares, _unit_measurement, _unit_boost, _outages),
-    "vessel": (_vessel_amounts, _vessel_evaporation, _vessel_gross, _vessel_parts),
-    "detector": (_detector_room, _detector_height, _detector_boosts, _outages),
+    "vessel": (
+        _vessel_amounts,
+        _vessel_evaporation,
+        _vessel_gross,
+        _vessel_parts,
+        _vessel_lines,
+    ),
+    "supply-line": (_line_rooms, _line_fluids, _line_trigger),
+    "detector": (_detector_room, _detector_height, _detector_boosts, _detector_shuts, _outages),
     "control": (_control_subject, _control_area),
     "basis": (_basis_values,),
     "fluid": (_fluid_limit,),

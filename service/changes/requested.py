@@ -148,9 +148,9 @@ def naming_its_site(kind: str, fields: Mapping[str, Any]) -> Iterator[tuple[str,
     """Name the records that tell the site of a new one: the field, the kind, the id."""
     for name in KINDS[kind].site_from:
         said = fields.get(name)
-        if name == "serves":
+        if name in ("serves", "rooms"):
             for number, served in enumerate(said or ()):
                 if served.get("room_id") is not None:
-                    yield f"serves/{number}/room_id", "room", str(served["room_id"])
+                    yield f"{name}/{number}/room_id", "room", str(served["room_id"])
         elif said is not None:
-            yield name, "vessel" if name == "vessel_id" else "room", str(said)
+            yield name, "vessel" if name.endswith("vessel_id") else "room", str(said)

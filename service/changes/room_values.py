@@ -13,9 +13,11 @@ from service.audit.inputs import (
     ControlValues,
     DetectorValues,
     FluidValues,
+    LineValues,
     OpeningValues,
     Outage,
     PitValues,
+    QuenchValues,
     Reference,
     RoomValues,
     UnitValues,
@@ -28,6 +30,7 @@ from service.store.records import Record
 
 ATMOSPHERE: Final = 101_325.0  # [Pa]; what gauge pressures are counted from
 LITRE: Final = 1e-3  # [m3]
+MILLIMETRE: Final = 1e-3  # [m]
 MINUTE: Final = 60.0  # [s]
 DAY: Final = 86_400.0  # [s]
 HOUR: Final = 3_600.0  # [s]
@@ -45,6 +48,7 @@ class _Placed:
     detectors: dict[str, list[Record]]
     controls: dict[str, list[Record]]
     openings: dict[str, list[Record]]
+    lines: dict[str, list[Record]]
 
 
 def values_of_rooms(records: Mapping[str, Record], room_ids: Iterable[str]) -> list[RoomValues]:
@@ -58,7 +62,7 @@ def values_of_rooms(records: Mapping[str, Record], room_ids: Iterable[str]) -> l
 
 
 def _placed(records: Mapping[str, Record]) -> _Placed:
-    placed = _Placed({}, {}, {}, {}, {})
+    placed = _Placed({}, {}, {}, {}, {}, {})
     for record in sorted(records.values(), key=lambda record: record.id):
         if record.kind == "vessel" and record.fields["room_id"] is not None:
             placed.vessels.setdefault(record.fields["room_id"], []).append(record)
@@ -70,6 +74,9 @@ def _placed(records: Mapping[str, Record]) -> _Placed:
         elif record.kind == "control":
             for room_id in rooms_reached(record, records):
                 placed.controls.setdefault(room_id, []).append(record)
+        elif record.kind == "supply-line":
+            for room_id in sorted(rooms_reached(record, records)):
+                placed.lines.setdefault(room_id, []).append(record)
         elif record.kind == "opening":
             for room_id in sorted(rooms_reached(record, records)):
                 placed.openings.setdefault(room_id, []).append(record)
@@ -114,6 +121,9 @@ def _room_values(records: Mapping[str, Record], placed: _Placed, room: Record) -
         ),
         controls=tuple(
             _control_values(control, zone) for control in placed.controls.get(room.id, ())
+        ),
+        lines=tuple(
+            _line_values(records, line, count_every, zone) for line in placed.lines.get(room.id, ())
         ),
         openings=tuple(
             _opening_values(opening, room.id) for opening in placed.openings.get(room.id, ())
@@ -201,8 +211,14 @@ def _vessel_values(
             relief.get("inspected_on"), relief.get("inspect_every_days"), zone
         ),
         relief_inspected=relief.get("inspected_on") is not None,
+        relief_to=relief.get("discharge_to"),
         manifold=fields["manifold"],
         mobile=fields["mobile"],
+        supply_line_id=filling.get("supply_line_id"),
+        cold_area=fields["cold_area_m2"],
+        working_pressure=_absolute(fields["working_pressure_kpa"]),
+        withdrawal_bore=_scaled(fields["withdrawal_bore_mm"], MILLIMETRE),
+        quench=_quench_values(fields["quench"], zone),
     )
 
 
@@ -272,6 +288,50 @@ def _control_values(control: Record, zone: str) -> ControlValues:
         check_due=_due(fields["checked_on"], fields["check_every_days"], zone),
         checked=fields["checked_on"] is not None,
     )
+
+
+def _line_values(
+    records: Mapping[str, Record], line: Record, count_every: timedelta, zone: str
+) -> LineValues:
+    fields, shutoff = line.fields, line.fields["shutoff"] or {}
+    source = records.get(fields["source_vessel_id"] or "")
+    return LineValues(
+        record=reference(line),
+        fluid=fluid_values(records[fields["fluid_id"]]),
+        phase=fields["phase"],
+        bore=_scaled(fields["bore_mm"], MILLIMETRE),
+        length=fields["length_m"],
+        source_pressure=_absolute(fields["source_pressure_kpa"]),
+        restrictor=_scaled(fields["restrictor_kg_h"], 1.0 / HOUR),
+        source=None
+        if source is None
+        else _vessel_values(source, records[source.fields["fluid_id"]], count_every, zone),
+        has_shut_off=fields["shutoff"] is not None,
+        trigger=shutoff.get("trigger"),
+        closes_in=shutoff.get("closes_in_s"),
+        fails_closed=shutoff.get("fails_closed"),
+        shut_off_tested=shutoff.get("tested_on") is not None,
+        shut_off_test_due=_due(shutoff.get("tested_on"), shutoff.get("test_every_days"), zone),
+        insulation=fields["insulation"],
+    )
+
+
+def _quench_values(quench: Mapping[str, Any] | None, zone: str) -> QuenchValues | None:
+    if quench is None:
+        return None
+    pipe = quench.get("pipe") or {}
+    return QuenchValues(
+        duration=quench.get("duration_s"),
+        share_to_room=quench.get("share_to_room"),
+        has_pipe=quench.get("pipe") is not None,
+        pipe_inspected=pipe.get("inspected_on") is not None,
+        pipe_inspection_due=_due(pipe.get("inspected_on"), pipe.get("inspect_every_days"), zone),
+        outlet_clear=pipe.get("outlet_clear"),
+    )
+
+
+def _absolute(gauge: float | None) -> float | None:
+    return None if gauge is None else gauge * KILOPASCAL + ATMOSPHERE
 
 
 def _opening_values(opening: Record, room_id: str) -> OpeningValues:

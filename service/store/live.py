@@ -33,7 +33,7 @@ from service.store.records import Record, folded_tag
 from service.store.rows import reader_of, row_of
 from service.store.scope import Scope, within
 from service.store.session import WriteSession
-from service.store.tables.registry import TABLES, VENTILATION_UNIT_ROOM
+from service.store.tables.registry import SUPPLY_LINE_ROOM, TABLES, VENTILATION_UNIT_ROOM
 
 Changing = TypeVar("Changing", Update, Delete)
 
@@ -41,6 +41,7 @@ _SHARED: Final = frozenset({"basis", "fluid"})
 _UNIT: Final = "ventilation-unit"
 _CONTROL: Final = "control"
 _OPENING: Final = "opening"
+_LINE: Final = "supply-line"
 
 
 class Referrer(NamedTuple):
@@ -147,7 +148,7 @@ def equipment_of(scope: Scope, connection: Connection, room_ids: Iterable[str]) 
     # A unit that serves two of the rooms is found once for each.
     found = {
         record.id: record
-        for kind in (_UNIT, "vessel", "detector", _CONTROL, _OPENING)
+        for kind in (_UNIT, "vessel", "detector", _CONTROL, _OPENING, _LINE)
         for record in _many(scope, connection, kind, _by_rooms(kind), rooms)
     }
     order = {kind: number for number, kind in enumerate(TABLES)}
@@ -168,6 +169,28 @@ def units_boosted_by(
     """Return the ventilation units that detectors boost, in record order."""
     found = _many(scope, connection, _UNIT, _naming(_UNIT, "boost_detector_id"), detector_ids)
     return sorted(found, key=_record_order)
+
+
+def lines_around(
+    scope: Scope,
+    connection: Connection,
+    *,
+    vessel_ids: Iterable[str] = (),
+    detector_ids: Iterable[str] = (),
+) -> list[Record]:
+    """Return the lines that vessels feed and that detectors shut, in record order."""
+    fed = _many(scope, connection, _LINE, _naming(_LINE, "source_vessel_id"), vessel_ids)
+    shut = _many(scope, connection, _LINE, _naming(_LINE, "trigger_detector_id"), detector_ids)
+    found = {line.id: line for line in (*fed, *shut)}
+    return sorted(found.values(), key=_record_order)
+
+
+def vessels_filled_by(
+    scope: Scope, connection: Connection, line_ids: Iterable[str]
+) -> list[Record]:
+    """Return the vessels that lines fill, in record order."""
+    query = _naming("vessel", "filling_line_id")
+    return sorted(_many(scope, connection, "vessel", query, line_ids), key=_record_order)
 
 
 def rooms_of_site(scope: Scope, connection: Connection, site_id: str) -> list[str]:
@@ -226,8 +249,7 @@ def insert_record(session: WriteSession, record: Record) -> None:
     """
     with _told_duplicates(record.kind):
         session.connection.execute(_insert(record.kind), row_of(record))
-    if record.kind == _UNIT:
-        _insert_serving(session, record)
+    _insert_rooms(session, record)
 
 
 def revise_record(session: WriteSession, record: Record, expected_revision: int) -> bool:
@@ -243,9 +265,9 @@ def revise_record(session: WriteSession, record: Record, expected_revision: int)
     values |= {"record": record.id, "expected": expected_revision}
     with _told_duplicates(record.kind):
         revised = session.connection.execute(_update(record.kind), values).rowcount == 1
-    if revised and record.kind == _UNIT:
-        _delete_serving(session, record)
-        _insert_serving(session, record)
+    if revised and record.kind in _IN_ROOMS:
+        _delete_rooms(session, record)
+        _insert_rooms(session, record)
     return revised
 
 
@@ -269,23 +291,19 @@ def _told_duplicates(kind: str) -> Iterator[None]:
         raise
 
 
-def _insert_serving(session: WriteSession, unit: Record) -> None:
-    rows = [
-        {
-            "site_id": unit.site_id,
-            "unit_id": unit.id,
-            "room_id": served["room_id"],
-            "share": served["share"],
-        }
-        for served in unit.fields["serves"]
-    ]
+def _insert_rooms(session: WriteSession, record: Record) -> None:
+    """Write the rooms of a record that has several in the form that can be joined."""
+    if record.kind not in _IN_ROOMS:
+        return
+    named, table, owner = _IN_ROOMS[record.kind]
+    rows = [{"site_id": record.site_id, owner: record.id, **each} for each in record.fields[named]]
     if rows:
-        session.connection.execute(insert(VENTILATION_UNIT_ROOM), rows)
+        session.connection.execute(insert(table), rows)
 
 
-def _delete_serving(session: WriteSession, unit: Record) -> None:
-    of_unit = VENTILATION_UNIT_ROOM.c["unit_id"] == unit.id
-    session.connection.execute(delete(VENTILATION_UNIT_ROOM).where(of_unit))
+def _delete_rooms(session: WriteSession, record: Record) -> None:
+    _, table, owner = _IN_ROOMS[record.kind]
+    session.connection.execute(delete(table).where(table.c[owner] == record.id))
 
 
 def _one(
@@ -352,7 +370,13 @@ def _by_ids(kind: str) -> Select[*tuple[Any, ...]]:
 
 @cache
 def _by_rooms(kind: str) -> Select[*tuple[Any, ...]]:
-    table, serving = TABLES[kind], VENTILATION_UNIT_ROOM
+    table = TABLES[kind]
+    if kind == _LINE:
+        running, vessels = SUPPLY_LINE_ROOM, TABLES["vessel"]
+        here = select(running.c["line_id"]).where(running.c["room_id"].in_(_SOME))
+        fills = select(vessels.c["filling_line_id"]).where(vessels.c["room_id"].in_(_SOME))
+        return select(table).where(or_(table.c["id"].in_(here), table.c["id"].in_(fills)))
+    serving = VENTILATION_UNIT_ROOM
     if kind == _CONTROL:
         vessels = TABLES["vessel"]
         standing = select(vessels.c["id"]).where(vessels.c["room_id"].in_(_SOME))
@@ -436,9 +460,10 @@ def _referring(kind: str) -> tuple[tuple[str, Select[str, str]], ...]:
         for name in names
     ]
     if kind == "room":
-        units, serving = TABLES[_UNIT], VENTILATION_UNIT_ROOM
-        serves = select(serving.c["unit_id"]).where(serving.c["room_id"] == referred)
-        found.append((_UNIT, _tagged(units).where(units.c["id"].in_(serves))))
+        for other, (_, joining, owner) in _IN_ROOMS.items():
+            theirs = select(joining.c[owner]).where(joining.c["room_id"] == referred)
+            table = TABLES[other]
+            found.append((other, _tagged(table).where(table.c["id"].in_(theirs))))
     return tuple(found)
 
 
@@ -446,6 +471,11 @@ def _tagged(table: Table) -> Select[str, str]:
     return select(table.c["id"], table.c["tag"])
 
 
+#: Kinds that have several rooms: the field, the table that can be joined, and its owner's column.
+_IN_ROOMS: Final[Mapping[str, tuple[str, Table, str]]] = {
+    _UNIT: ("serves", VENTILATION_UNIT_ROOM, "unit_id"),
+    _LINE: ("rooms", SUPPLY_LINE_ROOM, "line_id"),
+}
 _NAMED_BY: Final[Mapping[str, Mapping[str, tuple[str, ...]]]] = {
     "site": {kind: ("site_id",) for kind in TABLES if kind != "site"},
     "room": {
@@ -455,10 +485,11 @@ _NAMED_BY: Final[Mapping[str, Mapping[str, tuple[str, ...]]]] = {
         _CONTROL: ("room_id",),
     },
     "basis": {"site": ("basis_id",), "basis": ("derived_from_id",)},
-    "fluid": {"room": ("purge_fluid_id",), "vessel": ("fluid_id",)},
+    "fluid": {"room": ("purge_fluid_id",), "vessel": ("fluid_id",), _LINE: ("fluid_id",)},
     "opening": {},
-    "detector": {_UNIT: ("boost_detector_id",)},
+    "detector": {_UNIT: ("boost_detector_id",), _LINE: ("trigger_detector_id",)},
     _UNIT: {},
-    "vessel": {_CONTROL: ("vessel_id",)},
+    "vessel": {_CONTROL: ("vessel_id",), _LINE: ("source_vessel_id",)},
+    _LINE: {"vessel": ("filling_line_id",)},
     _CONTROL: {},
 }

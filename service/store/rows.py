@@ -11,6 +11,7 @@ from sqlalchemy import RowMapping
 from service.clock import moment_of, text_of
 from service.store.records import COMMON_FIELDS, Record, folded_tag
 from service.store.tables.registry import TABLES
+from service.store.tables.supply_lines import TRIGGERS
 from service.store.tables.ventilation_units import MANUAL
 from service.store.types import Instant, Number
 
@@ -24,6 +25,8 @@ _NOT_FIELDS = frozenset(
         # What follows from another field, kept to be sought or joined by.
         "tag_folded",
         "boost_detector_id",
+        "trigger_detector_id",
+        "filling_line_id",
     }
 )
 
@@ -79,13 +82,26 @@ def row_of(record: Record) -> dict[str, Any]:
         row[name] = None if row[name] is None else moment_of(row[name])
     if record.kind == "ventilation-unit":
         row["boost_detector_id"] = triggering_detector(record)
+    elif record.kind == "supply-line":
+        row["trigger_detector_id"] = triggering_detector(record)
+    elif record.kind == "vessel":
+        row["filling_line_id"] = filling_line(record)
     return row
 
 
-def triggering_detector(unit: Record) -> str | None:
-    """Return the detector that boosts a ventilation unit, where one does."""
-    trigger: str | None = unit.fields["boost_trigger"]
+def triggering_detector(record: Record) -> str | None:
+    """Return the detector that boosts a ventilation unit or shuts a line, where one does."""
+    if record.kind == "supply-line":
+        trigger: str | None = (record.fields["shutoff"] or {}).get("trigger")
+        return None if trigger in TRIGGERS else trigger
+    trigger = record.fields["boost_trigger"]
     return None if trigger == MANUAL else trigger
+
+
+def filling_line(vessel: Record) -> str | None:
+    """Return the line that fills a vessel, where one does."""
+    line: str | None = (vessel.fields["filling"] or {}).get("supply_line_id")
+    return line
 
 
 @cache

@@ -17,6 +17,7 @@ Kind = Literal[
     "opening",
     "ventilation-unit",
     "vessel",
+    "supply-line",
     "detector",
     "control",
     "basis",

@@ -78,6 +78,12 @@ class Filling(Edge):
     closes_in_s: ClosingTime | None = Field(
         default=None, description="From the independent high level to the shut valve."
     )
+    supply_line_id: RecordIdText | None = Field(
+        default=None, description="The line that fills it; not removed while this names it."
+    )
+    supply_line: Tag | None = Field(
+        default=None, description="The tag of the line, in place of its id."
+    )
     tested_on: Day | None = Field(default=None, description="When that shut-off was last tested.")
     test_every_days: EveryDays | None = None
 

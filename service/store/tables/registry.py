@@ -24,6 +24,7 @@ from service.store.tables.openings import Opening
 from service.store.tables.rooms import Room
 from service.store.tables.row import Base
 from service.store.tables.sites import Site
+from service.store.tables.supply_lines import SupplyLine, SupplyLineRoom
 from service.store.tables.ventilation_units import VentilationUnit, VentilationUnitRoom
 from service.store.tables.vessels import Vessel
 
@@ -44,11 +45,13 @@ TABLES: Final[Mapping[str, Table]] = {
     "detector": _table(Detector),
     "ventilation-unit": _table(VentilationUnit),
     "vessel": _table(Vessel),
+    "supply-line": _table(SupplyLine),
     "control": _table(Control),
 }
 KINDS: Final = tuple(TABLES)
 
 VENTILATION_UNIT_ROOM: Final = _table(VentilationUnitRoom)
+SUPPLY_LINE_ROOM: Final = _table(SupplyLineRoom)
 HEAD: Final = _table(Head)
 CHANGE: Final = _table(Change)
 RECORD_VERSION: Final = _table(RecordVersion)

@@ -94,3 +94,6 @@ class Vessel(Row):
     neck_plug: Mapped[str | None]
     relief: Mapped[Json | None]
     quench: Mapped[Json | None]
+    # The line that `filling` names, in a form that can be joined. Lines name their source vessel in
+    # a foreign key; one back would make a circle, so that the line is kept from going by a search.
+    filling_line_id: Mapped[RecordId | None] = mapped_column(index=True)
