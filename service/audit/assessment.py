@@ -10,7 +10,7 @@ from typing import Any, Final
 from service.audit.inputs import Reference
 
 # Goes up with every change that can alter a number, a severity or a statement.
-METHOD_VERSION: Final = "2"
+METHOD_VERSION: Final = "3"
 
 SEVERITIES: Final = ("observation", "minor", "major", "critical")
 STANDINGS: Final = ("in-order", "attention", "action", "stop")
@@ -75,6 +75,8 @@ class Case:
     without_margins: Mapping[str, float | None]
     method: tuple[str, ...]
     from_room: Reference | None = None  # None: of the room itself
+    variant: str | None = None  # expected, pipe-failed, jacket-open; None: it has but one form
+    lines: tuple[Reference, ...] = ()  # that are broken
 
 
 @dataclass(frozen=True, slots=True)

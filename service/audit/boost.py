@@ -11,8 +11,9 @@ from service.audit.air import AIRFLOWS, AS_MEASURED, BOOSTED
 from service.audit.cases import CaseTable
 from service.audit.columns import BY_HAND
 from service.audit.safeguards import Alarms, safeguards
+from service.audit.segments import cut_at
 from service.audit.solve import solve
-from service.physics.arrays import Floats, Integers, Mask
+from service.physics.arrays import Floats, Integers
 
 _BOOSTED: Final = AIRFLOWS.index(BOOSTED)
 _BY_ROW: Final = (
@@ -20,6 +21,7 @@ _BY_ROW: Final = (
     "room",
     "release",
     "hazard",
+    "variant",
     "at_once",
     "starts_from",
     "measured",
@@ -79,7 +81,7 @@ def _starts(table: CaseTable, alarms: Alarms) -> Floats:
 
 def _appended(table: CaseTable, rows: Integers, starts: Floats) -> CaseTable:
     """Put copies of rows behind a table, cut where the boost starts."""
-    durations, which, after = _cut(table.durations[rows], starts)
+    durations, which, after = cut_at(table.durations[rows], starts)
     width = durations.shape[1]
     room = table.room[rows]
 
@@ -115,17 +117,6 @@ def _appended(table: CaseTable, rows: Integers, starts: Floats) -> CaseTable:
         member_gas=np.concatenate([table.member_gas, table.member_gas[member]]),
         member_start=np.searchsorted(member_row, np.arange(table.size + rows.size + 1)),
     )
-
-
-def _cut(durations: Floats, starts: Floats) -> tuple[Floats, Integers, Mask]:
-    """Segments with one more cut; which segment each was part of, and which come after the cut."""
-    ends = np.cumsum(durations, axis=1)
-    cuts = np.minimum(starts, ends[:, -1])
-    all_ends = np.sort(np.column_stack([ends, cuts]), axis=1)
-    begins = np.concatenate([np.zeros((all_ends.shape[0], 1)), all_ends[:, :-1]], axis=1)
-    passed = ends[:, np.newaxis, :] <= begins[:, :, np.newaxis]
-    which = np.minimum(passed.sum(axis=2, dtype=np.int64), durations.shape[1] - 1)
-    return all_ends - begins, which, begins >= starts[:, np.newaxis]
 
 
 def _members_of(table: CaseTable, rows: Integers) -> tuple[Integers, Integers]:

@@ -16,7 +16,8 @@ from service.audit.failures import failures
 from service.audit.hazards import ABOUT_OXYGEN, FLAMMABLE, HAZARDS, SIGN
 from service.audit.inputs import RoomValues
 from service.audit.inventory import Inventory, inventory
-from service.audit.release_rows import Rows
+from service.audit.lines import Flows, line_flows
+from service.audit.release_rows import JACKET_OPEN, Rows
 from service.audit.releases import BOIL_OFF, RELEASES, all_rows
 from service.audit.sources import Sources, sources
 from service.physics.arrays import Floats, Integers, Mask, quotient, sum_by_group
@@ -39,6 +40,7 @@ class CaseTable:
     given: Columns
     conditions: Conditions
     stock: Inventory
+    lines: Flows
     sources: Sources
     air: Air
     failed: tuple[str | None, ...]  # by the rooms asked for: why one cannot be computed
@@ -47,6 +49,7 @@ class CaseTable:
     release: Integers  # row of RELEASES
     airflow: Integers  # row of AIRFLOWS
     hazard: Integers  # row of HAZARDS
+    variant: Integers  # row of VARIANTS; -1 where the release has but one form
     shown: Mask  # belongs to an answer
     counts: Mask  # towards the standing
     at_once: Mask
@@ -94,16 +97,17 @@ def case_table(rooms: Sequence[RoomValues], at: datetime) -> CaseTable:
 def cases_of(given: Columns, at: np.datetime64, failed: tuple[str | None, ...] = ()) -> CaseTable:
     """Make the cases of rooms already flattened and sound; those of a boost come later."""
     room = conditions(given)
-    stock = inventory(given, room, at)
+    lines = line_flows(given, room, at)
+    stock = inventory(given, room, lines, at)
     flows = air(given, room, at)
-    found = sources(given, stock)
+    found = sources(given, room, stock, lines)
     blocks = [
         _Block(release, AIRFLOWS.index(airflow), rows)
-        for release, rows in all_rows(given, found)
+        for release, rows in all_rows(given, room, stock, found)
         for airflow in AIRFLOWS
         if airflow != BOOSTED and (airflow != PROVEN or RELEASES[release].sustained)
     ]
-    return _joined(given, room, stock, found, flows, blocks, failed or (None,) * given.count)
+    return _joined(given, room, stock, lines, found, flows, blocks, failed or (None,) * given.count)
 
 
 @dataclass(frozen=True, slots=True)
@@ -119,6 +123,7 @@ def _joined(
     given: Columns,
     room: Conditions,
     stock: Inventory,
+    lines: Flows,
     found: Sources,
     flows: Air,
     blocks: Sequence[_Block],
@@ -163,10 +168,12 @@ def _joined(
     )
     instant = joined("instant")
     counts = [AIRFLOWS[block.airflow] in RELEASES[block.release].counts_in for block in blocks]
+    variant = codes("variant")
     return CaseTable(
         given=given,
         conditions=room,
         stock=stock,
+        lines=lines,
         sources=found,
         air=flows,
         failed=failed,
@@ -175,8 +182,10 @@ def _joined(
         release=release,
         airflow=airflow,
         hazard=hazard,
+        variant=variant,
         shown=airflow != AIRFLOWS.index(PROVEN),
-        counts=by_block(counts) == 1,
+        # One end of a bracket is shown beside the other, which counts.
+        counts=(by_block(counts) == 1) & (variant != JACKET_OPEN),
         at_once=instant > 0.0,
         starts_from=_starts_from(rooms, release, airflow, hazard, given.count),
         measured=_same_as_measured(blocks, offsets),

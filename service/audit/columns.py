@@ -16,6 +16,7 @@ from service.audit.assessment import SEVERITIES
 from service.audit.inputs import FluidValues, Outage, QuenchValues, RoomValues, VesselValues
 from service.physics.arrays import Floats, Integers, Mask
 from service.physics.constants import SECONDS_PER_DAY, SECONDS_PER_HOUR
+from service.physics.fluids import FLUIDS
 from service.physics.gas import gas_density
 
 Moments: TypeAlias = npt.NDArray[np.datetime64]
@@ -40,6 +41,7 @@ VESSEL_KINDS: Final = (
 )
 VESSEL_STATES: Final = ("in-service", "empty", "withdrawn")
 FILLED_BY: Final = ("automatic", "attended", "exchanged")
+_BY_LINE: Final = "automatic"
 VENTS: Final = ("room", "outdoors")
 ARRANGEMENTS: Final = ("supply", "exhaust", "balanced")
 UNIT_STATES: Final = ("running", "stopped", "failed")
@@ -70,6 +72,11 @@ BY_HAND: Final = -2  # the row of its detector
 CARBON_DIOXIDE: Final = "carbon-dioxide"
 NITROUS_OXIDE: Final = "nitrous-oxide"
 HELIUM: Final = "helium"
+_LATENT_HEAT: Final = {slug: fluid.latent_heat_j_kg for slug, fluid in FLUIDS.items()}
+_GAMMA: Final = {slug: fluid.gamma for slug, fluid in FLUIDS.items()}
+# Of a site's own fluid: the least of all but helium, and that of air. Common practice, no source.
+_LEAST_HEAT: Final = min(heat for slug, heat in _LATENT_HEAT.items() if slug != HELIUM)
+_USUAL_GAMMA: Final = 1.4
 # Temperature at which a cylinder is charged to its pressure. [K]  Common practice, no source.
 CHARGED_AT: Final = 288.15
 
@@ -107,6 +114,7 @@ class Bases:
     never_measured_share: Floats
     ice_share: Floats  # [1/h]
     loose_ice_share: Floats  # [1/h]
+    inspected_pipe_share: Floats
     many_vessels: Floats
     carbon_dioxide: Floats  # (rooms, 3) fractions: mean of 8 h, of 15 min, peak
     nitrous_oxide: Floats  # (rooms, 2) fractions: mean of 8 h, of 15 min
@@ -159,7 +167,8 @@ class Vessels:
     measured_loss: Floats
     use: Floats
     vent_to: Integers
-    filled_by: Integers
+    filled_by: Integers  # automatic where a line fills it and nobody says how
+    filled_as_said: Mask
     fill_flow: Floats  # [m3/s] of liquid
     high_level: Integers  # an independent one, that closes the supply
     closes_in: Floats  # [s]
@@ -249,6 +258,7 @@ class Lines:
     source_pressure: Floats  # [Pa] absolute
     restrictor: Floats  # [kg/s]
     has_source: Mask  # the vessel that feeds it is a record
+    source_pressure_there: Floats  # [Pa] absolute; the working pressure of that vessel
     source_capacity: Floats  # [kg]
     source_contents: Floats  # [kg]
     source_count_due: Moments
@@ -294,6 +304,9 @@ class Fluids:
     own_limit: Floats  # lower flammable limit recorded with the fluid
     liquid_density: Floats  # of what is kept as a liquid [kg/m3]
     gas: Integers  # row of the names of gases
+    boiling_point: Floats  # [K]
+    latent_heat: Floats  # [J/kg]
+    gamma: Floats
 
 
 @dataclass(frozen=True, slots=True)
@@ -496,7 +509,14 @@ def _vessels(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Ves
         measured_loss=_floats(vessel.measured_loss for vessel in all_of),
         use=_floats(vessel.use for vessel in all_of),
         vent_to=_codes((vessel.vent_to for vessel in all_of), VENTS),
-        filled_by=_codes((vessel.filled_by for vessel in all_of), FILLED_BY),
+        filled_by=_codes(
+            (
+                vessel.filled_by or (None if vessel.supply_line_id is None else _BY_LINE)
+                for vessel in all_of
+            ),
+            FILLED_BY,
+        ),
+        filled_as_said=_mask(vessel.filled_by is not None for vessel in all_of),
         fill_flow=_floats(vessel.fill_flow for vessel in all_of),
         high_level=_flags(vessel.independent_high_level for vessel in all_of),
         closes_in=_floats(vessel.closes_in for vessel in all_of),
@@ -574,6 +594,9 @@ def _lines(rooms: Sequence[RoomValues], fluids: _Distinct[FluidValues]) -> Lines
         source_pressure=_floats(line.source_pressure for line in all_of),
         restrictor=_floats(line.restrictor for line in all_of),
         has_source=_mask(source is not None for source in sources),
+        source_pressure_there=_floats(
+            None if each is None else each.working_pressure for each in sources
+        ),
         source_capacity=_floats(_mass(each, "capacity") for each in sources),
         source_contents=_floats(_mass(each, "contents") for each in sources),
         source_count_due=moments(None if each is None else each.count_due for each in sources),
@@ -735,6 +758,9 @@ def _fluids(fluids: Sequence[FluidValues], gases: _Distinct[str]) -> Fluids:
             for fluid in fluids
         ),
         gas=_integers(gases.row(fluid.record.tag) for fluid in fluids),
+        boiling_point=_floats(fluid.boiling_point for fluid in fluids),
+        latent_heat=_floats(_LATENT_HEAT.get(fluid.record.tag, _LEAST_HEAT) for fluid in fluids),
+        gamma=_floats(_GAMMA.get(fluid.record.tag, _USUAL_GAMMA) for fluid in fluids),
     )
 
 
@@ -790,6 +816,7 @@ def _basis_table(bases: Sequence[Mapping[str, Any]]) -> Bases:
         never_measured_share=number("never_measured_share"),
         ice_share=number("ice_share_per_h"),
         loose_ice_share=number("loose_ice_share_per_h"),
+        inspected_pipe_share=number("inspected_pipe_share"),
         many_vessels=number("many_vessels"),
         carbon_dioxide=named("carbon_dioxide_pct", ("mean_8h", "mean_15min", "peak")),
         nitrous_oxide=named("nitrous_oxide_pct", ("mean_8h", "mean_15min")),

@@ -12,6 +12,7 @@ from service.audit.incoming import Incoming
 from service.audit.marks import mark_percent
 from service.audit.safeguards import Safeguards, safeguards
 from service.audit.severity import case_severity, without_safeguards, worst_by_room
+from service.audit.shut_off import with_shut_off
 from service.audit.solve import Results, proven_to_hold, solve
 from service.physics.arrays import Floats, Integers, Mask
 
@@ -93,7 +94,8 @@ def deciding(base: Evaluation, assumed: Assumptions, at: np.datetime64) -> Mask:
         chosen = (code == place) | (code == _ALL_TOGETHER)
         if assumption.mildest is not None and chosen.any():
             changed = assumption.mildest(changed, chosen)
-    milder_severity, milder_mark = _worst(evaluate(cases_of(changed, at), at))
+    milder = with_shut_off(cases_of(changed, at), at)
+    milder_severity, milder_mark = _worst(evaluate(milder, at))
     moved = (milder_severity < severity[room]) | (milder_mark < mark[room])
     return asked & _moved_by(assumed, base.table.given.count, room, code, moved)
 

@@ -24,6 +24,7 @@ _NOT_BY_CASE: Final = frozenset(
         "given",
         "conditions",
         "stock",
+        "lines",
         "sources",
         "air",
         "failed",

@@ -9,6 +9,7 @@ import numpy as np
 from service.audit.columns import (
     CHARGED_AT,
     FILLED_BY,
+    INSULATIONS,
     UNKNOWN,
     VENTS,
     VESSEL_KINDS,
@@ -18,11 +19,22 @@ from service.audit.columns import (
     is_one_of,
 )
 from service.audit.conditions import Conditions, known
-from service.physics.arrays import Floats, Integers, Mask
-from service.physics.constants import OXYGEN_IN_AIR
+from service.audit.lines import Flows
+from service.physics.arrays import Floats, Integers, Mask, quotient, sum_by_group
+from service.physics.constants import OXYGEN_IN_AIR, STANDARD_PRESSURE
 from service.physics.evaporation import dry_ice_mass_rate
-from service.physics.filling import filling_gas_rate, filling_time
+from service.physics.filling import filling_gas_rate, filling_time, flash_fraction
+from service.physics.fluids import FLUIDS
 from service.physics.gas import gas_density, gas_volume_of_mass
+from service.physics.insulation_loss import (
+    HELIUM_BARE,
+    HELIUM_WITH_MULTILAYER,
+    JACKET_LEAKS,
+    JACKET_OPEN,
+    evaporation_by_heat,
+    vessel_surface,
+)
+from service.physics.outflow import SHORT_PIPE, bore_area, liquid_outflow
 from service.physics.real_gas import REAL_GASES, compressed_gas_density
 
 _AUTOMATIC, _ATTENDED, _EXCHANGED = range(len(FILLED_BY))
@@ -32,6 +44,16 @@ _WITHDRAWN = VESSEL_STATES.index("withdrawn")
 ICE: Final = VESSEL_KINDS.index("dry-ice-box")
 CYLINDER: Final = VESSEL_KINDS.index("cylinder")
 MAGNET: Final = VESSEL_KINDS.index("magnet")
+PRESSURISED: Final = VESSEL_KINDS.index("pressurised-dewar")
+_TIPPING: Final = (VESSEL_KINDS.index("open-dewar"), PRESSURISED)
+_MULTILAYER: Final = INSULATIONS.index("vacuum-multilayer")
+_VACUUM: Final = (_MULTILAYER, INSULATIONS.index("vacuum-powder"))
+
+# A wall colder than this takes all air that reaches it. [K]  Methods G3.
+_AIR_FREEZES: Final = 60.0
+# Hose of a dewar, where nobody recorded it. Common practice, no source.
+HOSE_BORE: Final = 0.010  # [m]
+HOSE_PRESSURE: Final = STANDARD_PRESSURE + 150e3  # [Pa] absolute
 
 # From the high level to the shut valve, where nobody recorded it. [s]  Judging 1.
 CLOSES_IN: Final = 60.0
@@ -58,12 +80,24 @@ class Inventory:
     spilt: Floats  # gas from ice emptied on the floor [m3/s]
     filling: Floats  # gas lost into the room while it is filled [m3/s]
     filled_in: Floats  # how long that takes [s]
+    tipped: Floats  # gas of liquid that is spilt on the floor, at once [m3]
+    hose: Floats  # gas out of a withdrawal hose that is broken [m3/s]
+    hose_lasts: Floats  # [s]
+    leak: Floats  # gas once its insulating vacuum is lost [m3/s]
+    torn: Floats  # the same with its jacket open to the room [m3/s]; 0 where that is no more
+    leak_lasts: Floats  # [s]
+    torn_lasts: Floats  # [s]
+    heat_flux: Floats  # through the wall once the vacuum is lost [W/m2]
+    cold_area: Floats  # [m2]
+    quench: Floats  # gas of a magnet that quenches [m3]
+    quench_share: Floats  # of it into the room, as expected [1]
     overfill: Floats  # gas when automatic filling does not stop [m3/s]
+    overfill_liquid: Floats  # the same as liquid [kg/s]
     overfill_lasts: Floats  # until a shut-off that may be relied on closes [s]
     shut_off_holds: Mask
 
 
-def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
+def inventory(given: Columns, room: Conditions, flows: Flows, at: np.datetime64) -> Inventory:
     """Work out what each vessel holds and loses."""
     vessels, fluids = given.vessels, given.fluids
     # Litres are of liquid; ice is kept by mass.
@@ -76,7 +110,7 @@ def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
     contents = known(vessels.contents_mass, vessels.contents_volume * density)
     # More than its capacity is a record of its own, and then that is what it holds.
     full = np.fmax(capacity, contents)
-    holds = count_holds(vessels.count_due, vessels.filled_by, at)
+    holds = count_holds(vessels.count_due, vessels.filled_by, vessels.line, at)
     empty = holds & (vessels.state == _EMPTY)
     recorded = np.where(empty, 0.0, np.where(holds, known(contents, full), full))
     as_recorded = given.bases.as_recorded[vessels.room]
@@ -97,17 +131,30 @@ def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
     use = np.where(empty | ~present, 0.0, known(vessels.use, 0.0) * density)
     refilled = (vessels.filled_by != _EXCHANGED) & ~is_one_of(vessels.kind, (ICE, CYLINDER))
     mass_rate = evaporation + use
-    fills = known(vessels.fill_flow, given.bases.fill_flow[vessels.room])
+    fills = _fill_flow(given, flows, density)
     litres = known(vessels.capacity_volume, 0.0)
     gas_density_here = 1.0 / gas_per_mass
-
-    def lost(share: Floats | float) -> Floats:
-        return filling_gas_rate(fills, share, density, gas_density_here)
-
     loses = present & (vessels.vent_to != _OUTDOORS) & is_filled_in_room(given)
     automatic = present & (vessels.filled_by == _AUTOMATIC)
     automatic &= ~is_one_of(vessels.kind, (ICE, CYLINDER))
     closes = shut_off_holds(given, at)
+    on_line = vessels.line != UNKNOWN
+    over_mass = np.where(automatic, fills * density, 0.0)
+    over_lasts = np.where(closes, known(vessels.closes_in, CLOSES_IN), np.inf)
+    fed = np.flatnonzero(on_line & (over_mass > 0.0))
+    over_lasts[fed] = np.minimum(over_lasts[fed], flows.held[vessels.line[fed]] / over_mass[fed])
+    filled_in = _filled_in(given, flows, fills, litres, density, loses)
+    lost = filling_gas_rate(
+        quotient(litres, filled_in, where_zero=0.0),
+        _transfer_loss(given, flows),
+        density,
+        gas_density_here,
+    )
+    at_once = np.where(present, held * (1.0 + loss) * gas_per_mass, 0.0)
+    leak = _vacuum_loss(given, held, present)
+    hose = _hose(given, room, density, held, present)
+    quenches = present & vessels.has_quench & (vessels.kind == MAGNET)
+    tips = present & is_one_of(vessels.kind, _TIPPING) & (vessels.mobile != 0)
     loose = given.bases.loose_ice_share[vessels.room]
     spills = present & (vessels.kind == ICE) & (vessels.mobile != 0)
     return Inventory(
@@ -122,16 +169,121 @@ def inventory(given: Columns, room: Conditions, at: np.datetime64) -> Inventory:
         refilled=refilled,
         evaporates_by_kind=_by_kind(given),
         evaporation=evaporation,
-        at_once=np.where(present, held * (1.0 + loss) * gas_per_mass, 0.0),
+        # A magnet that can quench lets its helium go by that, and by nothing else at once.
+        at_once=np.where(quenches, 0.0, at_once),
         rate=mass_rate * gas_per_mass,
         lasts=_lasts(held, mass_rate, refilled),
         spilt=np.where(spills, dry_ice_mass_rate(held, loose) * gas_per_mass, 0.0),
-        filling=np.where(loses, lost(_transfer_loss(given)), 0.0),
-        filled_in=np.where(loses, filling_time(litres, fills), 0.0),
-        overfill=np.where(automatic, lost(1.0), 0.0),
-        overfill_lasts=np.where(closes, known(vessels.closes_in, CLOSES_IN), np.inf),
+        filling=np.where(loses, lost, 0.0),
+        filled_in=filled_in,
+        tipped=np.where(tips, at_once, 0.0),
+        hose=hose * gas_per_mass,
+        hose_lasts=_until_gone(held, hose),
+        leak=leak.mass_rate * gas_per_mass,
+        torn=leak.torn * gas_per_mass,
+        leak_lasts=_until_gone(held, leak.mass_rate),
+        torn_lasts=_until_gone(held, leak.torn),
+        heat_flux=leak.heat_flux,
+        cold_area=leak.area,
+        quench=np.where(quenches, held * gas_per_mass, 0.0),
+        quench_share=_expected_share(given, at),
+        overfill=over_mass * gas_per_mass,
+        overfill_liquid=over_mass,
+        overfill_lasts=over_lasts,
         shut_off_holds=closes,
     )
+
+
+def _until_gone(held: Floats, mass_rate: Floats) -> Floats:
+    gone: Floats = np.full(held.shape, np.inf)
+    np.divide(held, mass_rate, out=gone, where=mass_rate > 0.0)
+    return gone
+
+
+def _fill_flow(given: Columns, flows: Flows, density: Floats) -> Floats:
+    """Liquid that fills each vessel: as recorded, else what its line brings, else the usual."""
+    vessels = given.vessels
+    by_line = np.full(vessels.room.size, np.nan)
+    on_line = np.flatnonzero(vessels.line != UNKNOWN)
+    by_line[on_line] = flows.filling[vessels.line[on_line]] / density[on_line]
+    usual = given.bases.fill_flow[vessels.room]
+    return known(known(vessels.fill_flow, by_line), usual)
+
+
+def _filled_in(
+    given: Columns, flows: Flows, fills: Floats, litres: Floats, density: Floats, loses: Mask
+) -> Floats:
+    """How long each vessel fills; those of one line together, with no more than it brings."""
+    vessels = given.vessels
+    alone = np.where(loses, filling_time(litres, fills), 0.0)
+    together = np.flatnonzero(loses & (vessels.line != UNKNOWN))
+    if not together.size:
+        return alone
+    line = vessels.line[together]
+    count = given.lines.room.size
+    volume = sum_by_group(litres[together], line, count)
+    flow = sum_by_group(fills[together], line, count)
+    most = np.full(count, np.inf)
+    most[line] = known(flows.filling[line] / density[together], np.inf)
+    time = quotient(volume, np.minimum(flow, most), where_zero=0.0)
+    alone[together] = time[line]
+    return alone
+
+
+@dataclass(frozen=True, slots=True)
+class _VacuumLoss:
+    area: Floats  # [m2]
+    heat_flux: Floats  # [W/m2]
+    mass_rate: Floats  # [kg/s]
+    torn: Floats  # with the jacket open to the room [kg/s]
+
+
+def _vacuum_loss(given: Columns, held: Floats, present: Mask) -> _VacuumLoss:
+    """What evaporates from each vessel once its vacuum is lost; none where it has no vacuum."""
+    vessels, fluids = given.vessels, given.fluids
+    evacuated = present & is_evacuated(vessels.insulation, vessels.kind) & (held > 0.0)
+    area = known(vessels.cold_area, vessel_surface(known(vessels.capacity_volume, 0.0)))
+    cold = fluids.boiling_point[vessels.fluid] < _AIR_FREEZES
+    layered = vessels.insulation == _MULTILAYER
+    flux = np.where(cold, np.where(layered, HELIUM_WITH_MULTILAYER, HELIUM_BARE), JACKET_LEAKS)
+    latent = fluids.latent_heat[vessels.fluid]
+    return _VacuumLoss(
+        area=area,
+        heat_flux=np.where(evacuated, flux, 0.0),
+        mass_rate=np.where(evacuated, evaporation_by_heat(area, flux, latent), 0.0),
+        torn=np.where(evacuated & ~cold, evaporation_by_heat(area, JACKET_OPEN, latent), 0.0),
+    )
+
+
+def is_evacuated(insulation: Integers, kind: Integers) -> Mask:
+    """Tell which vessels have an insulating vacuum; one that nobody describes has."""
+    evacuated: Mask = (insulation == UNKNOWN) | is_one_of(insulation, _VACUUM)
+    return evacuated & ~is_one_of(kind, (ICE, CYLINDER))
+
+
+def _hose(given: Columns, room: Conditions, density: Floats, held: Floats, present: Mask) -> Floats:
+    """Liquid out of a withdrawal hose that is broken right through [kg/s]."""
+    vessels = given.vessels
+    has_hose = present & (vessels.kind == PRESSURISED) & (held > 0.0)
+    out = np.zeros(vessels.room.size)
+    rows = np.flatnonzero(has_hose)
+    out[rows] = liquid_outflow(
+        bore_area(known(vessels.withdrawal_bore[rows], HOSE_BORE)),
+        density[rows],
+        known(vessels.working_pressure[rows], HOSE_PRESSURE),
+        room.pressure[vessels.room[rows]],
+        discharge_coefficient=SHORT_PIPE,
+    )
+    return out
+
+
+def _expected_share(given: Columns, at: np.datetime64) -> Floats:
+    """Share of a magnet's helium that comes into the room although it has a pipe."""
+    vessels = given.vessels
+    sound = (vessels.pipe_due > at) & (vessels.outlet_clear == 1)
+    by_pipe = np.where(sound, given.bases.inspected_pipe_share[vessels.room], 1.0)
+    share = known(vessels.quench_share, by_pipe)
+    return np.where(vessels.has_pipe, share, 1.0)
 
 
 def is_filled_in_room(given: Columns) -> Mask:
@@ -154,14 +306,30 @@ def shut_off_holds(given: Columns, at: np.datetime64) -> Mask:
     return holds
 
 
-def _transfer_loss(given: Columns) -> Floats:
-    """Share of the liquid that is lost: more into a warm vessel, and more of helium."""
+def _transfer_loss(given: Columns, flows: Flows) -> Floats:
+    """Share of the liquid that is lost: more into a warm vessel, of helium, and under pressure."""
     vessels, bases = given.vessels, given.bases
     loss = bases.fill_loss[vessels.room]
     helium = given.fluids.helium[vessels.fluid]
     loss = np.where(helium, np.maximum(loss, bases.helium_fill_loss[vessels.room]), loss)
     warm = vessels.state == _EMPTY
-    return np.where(warm, np.maximum(loss, bases.warm_fill_loss[vessels.room]), loss)
+    loss = np.where(warm, np.maximum(loss, bases.warm_fill_loss[vessels.room]), loss)
+    fed = np.flatnonzero((vessels.line != UNKNOWN) & (vessels.filled_by != _EXCHANGED))
+    if fed.size:
+        loss[fed] = np.maximum(loss[fed], _flash(given, flows, fed))
+    return loss
+
+
+def _flash(given: Columns, flows: Flows, rows: Integers) -> Floats:
+    """Share that flashes from the pressure of the line; none of a fluid without an equation."""
+    fluid, pressure = given.vessels.fluid[rows], flows.pressure[given.vessels.line[rows]]
+    share = np.zeros(rows.size)
+    for code in np.unique(fluid).tolist():
+        name = given.gases[int(given.fluids.gas[code])]
+        of_it = np.flatnonzero(fluid == code)
+        if name in FLUIDS and not FLUIDS[name].solid:
+            share[of_it] = flash_fraction(name, pressure[of_it])
+    return share
 
 
 def _charge(given: Columns, charged: Mask) -> Floats:
@@ -174,10 +342,10 @@ def _charge(given: Columns, charged: Mask) -> Floats:
     return vessels.capacity_volume[rows] * density
 
 
-def count_holds(count_due: Moments, filled_by: Integers, at: np.datetime64) -> Mask:
+def count_holds(count_due: Moments, filled_by: Integers, line: Integers, at: np.datetime64) -> Mask:
     """Tell where a count may be relied on: not overdue, and no line fills the vessel meanwhile."""
     # A comparison with not-a-time is false, so what was never counted does not hold.
-    holds: Mask = (count_due > at) & (filled_by != _AUTOMATIC)
+    holds: Mask = (count_due > at) & (filled_by != _AUTOMATIC) & (line == UNKNOWN)
     return holds
 
 

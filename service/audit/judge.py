@@ -32,6 +32,7 @@ from service.audit.rules.rule import (
 )
 from service.audit.rules.words import number
 from service.audit.severity import nearest
+from service.audit.shut_off import with_shut_off
 from service.audit.told import Leading, Told
 from service.audit.turns import next_turns
 from service.physics.arrays import Floats, Integers, Mask
@@ -85,7 +86,7 @@ def _judged(
 
 
 def _told(tables: Tables, judged: Sequence[tuple[Rule, Judged]], moment: np.datetime64) -> Told:
-    bare = with_boost(cases_of(without_margins(tables.cases.table.given), moment), moment)
+    bare = _with_alarms(cases_of(without_margins(tables.cases.table.given), moment), moment)
     return Told(
         tables=tables,
         without=bare,
@@ -95,7 +96,7 @@ def _told(tables: Tables, judged: Sequence[tuple[Rule, Judged]], moment: np.date
 
 
 def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) -> Tables:
-    table = with_boost(case_table(rooms, at), moment)
+    table = _with_alarms(case_table(rooms, at), moment)
     cases = evaluate(table, moment)
     assumed = assumptions(table)
     sound = _sound(table)
@@ -114,6 +115,11 @@ def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) ->
         incoming=evaluate_incoming(came, cases, moment),
         incoming_records=case_records(rooms, sound, came.table),
     )
+
+
+def _with_alarms(table: CaseTable, moment: np.datetime64) -> CaseTable:
+    """Cases with what a detector starts or ends in them."""
+    return with_boost(with_shut_off(table, moment), moment)
 
 
 def _sound(table: CaseTable) -> Integers:

@@ -2,13 +2,22 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from typing import Any, Final
 
 import numpy as np
 
 from service.audit.columns import Columns
+from service.audit.conditions import Conditions
+from service.audit.inventory import Inventory
 from service.audit.sources import Sources
 from service.physics.arrays import Floats, Integers, Mask, sum_by_group
+
+#: Forms of a release that differ in severity, or in whether they count.
+VARIANTS: Final = ("expected", "pipe-failed", "jacket-open")
+EXPECTED, PIPE_FAILED, JACKET_OPEN = range(len(VARIANTS))
+NO_VARIANT: Final = -1
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,6 +39,7 @@ class Rows:
     member_row: Integers
     member_source: Integers
     member_gas: Floats  # [m3]
+    variant: Integers  # row of VARIANTS; -1 where a release has but one form
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,6 +48,8 @@ class Raising:
 
     given: Columns
     found: Sources
+    stock: Inventory
+    conditions: Conditions
     hazard: int
 
     @property
@@ -68,6 +80,7 @@ def no_rows(hazard: int) -> Rows:
         member_row=none,
         member_source=none,
         member_gas=no_numbers,
+        variant=none,
     )
 
 
@@ -92,6 +105,64 @@ def lasting_rows(
         member_row=row,
         member_source=source,
         member_gas=gas,
+        variant=np.full(room.size, NO_VARIANT),
+    )
+
+
+def in_variant(rows: Rows, variant: int) -> Rows:
+    """The same rows in a form of their release."""
+    return replace(rows, variant=np.full(rows.room.size, variant))
+
+
+def stacked(hazard: int, parts: Sequence[Rows]) -> Rows:
+    """Rows of several kinds of one release, one after another."""
+    width = max(part.durations.shape[1] for part in parts)
+
+    def padded(values: Floats) -> Floats:
+        return np.pad(values, ((0, 0), (0, width - values.shape[1])))
+
+    def joined(name: str) -> Any:
+        return np.concatenate([getattr(part, name) for part in parts])
+
+    firsts = np.cumsum([0, *(part.room.size for part in parts[:-1])])
+    return Rows(
+        room=joined("room"),
+        hazard=np.full(sum(part.room.size for part in parts), hazard),
+        instant=joined("instant"),
+        instant_level=joined("instant_level"),
+        durations=np.concatenate([padded(part.durations) for part in parts]),
+        rates=np.concatenate([padded(part.rates) for part in parts]),
+        rates_level=np.concatenate([padded(part.rates_level) for part in parts]),
+        member_row=np.concatenate(
+            [part.member_row + first for part, first in zip(parts, firsts, strict=True)]
+        ),
+        member_source=joined("member_source"),
+        member_gas=joined("member_gas"),
+        variant=joined("variant"),
+    )
+
+
+def at_once_rows(
+    seen: Raising,
+    room: Integers,
+    volume: Floats,
+    level: Floats,
+    members: tuple[Integers, Integers, Floats],
+) -> Rows:
+    """Rows of a release that is all out at time zero."""
+    row, source, gas = members
+    return Rows(
+        room=room,
+        hazard=np.full(room.size, seen.hazard),
+        instant=volume,
+        instant_level=level,
+        durations=seen.given.bases.sustained[room][:, np.newaxis],
+        rates=np.zeros((room.size, 1)),
+        rates_level=np.zeros((room.size, 1)),
+        member_row=row,
+        member_source=source,
+        member_gas=gas,
+        variant=np.full(room.size, NO_VARIANT),
     )
 
 

@@ -3,25 +3,34 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final
 
 import numpy as np
 
-from service.audit.columns import Columns
+from service.audit.columns import CONTROL_KINDS, UNKNOWN, Columns
+from service.audit.conditions import Conditions
 from service.audit.hazards import HAZARDS
+from service.audit.inventory import Inventory
 from service.audit.release_rows import (
+    EXPECTED,
+    JACKET_OPEN,
+    PIPE_FAILED,
     Raising,
     Rows,
+    at_once_rows,
     by_segment,
     distinct_ends,
+    in_variant,
     lasting_rows,
     leaders,
     no_rows,
+    stacked,
     steady_rows,
 )
-from service.audit.sources import Sources
+from service.audit.sources import NO_LINE, Sources
 from service.physics.arrays import Floats, Integers, sum_by_group
+from service.physics.pool import bund_segments
 
 BOIL_OFF: Final = "boil-off"
 FILLING: Final = "filling"
@@ -29,6 +38,11 @@ OVERFILL: Final = "overfill"
 LARGEST_VESSEL: Final = "largest-vessel"
 ALL_VESSELS: Final = "all-vessels"
 SPILL: Final = "spill"
+VACUUM_LOSS: Final = "vacuum-loss"
+LINE_BREAK: Final = "line-break"
+QUENCH: Final = "quench"
+
+_BUND: Final = CONTROL_KINDS.index("bund")
 
 DETECTION: Final = "detection"
 VENTILATION: Final = "ventilation"
@@ -135,16 +149,153 @@ def overfill(seen: Raising) -> Rows:
         ],
         axis=1,
     )
+    keys = np.column_stack([keys, _bund_area(seen, member)])
     _, first, alike = np.unique(keys, axis=0, return_index=True, return_inverse=True)
     in_record_order = np.argsort(first)
     row_of = np.empty_like(in_record_order)
     row_of[in_record_order] = np.arange(first.size)
     source = member[first[in_record_order]]
     members = (row_of[alike.reshape(-1)], member)
-    return steady_rows(seen, source, found.overfill[source], found.overfill_lasts[source], members)
+    rows = steady_rows(seen, source, found.overfill[source], found.overfill_lasts[source], members)
+    return _slowed_by_bunds(seen, rows, source)
+
+
+def _bund_area(seen: Raising, source: Integers) -> Floats:
+    """Floor inside the bund of the vessel of a source, or of its room; 0 where there is none."""
+    controls = seen.given.controls
+    bunds = np.flatnonzero((controls.kind == _BUND) & (controls.area > 0.0))
+    # The largest wets the most floor.
+    of_vessel = np.zeros(seen.given.vessels.room.size)
+    of_room = np.zeros(seen.given.count)
+    named = controls.vessel[bunds] != UNKNOWN
+    np.maximum.at(of_vessel, controls.vessel[bunds[named]], controls.area[bunds[named]])
+    np.maximum.at(of_room, controls.room[bunds[~named]], controls.area[bunds[~named]])
+    own = of_vessel[seen.found.vessel[source]]
+    return np.where(own > 0.0, own, of_room[seen.found.room[source]])
+
+
+def _slowed_by_bunds(seen: Raising, rows: Rows, source: Integers) -> Rows:
+    """The same rows, with what runs into a bund evaporating no faster than its floor allows."""
+    area = _bund_area(seen, source)
+    held = np.flatnonzero(area > 0.0)
+    if not held.size:
+        return rows
+    found, fluids = seen.found, seen.given.fluids
+    vessel, room = found.vessel[source[held]], found.room[source[held]]
+    feed = seen.stock.overfill_liquid[vessel]
+    sustained = seen.given.bases.sustained[room]
+    floor = seen.conditions.temperature[room] - fluids.boiling_point[found.fluid[source[held]]]
+    durations, masses = bund_segments(
+        feed,
+        np.minimum(found.overfill_lasts[source[held]], sustained),
+        area[held],
+        np.maximum(floor, 1.0),
+        fluids.latent_heat[found.fluid[source[held]]],
+        longest=sustained,
+    )
+    width = durations.shape[1] + 1
+    lengths, rates = (
+        np.pad(table, ((0, 0), (0, width - table.shape[1])))
+        for table in (rows.durations, rows.rates)
+    )
+    lengths[held, : width - 1] = durations
+    lengths[held, -1] = np.maximum(sustained - durations.sum(axis=1), 0.0)
+    rates[held] = 0.0
+    rates[held, : width - 1] = masses * seen.stock.gas_per_mass[vessel][:, np.newaxis]
+    weight = seen.weight[source][:, np.newaxis]
+    gas = (lengths * rates).sum(axis=1)
+    return replace(
+        rows,
+        durations=lengths,
+        rates=rates,
+        rates_level=rates * weight,
+        member_gas=gas[rows.member_row],
+    )
+
+
+def vacuum_loss(seen: Raising) -> Rows:
+    """The vessel whose lost vacuum lets most gas out, of each fluid; and with its jacket open."""
+    return stacked(
+        seen.hazard,
+        [
+            _leaking(seen, seen.found.leak, seen.found.leak_lasts),
+            in_variant(_leaking(seen, seen.found.torn, seen.found.torn_lasts), JACKET_OPEN),
+        ],
+    )
+
+
+def _leaking(seen: Raising, rate: Floats, lasts: Floats) -> Rows:
+    found = seen.found
+    member = np.flatnonzero(seen.raises & (rate > 0.0))
+    if not member.size:
+        return no_rows(seen.hazard)
+    amount = rate[member] * seen.weight[member]
+    source = member[leaders(found.room[member], found.fluid[member], amount, member)]
+    return steady_rows(seen, source, rate[source], lasts[source], (np.arange(source.size), source))
+
+
+def line_break(seen: Raising) -> Rows:
+    """Each line that brings gas into the room, and the hose of each dewar that is drawn from."""
+    found = seen.found
+    source = np.flatnonzero(seen.raises & (found.broken > 0.0))
+    if not source.size:
+        return no_rows(seen.hazard)
+    # Of hoses the one that lets most out, of each fluid; each line by itself.
+    hoses = source[found.line[source] == NO_LINE]
+    amount = found.broken[hoses] * seen.weight[hoses]
+    worst = hoses[leaders(found.room[hoses], found.fluid[hoses], amount, hoses)]
+    source = np.concatenate([worst, source[found.line[source] != NO_LINE]])
+    source = source[np.lexsort((source, found.room[source]))]
+    return steady_rows(
+        seen,
+        source,
+        found.broken[source],
+        found.broken_lasts[source],
+        (np.arange(source.size), source),
+    )
+
+
+def quench(seen: Raising) -> Rows:
+    """Each magnet's helium, as its pipe is expected to leave it to the room, and with that failed.
+
+    Without a pipe all of it comes into the room, and there is nothing that could fail.
+    """
+    found = seen.found
+    member = np.flatnonzero(seen.raises & (found.quench > 0.0))
+    if not member.size:
+        return no_rows(seen.hazard)
+    piped = member[seen.given.vessels.has_pipe[found.vessel[member]]]
+    expected = _quenched(seen, member, found.quench_share[member])
+    failed = _quenched(seen, piped, np.ones(piped.size))
+    return stacked(seen.hazard, [in_variant(expected, EXPECTED), in_variant(failed, PIPE_FAILED)])
+
+
+def _quenched(seen: Raising, source: Integers, share: Floats) -> Rows:
+    gas = seen.found.quench[source] * share
+    members = (np.arange(source.size), source, gas)
+    return at_once_rows(seen, seen.found.room[source], gas, gas * seen.weight[source], members)
 
 
 def spill(seen: Raising) -> Rows:
+    """The largest vessel that can tip, of each fluid: liquid at once, ice in time."""
+    return stacked(seen.hazard, [_spilt_liquid(seen), _spilt_ice(seen)])
+
+
+def _spilt_liquid(seen: Raising) -> Rows:
+    """Liquid on the floor, gone within seconds, so that all of it counts at once."""
+    found = seen.found
+    member = np.flatnonzero(seen.raises & (found.tipped > 0.0))
+    if not member.size:
+        return no_rows(seen.hazard)
+    gas = found.tipped[member]
+    amount = gas * seen.weight[member]
+    chosen = leaders(found.room[member], found.fluid[member], amount, member)
+    source = member[chosen]
+    members = (np.arange(source.size), source, gas[chosen])
+    return at_once_rows(seen, found.room[source], gas[chosen], amount[chosen], members)
+
+
+def _spilt_ice(seen: Raising) -> Rows:
     """The largest box of ice that can be emptied on the floor, of each fluid."""
     found = seen.found
     member = np.flatnonzero(seen.raises & (found.spilt > 0.0))
@@ -181,7 +332,7 @@ def largest_vessel(seen: Raising) -> Rows:
     kept = np.flatnonzero(row_of_group[group] >= 0)
     volume = sum_by_group(gas, group, groups.size)
     members = (row_of_group[group[kept]], member[kept], gas[kept])
-    return _at_once(seen, room[chosen], volume[chosen], level[chosen], members)
+    return at_once_rows(seen, room[chosen], volume[chosen], level[chosen], members)
 
 
 def _only_fluid(fluid: Integers, group: Integers, count: int) -> Integers:
@@ -203,29 +354,7 @@ def all_vessels(seen: Raising) -> Rows:
     row, gas = row.reshape(-1), found.at_once[member]
     volume = sum_by_group(gas, row, rooms.size)
     level = sum_by_group(gas * seen.weight[member], row, rooms.size)
-    return _at_once(seen, rooms, volume, level, (row, member, gas))
-
-
-def _at_once(
-    seen: Raising,
-    room: Integers,
-    volume: Floats,
-    level: Floats,
-    members: tuple[Integers, Integers, Floats],
-) -> Rows:
-    row, source, gas = members
-    return Rows(
-        room=room,
-        hazard=np.full(room.size, seen.hazard),
-        instant=volume,
-        instant_level=level,
-        durations=seen.given.bases.sustained[room][:, np.newaxis],
-        rates=np.zeros((room.size, 1)),
-        rates_level=np.zeros((room.size, 1)),
-        member_row=row,
-        member_source=source,
-        member_gas=gas,
-    )
+    return at_once_rows(seen, rooms, volume, level, (row, member, gas))
 
 
 RELEASES: Final = (
@@ -257,6 +386,15 @@ RELEASES: Final = (
         method=("filling/overfill", "ventilation/hold", "ventilation/restore"),
     ),
     Release(
+        slug=VACUUM_LOSS,
+        build=vacuum_loss,
+        sustained=False,
+        noticed=True,
+        counts_in=_AS_MEASURED,
+        safeguards=_ACCIDENT,
+        method=("vacuum-loss/heat-flux", "ventilation/hold", "ventilation/restore"),
+    ),
+    Release(
         slug=LARGEST_VESSEL,
         build=largest_vessel,
         sustained=False,
@@ -281,14 +419,44 @@ RELEASES: Final = (
         noticed=True,
         counts_in=_AS_MEASURED,
         safeguards=_ACCIDENT,
-        method=("dry-ice/share-per-hour", "ventilation/hold", "ventilation/restore"),
+        method=(
+            "spill/pool-on-floor",
+            "dry-ice/share-per-hour",
+            "ventilation/hold",
+            "ventilation/restore",
+        ),
+    ),
+    Release(
+        slug=LINE_BREAK,
+        build=line_break,
+        sustained=False,
+        noticed=True,
+        counts_in=_AS_MEASURED,
+        safeguards=(*_ACCIDENT, SHUT_OFF),
+        method=(
+            "line-break/liquid",
+            "line-break/gas",
+            "ventilation/hold",
+            "ventilation/restore",
+        ),
+    ),
+    Release(
+        slug=QUENCH,
+        build=quench,
+        sustained=False,
+        noticed=True,
+        counts_in=_AS_MEASURED,
+        safeguards=_ACCIDENT,
+        method=("quench/mean-and-peak", "ventilation/restore"),
     ),
 )
 
 
-def all_rows(given: Columns, found: Sources) -> tuple[tuple[int, Rows], ...]:
+def all_rows(
+    given: Columns, room: Conditions, stock: Inventory, found: Sources
+) -> tuple[tuple[int, Rows], ...]:
     """Build every release for every hazard that anything in the rooms raises; none is left out."""
-    raised = [Raising(given, found, code) for code in range(len(HAZARDS))]
+    raised = [Raising(given, found, stock, room, code) for code in range(len(HAZARDS))]
     built = [
         (code, release.build(seen))
         for code, release in enumerate(RELEASES)

@@ -22,8 +22,9 @@ from service.audit.columns import (
 from service.audit.conditions import Conditions, known
 from service.audit.hazards import ABOUT_OXYGEN, SIGN
 from service.audit.outages import out_now
-from service.audit.releases import OVERFILL, RELEASES
+from service.audit.releases import LINE_BREAK, OVERFILL, RELEASES
 from service.audit.solve import Results, proven_to_hold
+from service.audit.sources import NO_LINE
 from service.physics.arrays import Floats, Integers, Mask, quotient, rounded, sum_by_group
 from service.physics.constants import OXYGEN_IN_AIR
 from service.physics.detector import alarm_time
@@ -47,6 +48,7 @@ _PIT = ROOM_KINDS.index("pit")
 _NOTICED: Final = np.array([release.noticed for release in RELEASES])
 _BOOSTED = AIRFLOWS.index(BOOSTED)
 _OVERFILL = [release.slug for release in RELEASES].index(OVERFILL)
+_LINE_BREAK = [release.slug for release in RELEASES].index(LINE_BREAK)
 
 # A mark that is not there, as a level that no course reaches.
 _BEYOND_ALL: Final = 1e9
@@ -277,10 +279,17 @@ def _ventilation(table: CaseTable, results: Results) -> Mask:
 
 
 def _shut_off(table: CaseTable, results: Results) -> Mask:
-    """Closed by something that does not depend on what failed, tested, and in time."""
+    """Closed by something that does not depend on what failed, tested, and in time.
+
+    A line that its detector has to shut was shut where that alarms: else the case with it is the
+    case without, and goes as far.
+    """
     automatic = np.zeros(table.size, dtype=np.bool_)
     overfills = table.release[table.member_row] == _OVERFILL
     vessel = table.sources.vessel[table.member_source[overfills]]
-    rows = table.member_row[overfills]
-    automatic[rows] = table.stock.shut_off_holds[vessel]
-    return automatic & ~results.crossed[:, 1] & ~results.crossed[:, 2]
+    automatic[table.member_row[overfills]] = table.stock.shut_off_holds[vessel]
+    line = table.sources.line[table.member_source]
+    broken = np.flatnonzero((table.release[table.member_row] == _LINE_BREAK) & (line != NO_LINE))
+    automatic[table.member_row[broken]] = table.lines.shut_off_holds[line[broken]]
+    shut: Mask = automatic & ~results.crossed[:, 1] & ~results.crossed[:, 2]
+    return shut

@@ -8,6 +8,7 @@ from service.audit.air import AIRFLOWS, AS_MEASURED, LOST
 from service.audit.assessment import SEVERITIES
 from service.audit.cases import CaseTable
 from service.audit.columns import UNKNOWN
+from service.audit.release_rows import PIPE_FAILED
 from service.audit.releases import (
     ALL_VESSELS,
     DETECTION,
@@ -40,7 +41,8 @@ def case_severity(table: CaseTable, results: Results, guards: Safeguards) -> Int
     by_table = table.given.bases.severity[table.room, np.maximum(row - 1, 0), column]
     lower = (table.airflow == AIRFLOWS.index(LOST)) & _told_of_loss(table)[table.network]
     everything = table.release == _SLUGS.index(ALL_VESSELS)
-    by_table = np.where(lower | everything, np.maximum(by_table - 1, OBSERVATION), by_table)
+    lower |= everything | (table.variant == PIPE_FAILED)
+    by_table = np.where(lower, np.maximum(by_table - 1, OBSERVATION), by_table)
     unlikely = everything & ~_may_all_go(table)[table.network]
     by_table = np.where(unlikely, OBSERVATION, by_table)
     least = np.where(by_itself, _WITHOUT_ACCIDENT[results.mark], NONE)

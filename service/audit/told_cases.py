@@ -18,6 +18,7 @@ from service.audit.hazards import (
     TOXIC,
 )
 from service.audit.marks import limit_name, measure_name
+from service.audit.release_rows import NO_VARIANT, VARIANTS
 from service.audit.releases import RELEASES, Release
 from service.audit.rules.rule import Tables
 from service.audit.solve import Results
@@ -139,14 +140,30 @@ def _described(tables: Tables) -> list[_Fields]:
             "counts": counts,
             "fluids": fluids,
             "vessels": vessels,
+            "lines": lines,
+            "variant": None if variant == NO_VARIANT else VARIANTS[variant],
             "required_reason": _why_none(at_once=at_once, held=held),
             "mark": mark,
             "method": methods(RELEASES[release], hazard, at_once=at_once, pushes=pushes),
         }
-        for release, airflow, hazard, counts, mark, at_once, held, pushes, fluids, vessels in zip(
+        for (
+            release,
+            airflow,
+            hazard,
+            variant,
+            counts,
+            mark,
+            at_once,
+            held,
+            pushes,
+            fluids,
+            vessels,
+            lines,
+        ) in zip(
             table.release.tolist(),
             table.airflow.tolist(),
             table.hazard.tolist(),
+            table.variant.tolist(),
             table.counts.tolist(),
             tables.cases.results.mark.tolist(),
             table.at_once.tolist(),
@@ -154,6 +171,7 @@ def _described(tables: Tables) -> list[_Fields]:
             pushed.tolist(),
             tables.records.fluids,
             tables.records.vessels,
+            tables.records.lines,
             strict=True,
         )
     ]
@@ -165,13 +183,17 @@ def _why_none(*, at_once: bool, held: bool) -> str | None:
     return None if held else _BEYOND
 
 
+_POOL: Final = "spill/pool-on-floor"
+_ICE: Final = "dry-ice/share-per-hour"
+
+
 def methods(release: Release, hazard: int, *, at_once: bool, pushes: bool) -> tuple[str, ...]:
     """Methods that a case rests on, by their slugs."""
     mixing = "mixing/displacement" if pushes else "mixing/while-displacing"
     return (
         "gas/ideal-at-site",
         "ventilation/piecewise-constant",
-        *release.method,
+        *(slug for slug in release.method if slug != (_ICE if at_once else _POOL)),
         *((mixing,) if at_once else ()),
         *_OF_HAZARD[HAZARDS[hazard].slug],
     )

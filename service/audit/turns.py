@@ -45,6 +45,13 @@ def _ageing(tables: Tables, at: np.datetime64) -> Iterator[tuple[Integers, Momen
     yield vessels.room[relied_on], vessels.count_due[relied_on]
     closes = (vessels.filled_by == _AUTOMATIC) & (vessels.high_level == 1) & table.stock.present
     yield vessels.room[closes], vessels.shut_off_test_due[closes]
+    lines = table.given.lines
+    acts = table.lines.shut_off_holds
+    yield lines.room[acts], lines.test_due[acts]
+    # A count that counts for nothing now cannot age, but one that holds may decide how long.
+    yield lines.room, lines.source_count_due
+    piped = vessels.has_pipe & table.stock.present
+    yield vessels.room[piped], vessels.pipe_due[piped]
     would_run = units.state == _RUNNING
     outage = next_outage_turn(units.outage_begins, units.outage_ends, at)
     yield units.room[would_run], outage[would_run]

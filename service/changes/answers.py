@@ -55,6 +55,7 @@ _WORST_FIELDS: Final = (
     "to_critical_s",
     "recovered_s",
     "mark",
+    "variant",
 )
 _ABOUT_GAS: Final = ("toxic", "flammable")
 
@@ -117,6 +118,7 @@ def _brief(case: Case) -> dict[str, Any]:
     brief["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
     brief["fluids"] = list(case.fluids)
     brief["vessel_ids"] = [vessel.id for vessel in case.vessels]
+    brief["line_ids"] = [line.id for line in case.lines]
     brief["from_room"] = None if case.from_room is None else plain(case.from_room)
     return brief
 
@@ -267,6 +269,7 @@ def case_document(case: Case) -> dict[str, Any]:
     document = _fields(case)
     document["vessels"] = [plain(vessel) for vessel in case.vessels]
     document["vessel_ids"] = [vessel.id for vessel in case.vessels]
+    document["lines"] = [plain(line) for line in case.lines]
     document["marks"] = [_mark_document(mark) for mark in case.marks]
     document["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
     document["without_margins"] = dict(case.without_margins)

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from service.audit.cases import CaseTable
 from service.audit.inputs import Reference, RoomValues
-from service.audit.sources import NO_VESSEL
+from service.audit.sources import NO_LINE, NO_VESSEL
 from service.physics.arrays import Integers
 
 UNKNOWN_PURGE_GAS = "unknown purge gas"
@@ -18,6 +18,7 @@ class CaseRecords:
 
     sources: Sequence[Sequence[int]]  # rows of the sources
     vessels: Sequence[tuple[Reference, ...]]
+    lines: Sequence[tuple[Reference, ...]]
     fluids: Sequence[tuple[str, ...]]  # tags, each once
 
 
@@ -29,21 +30,32 @@ def case_records(rooms: Sequence[RoomValues], sound: Integers, table: CaseTable)
     found = [[named[source] for source in row] for row in sources]
     return CaseRecords(
         sources,
-        vessels=[tuple(vessel for vessel, _ in row if vessel is not None) for row in found],
+        vessels=[_of_kind(row, "vessel") for row in found],
+        lines=[_of_kind(row, "supply-line") for row in found],
         fluids=[tuple(dict.fromkeys(fluid for _, fluid in row)) for row in found],
     )
+
+
+def _of_kind(found: Sequence[tuple[Reference | None, str]], kind: str) -> tuple[Reference, ...]:
+    return tuple(record for record, _ in found if record is not None and record.kind == kind)
 
 
 def _source_records(
     rooms: Sequence[RoomValues], sound: Integers, table: CaseTable
 ) -> list[tuple[Reference | None, str]]:
-    """The vessel and the tag of the fluid of each source; purge gas has no vessel."""
-    place = table.given.vessels.source.tolist()
+    """The vessel or line and the tag of the fluid of each source; purge gas has neither."""
+    place, line_place = table.given.vessels.source.tolist(), table.given.lines.source.tolist()
     named: list[tuple[Reference | None, str]] = []
-    for room, vessel in zip(
-        sound[table.sources.room].tolist(), table.sources.vessel.tolist(), strict=True
+    for room, vessel, line in zip(
+        sound[table.sources.room].tolist(),
+        table.sources.vessel.tolist(),
+        table.sources.line.tolist(),
+        strict=True,
     ):
-        if vessel == NO_VESSEL:
+        if line != NO_LINE:
+            supply = rooms[room].lines[line_place[line]]
+            named.append((supply.record, supply.fluid.record.tag))
+        elif vessel == NO_VESSEL:
             fluid = rooms[room].purge_fluid
             named.append((None, UNKNOWN_PURGE_GAS if fluid is None else fluid.record.tag))
         else:

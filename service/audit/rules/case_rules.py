@@ -22,16 +22,20 @@ from service.audit.hazards import (
     TOXIC,
 )
 from service.audit.marks import measure_name
+from service.audit.release_rows import JACKET_OPEN, NO_VARIANT, PIPE_FAILED, VARIANTS
 from service.audit.releases import (
     ALL_VESSELS,
     BOIL_OFF,
     DETECTION,
     FILLING,
+    LINE_BREAK,
     NOBODY_INSIDE,
     OVERFILL,
+    QUENCH,
     RELEASES,
     SHUT_OFF,
     SPILL,
+    VACUUM_LOSS,
     VENTILATION,
 )
 from service.audit.rules.kinds import never
@@ -45,7 +49,15 @@ from service.audit.rules.words import (
     number,
     oxygen_text,
 )
-from service.physics.arrays import Mask
+from service.audit.sources import NO_LINE
+from service.physics.arrays import Mask, rounded
+from service.physics.constants import SECONDS_PER_HOUR
+from service.physics.insulation_loss import JACKET_OPEN as JACKET_OPEN_FLUX
+from service.physics.pool import spread_area, time_to_evaporate
+from service.physics.quench import PEAK_OVER_MEAN
+
+# How long a quench lasts, where nobody recorded it: a quick one. [s]  Methods G7.
+QUENCH_DURATION: Final = 20.0
 
 LOW_MARKS: Final = ("deficient", "danger", "critical")
 HIGH_MARKS: Final = ("enriched", "second", "third")
@@ -66,7 +78,10 @@ _METHOD: Final = {
     BOIL_OFF: "ventilation/piecewise-constant",
     FILLING: "filling/transfer-loss",
     OVERFILL: "filling/overfill",
-    SPILL: "dry-ice/share-per-hour",
+    SPILL: "spill/pool-on-floor",
+    VACUUM_LOSS: "vacuum-loss/heat-flux",
+    LINE_BREAK: "line-break/liquid",
+    QUENCH: "quench/mean-and-peak",
 }
 
 
@@ -194,7 +209,19 @@ def _event(tables: Tables, row: int) -> str:
         which = source if len(vessels) == 1 else f"any one of {source}"
         return f"Automatic filling of {which} with {gas} that does not stop, {air},"
     if release == SPILL:
+        if table.instant[row] > 0.0:
+            return f"All {gas} of {source} spilt on the floor"
         return f"{source} emptied on the floor, {air},"
+    if release == VACUUM_LOSS:
+        torn = ", its jacket torn open," if table.variant[row] == JACKET_OPEN else ""
+        return f"The loss of the insulating vacuum of {source}{torn} with {gas}, {air},"
+    if release == LINE_BREAK:
+        lines = [record.tag for record in tables.records.lines[row]]
+        what = f"supply line {listed(lines)}" if lines else f"the withdrawal hose of {source}"
+        return f"A full break of {what}, or what it leaves open, with {gas}, {air},"
+    if release == QUENCH:
+        failed = table.variant[row] == PIPE_FAILED
+        return f"A quench of {source}, {'its quench pipe failed' if failed else 'as expected'},"
     return f"All {gas} of {source} let go at once"
 
 
@@ -242,13 +269,84 @@ def case_evidence(tables: Tables, row: int) -> dict[str, Any]:
         "alarm_s": number(float(guards.alarm[row])),
         "margin_s": number(float(guards.margin[row])),
         "safeguards": _held(tables, row),
-        "records": [as_record(record) for record in tables.records.vessels[row]],
+        "records": [
+            as_record(record)
+            for record in (*tables.records.vessels[row], *tables.records.lines[row])
+        ],
+        **_of_release(tables, row),
     }
     if hazard.slug in (TOXIC, FLAMMABLE):
         told["peak_pct"] = number(percent * float(results.level[row]))
         told["mean_15min_pct"] = number(percent * float(results.means[row, 0]))
         told["mean_8h_pct"] = number(percent * float(results.means[row, 1]))
     return told
+
+
+def _of_release(tables: Tables, row: int) -> dict[str, Any]:
+    """The numbers that a release rests on, for one from a single vessel or line."""
+    table = tables.cases.table
+    release = RELEASES[int(table.release[row])].slug
+    source = tables.records.sources[row][0]
+    vessel, line = int(table.sources.vessel[source]), int(table.sources.line[source])
+    variant = int(table.variant[row])
+    told: dict[str, Any] = {} if variant == NO_VARIANT else {"variant": VARIANTS[variant]}
+    if release == SPILL and table.instant[row] > 0.0:
+        told |= _pool(tables, row, vessel)
+    elif release == VACUUM_LOSS:
+        flux = JACKET_OPEN_FLUX if variant == JACKET_OPEN else float(table.stock.heat_flux[vessel])
+        told |= {
+            "cold_area_m2": number(float(table.stock.cold_area[vessel])),
+            "heat_flux_kw_m2": number(flux / 1000.0),
+            "relief_outdoors": "not credited: its area is not judged",
+        }
+    elif release == LINE_BREAK:
+        rate = float(table.sources.broken[source]) * SECONDS_PER_HOUR
+        told |= {"gas_m3_h": number(rate), "flows_s": _flows(tables, row)}
+        if line != NO_LINE:
+            told["pressure_kpa_abs"] = number(float(table.lines.pressure[line]) / 1000.0)
+            told["bore_mm"] = number(1000.0 * float(table.lines.bore[line]))
+            told["rupture_kg_h"] = number(float(table.lines.rupture[line]) * SECONDS_PER_HOUR)
+            told["flow_kg_h"] = number(float(table.lines.broken[line]) * SECONDS_PER_HOUR)
+            told["shut_off_holds"] = bool(table.lines.shut_off_holds[line])
+    elif release == QUENCH:
+        duration = known_duration(float(table.given.vessels.quench_duration[vessel]))
+        rate = float(table.instant[row]) / duration
+        told |= {
+            "duration_s": duration,
+            "mean_rate_m3_s": number(rate),
+            "peak_rate_m3_s": number(PEAK_OVER_MEAN * rate),
+            "share_to_room": number(
+                float(table.instant[row]) / float(table.sources.quench[source])
+            ),
+        }
+    return told
+
+
+def known_duration(recorded: float) -> float:
+    """How long a quench lasts, also where nobody recorded it."""
+    return QUENCH_DURATION if np.isnan(recorded) else recorded
+
+
+def _flows(tables: Tables, row: int) -> float | None:
+    """How long a broken line flows."""
+    table = tables.cases.table
+    return number(float(table.durations[row][table.rates[row] > 0.0].sum()))
+
+
+def _pool(tables: Tables, row: int, vessel: int) -> dict[str, Any]:
+    """How large a pool is, and how soon it is gone."""
+    table = tables.cases.table
+    given, room = table.given, int(table.network[row])
+    fluid = int(given.vessels.fluid[vessel])
+    mass = float(table.stock.held_mass[vessel])
+    spread = float(spread_area(mass / float(given.fluids.liquid_density[fluid])))
+    area = float(np.fmin(spread, given.rooms.floor_area[room]))
+    colder = float(table.conditions.temperature[room] - given.fluids.boiling_point[fluid])
+    latent = float(given.fluids.latent_heat[fluid])
+    if area <= 0.0 or colder <= 0.0:
+        return {}
+    gone = float(time_to_evaporate(mass, area, colder, latent))
+    return {"pool_m2": number(area), "pool_gone_s": number(float(rounded(np.float64(gone))))}
 
 
 def _marks(tables: Tables, row: int) -> list[dict[str, Any]]:

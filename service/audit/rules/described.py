@@ -21,7 +21,10 @@ _RELEASES: Final[Mapping[str, str]] = {
     "overfill": "Automatic filling that does not stop",
     "largest-vessel": "The largest vessel or manifold group, let go at once,",
     "all-vessels": "Everything in the room, let go at once,",
-    "spill": "A box of dry ice, emptied on the floor,",
+    "spill": "The largest vessel that can tip, or a box of dry ice, emptied on the floor,",
+    "vacuum-loss": "A vessel that loses its insulating vacuum",
+    "line-break": "A supply line or withdrawal hose that breaks, or is left open,",
+    "quench": "A magnet that quenches, with its pipe as recorded or failed,",
 }
 _HAZARDS: Final[Mapping[str, str]] = {
     "oxygen": "brings oxygen down beyond a mark",

@@ -3,7 +3,6 @@
 from typing import Final
 
 from service.audit.hazards import OXYGEN_HIGH
-from service.audit.releases import SPILL
 from service.audit.rules.case_rules import case_rules
 
 _SOURCE: Final = (
@@ -11,9 +10,4 @@ _SOURCE: Final = (
     "practice, no source"
 )
 
-# No ice is richer in oxygen than air.
-RULES: Final = tuple(
-    rule
-    for rule in case_rules("enrichment", OXYGEN_HIGH, "oxygen", _SOURCE)
-    if rule.release != SPILL
-)
+RULES: Final = case_rules("enrichment", OXYGEN_HIGH, "oxygen", _SOURCE)

@@ -3,7 +3,6 @@
 from typing import Final
 
 from service.audit.hazards import FLAMMABLE, FLAMMABLE_GAS
-from service.audit.releases import SPILL
 from service.audit.rules.case_rules import case_rules
 
 _SOURCE: Final = (
@@ -11,8 +10,4 @@ _SOURCE: Final = (
     "rule of Le Chatelier for several; half and the whole: common practice, no source"
 )
 
-RULES: Final = tuple(
-    rule
-    for rule in case_rules("flammable", FLAMMABLE, FLAMMABLE_GAS, _SOURCE)
-    if rule.release != SPILL
-)
+RULES: Final = case_rules("flammable", FLAMMABLE, FLAMMABLE_GAS, _SOURCE)

@@ -9,9 +9,18 @@ import numpy as np
 from service.audit.air import AIRFLOWS, LOST
 from service.audit.columns import ROOM_KINDS
 from service.audit.hazards import CLEAN, HAZARDS
-from service.audit.releases import ALL_VESSELS, OVERFILL, RELEASES, SPILL
+from service.audit.releases import (
+    ALL_VESSELS,
+    LINE_BREAK,
+    OVERFILL,
+    QUENCH,
+    RELEASES,
+    SPILL,
+    VACUUM_LOSS,
+)
 from service.audit.rules.rule import Tables
 from service.audit.rules.words import at_least, at_most, listed
+from service.audit.sources import NO_LINE
 from service.physics.constants import SECONDS_PER_HOUR
 
 _LITRES = 1000.0  # in a cubic metre
@@ -25,7 +34,61 @@ def remedy(tables: Tables, row: int) -> str:
         return _sustained_remedy(tables, row)
     if release.slug == OVERFILL:
         return _overfill_remedy(tables, row)
-    return _spill_remedy(tables, row) if release.slug == SPILL else _at_once_remedy(tables, row)
+    if release.slug == LINE_BREAK:
+        return _line_remedy(tables, row)
+    if release.slug == VACUUM_LOSS:
+        return _vacuum_remedy(tables, row)
+    if release.slug == QUENCH:
+        return _quench_remedy(tables, row)
+    if release.slug == SPILL and tables.cases.table.instant[row] == 0.0:
+        return _spill_remedy(tables, row)
+    return _at_once_remedy(tables, row)
+
+
+def _line_remedy(tables: Tables, row: int) -> str:
+    """A restrictor, a shut-off, or less behind the line."""
+    table = tables.cases.table
+    source = tables.records.sources[row][0]
+    line = int(table.sources.line[source])
+    share = max(_steady_share(tables, row), _still_share(tables, row))
+    if line == NO_LINE:
+        vessel = int(table.sources.vessel[source])
+        held = share * float(table.stock.held_mass[vessel])
+        return (
+            f"Draw liquid where at most {at_most(held)} kg can run out, fit an excess-flow valve "
+            "to the vessel, or draw in a room with more outdoor air."
+        )
+    flow = share * float(table.lines.broken[line]) * SECONDS_PER_HOUR
+    return (
+        f"Restrict the line to {at_most(flow)} kg/h before it enters the room, or fit a shut-off "
+        "that acts by itself, fails closed and is tested; else bring more outdoor air."
+    )
+
+
+def _vacuum_remedy(tables: Tables, row: int) -> str:
+    """A smaller vessel, or its relief outdoors with an area that is shown to suffice."""
+    table = tables.cases.table
+    share = max(_steady_share(tables, row), _still_share(tables, row))
+    held = share * float(table.stock.held_mass[_vessels(tables, row)[0]])
+    return (
+        f"Keep at most {at_most(held)} kg in such a vessel here, or lead its relief outdoors, of "
+        "an area that suffices for the loss of its vacuum; else bring more outdoor air."
+    )
+
+
+def _quench_remedy(tables: Tables, row: int) -> str:
+    """A pipe that is inspected and clear, and a warning outside."""
+    table = tables.cases.table
+    has_pipe = bool(table.given.vessels.has_pipe[_vessels(tables, row)[0]])
+    first = (
+        "Have the quench pipe inspected and its outlet shown clear"
+        if has_pipe
+        else "Fit a quench pipe that takes the helium outdoors"
+    )
+    return (
+        f"{first}, with detection of oxygen that warns outside every entrance and a door that a "
+        "pressure in the room cannot hold shut."
+    )
 
 
 def _sustained_remedy(tables: Tables, row: int) -> str:
@@ -80,8 +143,10 @@ def _at_once_remedy(tables: Tables, row: int) -> str:
             f"Let nobody ride with it and record that as unaccompanied; else {allowed} may be "
             "carried."
         )
+    spilt = RELEASES[int(tables.cases.table.release[row])].slug == SPILL
     everything = RELEASES[int(tables.cases.table.release[row])].slug == ALL_VESSELS
     place = "in all" if everything else "in one vessel or manifold group"
+    place = "in a vessel that can tip" if spilt else place
     gas = HAZARDS[int(tables.cases.table.hazard[row])].gas.replace("-", " ")
     return (
         f"{allowed[0].upper()}{allowed[1:]} may stand here {place}; keep more in a larger room, "

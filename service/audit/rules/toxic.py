@@ -4,7 +4,6 @@ from typing import Final
 
 from service.audit.columns import CARBON_DIOXIDE, NITROUS_OXIDE
 from service.audit.hazards import TOXIC
-from service.audit.releases import SPILL
 from service.audit.rules.case_rules import case_rules
 
 _CARBON_DIOXIDE: Final = (
@@ -17,10 +16,5 @@ _NITROUS_OXIDE: Final = (
 
 RULES: Final = (
     *case_rules("toxic", TOXIC, CARBON_DIOXIDE, _CARBON_DIOXIDE),
-    # It is kept as a liquid and as a gas, never as ice in a box.
-    *(
-        rule
-        for rule in case_rules("toxic", TOXIC, NITROUS_OXIDE, _NITROUS_OXIDE)
-        if rule.release != SPILL
-    ),
+    *case_rules("toxic", TOXIC, NITROUS_OXIDE, _NITROUS_OXIDE),
 )
