@@ -146,6 +146,7 @@ class Assessment:
     incoming: tuple[Case, ...]  # of other rooms, as their gas comes here
     deciding: int | None  # index in cases, and then incoming, of the worst, by judging.md 5
     network: Network | None  # where the gas of the room itself can go; None: nowhere
+    layering: Mapping[str, Any] | None  # a bound; None: no accident lets gas go
     ventilation: Ventilation | None
     figures: Mapping[
         str, float | str | None

@@ -73,6 +73,7 @@ CARBON_DIOXIDE: Final = "carbon-dioxide"
 NITROUS_OXIDE: Final = "nitrous-oxide"
 HELIUM: Final = "helium"
 _LATENT_HEAT: Final = {slug: fluid.latent_heat_j_kg for slug, fluid in FLUIDS.items()}
+_VAPOUR: Final = {slug: fluid.vapour_density_kg_m3 for slug, fluid in FLUIDS.items()}
 _GAMMA: Final = {slug: fluid.gamma for slug, fluid in FLUIDS.items()}
 # Of a site's own fluid: the least of all but helium, and that of air. Common practice, no source.
 _LEAST_HEAT: Final = min(heat for slug, heat in _LATENT_HEAT.items() if slug != HELIUM)
@@ -306,6 +307,7 @@ class Fluids:
     gas: Integers  # row of the names of gases
     boiling_point: Floats  # [K]
     latent_heat: Floats  # [J/kg]
+    vapour_density: Floats  # at the boiling point [kg/m3]; not-a-number of a site's own fluid
     gamma: Floats
 
 
@@ -760,6 +762,7 @@ def _fluids(fluids: Sequence[FluidValues], gases: _Distinct[str]) -> Fluids:
         gas=_integers(gases.row(fluid.record.tag) for fluid in fluids),
         boiling_point=_floats(fluid.boiling_point for fluid in fluids),
         latent_heat=_floats(_LATENT_HEAT.get(fluid.record.tag, _LEAST_HEAT) for fluid in fluids),
+        vapour_density=_floats(_VAPOUR.get(fluid.record.tag) for fluid in fluids),
         gamma=_floats(_GAMMA.get(fluid.record.tag, _USUAL_GAMMA) for fluid in fluids),
     )
 

@@ -16,6 +16,7 @@ from service.audit.columns import UNKNOWN, Moments, moments
 from service.audit.evaluation import Evaluation, deciding, evaluate, evaluate_incoming
 from service.audit.incoming import incoming, same_incoming
 from service.audit.inputs import Reference, RoomValues
+from service.audit.layering import layering
 from service.audit.margins import without_margins
 from service.audit.networks import NO_ROOM, networks
 from service.audit.rules.case_records import case_records
@@ -34,6 +35,7 @@ from service.audit.rules.words import number
 from service.audit.severity import nearest
 from service.audit.shut_off import with_shut_off
 from service.audit.told import Leading, Told
+from service.audit.told_layering import told_layering
 from service.audit.turns import next_turns
 from service.physics.arrays import Floats, Integers, Mask
 
@@ -110,6 +112,7 @@ def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) ->
         assumed=assumed,
         decides=deciding(cases, assumed, moment),
         records=case_records(rooms, sound, table),
+        layering=layering(table, cases.results),
         networks=found,
         came=came,
         incoming=evaluate_incoming(came, cases, moment),
@@ -250,6 +253,7 @@ def _assessment(
         cases=told.cases(row) if sound else (),
         incoming=told.incoming(row) if sound else (),
         network=told.network(row) if sound else None,
+        layering=told_layering(told.tables, row) if sound else None,
         deciding=told.deciding(row) if sound else None,
         ventilation=told.ventilation(row) if sound else None,
         figures=told.figures(row) if sound else {},

@@ -29,9 +29,13 @@ def sources_of(tables: Tables, room: int) -> Integers:
     vessels = table.given.vessels.room
     first, end = np.searchsorted(vessels, [room, room + 1])
     rows = np.arange(first, end)
-    purge = table.sources.room[vessels.size :]
-    first, end = np.searchsorted(purge, [room, room + 1])
-    return np.concatenate([rows[table.stock.present[rows]], vessels.size + np.arange(first, end)])
+    parts = [rows[table.stock.present[rows]]]
+    lines = table.sources.room.size - table.given.lines.room.size
+    for begin, stop in ((vessels.size, lines), (lines, table.sources.room.size)):
+        # The purge of rooms, and then their lines, each in the order of rooms.
+        first, end = np.searchsorted(table.sources.room[begin:stop], [room, room + 1])
+        parts.append(begin + np.arange(first, end))
+    return np.concatenate(parts)
 
 
 def holding_gas(tables: Tables) -> Mask:

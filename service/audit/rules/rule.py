@@ -14,6 +14,7 @@ from service.audit.columns import Moments
 from service.audit.evaluation import Evaluation
 from service.audit.incoming import Incoming
 from service.audit.inputs import Reference, RoomValues
+from service.audit.layering import Layering
 from service.audit.networks import Networks
 from service.audit.rules.case_records import CaseRecords
 from service.physics.arrays import Floats, Integers, Mask
@@ -29,6 +30,7 @@ class Subject(StrEnum):
     VESSELS = "vessels"
     UNITS = "ventilation-units"  # a row a unit and room that it serves
     CONTROLS = "controls"
+    LINES = "supply-lines"  # a row a line and room that it can break in
     ASSUMED = "assumed"  # a row a field that was assumed
     GIVEN = "given"  # every room asked for, also those that cannot be computed
 
@@ -71,6 +73,7 @@ class Tables:
     assumed: Assumptions
     decides: Mask  # by assumption
     records: CaseRecords
+    layering: Layering
     networks: Networks
     came: Incoming
     incoming: Evaluation  # of the cases that came
@@ -138,6 +141,7 @@ def rooms_of(tables: Tables, subject: Subject) -> Integers:
         Subject.VESSELS: given.vessels.room,
         Subject.UNITS: given.units.room,
         Subject.CONTROLS: given.controls.room,
+        Subject.LINES: given.lines.room,
         Subject.ASSUMED: tables.assumed.room,
     }[subject]
     positions: Integers = tables.sound[rows]
@@ -180,6 +184,12 @@ def control_record(tables: Tables, row: int) -> Reference:
     return tables.room(int(controls.room[row])).controls[int(controls.source[row])].record
 
 
+def line_record(tables: Tables, row: int) -> Reference:
+    """The record of a row of the supply lines."""
+    lines = tables.cases.table.given.lines
+    return tables.room(int(lines.room[row])).lines[int(lines.source[row])].record
+
+
 def assumed_record(tables: Tables, place: int) -> Reference:
     """The record of a row of what was assumed."""
     assumed = tables.assumed
@@ -191,6 +201,8 @@ def assumed_record(tables: Tables, place: int) -> Reference:
         return unit_record(tables, row)
     if kind == "detector":
         return detector_record(tables, row)
+    if kind == "supply-line":
+        return line_record(tables, row)
     return room.site if kind == "site" else room.record
 
 
@@ -198,6 +210,7 @@ _EQUIPMENT: Final[Mapping[Subject, Callable[[Tables, int], Reference]]] = {
     Subject.DETECTORS: detector_record,
     Subject.VESSELS: vessel_record,
     Subject.UNITS: unit_record,
+    Subject.LINES: line_record,
     Subject.CONTROLS: control_record,
     Subject.ASSUMED: assumed_record,
 }
