@@ -6,14 +6,15 @@ mark or severity of the room's cases (judging 5). The bounds are in `ASSUMPTIONS
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass, replace
-from typing import Final, TypeAlias
+from typing import Final
 
 import numpy as np
 import numpy.typing as npt
 
 from service.audit.air import AIRFLOWS, AS_MEASURED, unknown_outdoor_share
+from service.audit.assumed_equipment import EQUIPMENT
+from service.audit.assumption import Assumption
 from service.audit.bases import COMMON_PRACTICE
 from service.audit.cases import CaseTable
 from service.audit.columns import (
@@ -42,11 +43,6 @@ from service.physics.constants import (
 )
 from service.physics.real_gas import REAL_GASES
 
-Values: TypeAlias = Floats | str | bool
-Missing: TypeAlias = Callable[[CaseTable], Mask]
-Taken: TypeAlias = Callable[[CaseTable], Values]
-Bound: TypeAlias = Callable[[Columns, Mask], Columns]  # of the rooms in the mask
-
 _LITRES: Final = 1000.0  # in a cubic metre
 _MILDEST_TEMPERATURE: Final = ZERO_CELSIUS + 15.0
 _FAR: Final = np.datetime64("9999-01-01", "us")
@@ -56,20 +52,6 @@ _NITROUS_OXIDE = [hazard.gas for hazard in HAZARDS].index(NITROUS_OXIDE)
 _FLAMMABLE = [hazard.slug for hazard in HAZARDS].index(FLAMMABLE)
 # The least of what hoses are used for. [m3/s] of liquid  Common practice, no source.
 _SLOW_FILLING: Final = 1e-3 / 60.0
-
-
-@dataclass(frozen=True, slots=True)
-class Assumption:
-    """A field that may be missing, and what is done about it."""
-
-    record: str  # kind of the record: room, site, vessel, ventilation-unit, detector
-    field: str
-    missing: Missing
-    value: Taken  # by row of the record's table, in the unit of the field's name
-    reason: str
-    source: str  # a value of the basis, or where it comes from
-    matters: bool
-    mildest: Bound | None  # None: what is taken is already the mildest, or moves no mark
 
 
 def _has_cases(table: CaseTable) -> Mask:
@@ -424,7 +406,8 @@ def _at_once_closed(given: Columns, rooms: Mask) -> Columns:
 
 
 def _no_mobility(table: CaseTable) -> Mask:
-    return all_of(table.given.vessels.mobile == UNKNOWN, table.stock.spilt > 0.0)
+    tips = (table.stock.spilt > 0.0) | (table.stock.tipped > 0.0)
+    return all_of(table.given.vessels.mobile == UNKNOWN, tips)
 
 
 def _tips(table: CaseTable) -> bool:
@@ -691,6 +674,7 @@ ASSUMPTIONS: Final = (
         False,
         None,
     ),
+    *EQUIPMENT,
 )
 
 
@@ -736,5 +720,6 @@ def _rooms_of(given: Columns, record: str) -> Integers:
         "vessel": given.vessels.room,
         "ventilation-unit": given.units.room,
         "detector": given.detectors.room,
+        "supply-line": given.lines.room,
     }
     return tables.get(record, np.arange(given.count))

@@ -54,6 +54,8 @@ _AIR_FREEZES: Final = 60.0
 # Hose of a dewar, where nobody recorded it. Common practice, no source.
 HOSE_BORE: Final = 0.010  # [m]
 HOSE_PRESSURE: Final = STANDARD_PRESSURE + 150e3  # [Pa] absolute
+# How long a quench lasts, where nobody recorded it: a quick one. [s]  Methods G7.
+QUENCH_DURATION: Final = 20.0
 
 # From the high level to the shut valve, where nobody recorded it. [s]  Judging 1.
 CLOSES_IN: Final = 60.0

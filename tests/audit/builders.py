@@ -16,6 +16,9 @@ from service.audit.inputs import (
     ControlValues,
     DetectorValues,
     FluidValues,
+    LineValues,
+    OpeningValues,
+    QuenchValues,
     Reference,
     RoomValues,
     UnitValues,
@@ -108,6 +111,13 @@ def a_vessel(litres: float = 50.0, fluid: FluidValues = NITROGEN, **fields: Any)
         "vent_to": "room",
         "filled_by": "exchanged",
         "relief_fitted": True,
+        # No vacuum to lose, no hose that lets anything out, and it stands fast: what a test is
+        # about it says itself.
+        "insulation": "foam",
+        "working_pressure": 50_000.0,
+        "withdrawal_bore": 0.010,
+        "mobile": False,
+        "cold_area": 1.0,
     }
     tag = fields.pop("tag", f"V-{litres:g}-{fluid.record.tag}")
     return VesselValues(record=a_reference("vessel", tag), fluid=fluid, **{**defaults, **fields})
@@ -121,8 +131,63 @@ def some_ice(kilograms: float = 10.0, **fields: Any) -> VesselValues:
             "capacity_volume": None,
             "capacity_mass": kilograms,
             "measured_evaporation": None,
+            "mobile": None,
             **fields,
         },
+    )
+
+
+def a_magnet(litres: float = 100.0, fluid: FluidValues = HELIUM, **quench: Any) -> VesselValues:
+    """A magnet in a room, with what is recorded of its quench."""
+    recorded = {"duration": 30.0, "has_pipe": False, **quench}
+    return a_vessel(
+        litres,
+        fluid,
+        kind="magnet",
+        tag=f"M-{litres:g}",
+        measured_evaporation=0.0,
+        quench=QuenchValues(**recorded),
+    )
+
+
+def a_line(**fields: Any) -> LineValues:
+    """A line of liquid nitrogen of 10 mm from 4 bar absolute, shut by nothing."""
+    defaults: dict[str, Any] = {
+        "fluid": NITROGEN,
+        "phase": "liquid",
+        "bore": 0.010,
+        "length": 10.0,
+        "source_pressure": 4e5,
+    }
+    tag = fields.pop("tag", "L-1")
+    return LineValues(record=a_reference("supply-line", tag), **{**defaults, **fields})
+
+
+def a_shut_line(**fields: Any) -> LineValues:
+    """The same, shut within a second of an excess flow, as tested, and restricted."""
+    shut: dict[str, Any] = {
+        "has_shut_off": True,
+        "trigger": "excess-flow",
+        "closes_in": 1.0,
+        "fails_closed": True,
+        "shut_off_tested": True,
+        "shut_off_test_due": LATER,
+        "restrictor": 0.01,
+    }
+    return a_line(**{**shut, **fields})
+
+
+def a_door(other: RoomValues | str | None, tag: str = "O-1", **fields: Any) -> OpeningValues:
+    """A door that stands open, to another room or outdoors."""
+    defaults: dict[str, Any] = {
+        "kind": "door",
+        "width": 0.9,
+        "height": 2.1,
+        "normally_open": True,
+    }
+    there = other.record.id if isinstance(other, RoomValues) else other
+    return OpeningValues(
+        record=a_reference("opening", tag), other_room_id=there, **{**defaults, **fields}
     )
 
 

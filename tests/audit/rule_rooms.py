@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from datetime import timedelta
 from typing import Any
 
 from service.audit.inputs import FluidValues, Outage, RoomValues, VesselValues
+from tests.audit.accident_rooms import ACCIDENTS, LAYERS, LINES, MAGNETS
 from tests.audit.builders import (
     CARBON_DIOXIDE,
     HYDROGEN,
@@ -28,26 +29,11 @@ from tests.audit.builders import (
     some_ice,
     the_controls,
 )
+from tests.audit.pairs import Pair
 
 HOUR = timedelta(hours=1)
 SECOND = timedelta(seconds=1)
 US = a_basis("us")
-
-
-@dataclass(frozen=True)
-class Pair:
-    """A room that a rule has nothing to say of, and one that breaks it."""
-
-    rule: str
-    inside: RoomValues
-    outside: RoomValues
-    severity: str
-    gas: str | None = None
-
-    @property
-    def name(self) -> str:
-        """What the pair is called in a list of tests."""
-        return self.rule if self.gas is None else f"{self.rule}-{self.gas}"
 
 
 def still(litres: float, **fields: Any) -> VesselValues:
@@ -505,7 +491,18 @@ _RECORDS = (
     ),
 )
 
-PAIRS = (*_CASES, *_VENTILATION, *_DETECTORS, *_VESSELS, *_CONTROLS, *_RECORDS)
+PAIRS = (
+    *_CASES,
+    *_VENTILATION,
+    *_DETECTORS,
+    *_VESSELS,
+    *_CONTROLS,
+    *_RECORDS,
+    *ACCIDENTS,
+    *LAYERS,
+    *LINES,
+    *MAGNETS,
+)
 
 
 def a_room_with_nothing_to_say(**fields: Any) -> RoomValues:

@@ -128,15 +128,15 @@ class TestManyPortableVessels:
 
     @pytest.mark.parametrize(("count", "expected"), [(10, "observation"), (11, "major")])
     def test_more_than_ten(self, count, expected):
-        room = a_room(25, vessels=many(count, 6.0))
+        room = a_room(25, vessels=many(count, 6.0, mobile=True))
         assert case_of(room, "all-vessels").mark == 3
         assert severity(room, RULE) == expected
 
     @pytest.mark.parametrize(
         ("fields", "expected"),
         [
-            ({"litres": 59.9}, "major"),
-            ({"litres": 60.0}, "observation"),
+            ({"litres": 59.9, "mobile": True}, "major"),
+            ({"litres": 60.0, "mobile": True}, "observation"),
             ({"litres": 6.0, "mobile": False}, "observation"),
             ({"litres": 6.0, "mobile": None}, "major"),
         ],
@@ -146,7 +146,7 @@ class TestManyPortableVessels:
         assert severity(room, RULE) == expected
 
     def test_the_basis_says_how_many(self):
-        room = a_room(25, vessels=many(5, 10.0), basis=a_basis(many_vessels=4))
+        room = a_room(25, vessels=many(5, 10.0, mobile=True), basis=a_basis(many_vessels=4))
         assert severity(room, RULE) == "major"
 
 

@@ -76,8 +76,36 @@ def test_a_box_tips_unless_it_is_known_not_to(mobile, tips):
     assert bool(spills(room)) is tips
 
 
-def test_liquid_in_a_vessel_is_not_spilt_as_ice_is():
-    assert spills(a_room(vessels=(a_vessel(50, mobile=True),))) == []
+def test_liquid_is_spilt_at_once_and_ice_in_time():
+    """Judging 1: a pool is gone within seconds, and so all of it counts as let go."""
+    (liquid,) = spills(a_room(vessels=(a_vessel(50, mobile=True),)))[:1]
+    assert liquid.required_reason == "It is let go at once, so that no fan can hold it."
+    # Methods C-1: 50 L in 70 m3, by displacement: 20.95 % (1 - 34.601 / 70).
+    assert liquid.oxygen_pct == pytest.approx(20.95 * (1.0 - 34.601 / 70.0), rel=3e-3)
+    assert "spill/pool-on-floor" in liquid.method
+    assert "dry-ice/share-per-hour" not in liquid.method
+
+
+def test_the_pool_is_told_with_the_spill():
+    """Methods G-4: 50 L on 5 m2 of concrete at 20 degrees Celsius are gone in 15.3 s."""
+    room = a_room(70, floor_area=5.0, height=14.0, vessels=(a_vessel(50, mobile=True),))
+    found = judged(room, "oxygen/spill")
+    assert found.evidence["pool_m2"] == 5.0
+    assert found.evidence["pool_gone_s"] == pytest.approx(15.34, rel=5e-3)
+    assert "spilt on the floor" in found.statement
+
+
+@pytest.mark.parametrize(
+    "fields", [{"mobile": False}, {"kind": "freezer", "mobile": True}, {"kind": "tank"}]
+)
+def test_what_cannot_tip_is_not_spilt(fields):
+    assert spills(a_room(vessels=(a_vessel(50, **{"mobile": None, **fields}),))) == []
+
+
+def test_whether_it_can_tip_is_assumed_where_nobody_says():
+    room = a_room(vessels=(a_vessel(50, mobile=None),))
+    assert spills(room)
+    assert "mobile" in {each.field for each in assessed(room)[0].assumed}
 
 
 def test_only_the_largest_box_is_emptied():

@@ -21,6 +21,7 @@ from service.audit.hazards import (
     REFERENCE_LIMIT,
     TOXIC,
 )
+from service.audit.inventory import QUENCH_DURATION
 from service.audit.marks import measure_name
 from service.audit.release_rows import JACKET_OPEN, NO_VARIANT, PIPE_FAILED, VARIANTS
 from service.audit.releases import (
@@ -55,9 +56,6 @@ from service.physics.constants import SECONDS_PER_HOUR
 from service.physics.insulation_loss import JACKET_OPEN as JACKET_OPEN_FLUX
 from service.physics.pool import spread_area, time_to_evaporate
 from service.physics.quench import PEAK_OVER_MEAN
-
-# How long a quench lasts, where nobody recorded it: a quick one. [s]  Methods G7.
-QUENCH_DURATION: Final = 20.0
 
 LOW_MARKS: Final = ("deficient", "danger", "critical")
 HIGH_MARKS: Final = ("enriched", "second", "third")
