@@ -61,7 +61,8 @@ class Choice:
     airflow: str | None = None
     hazard: str | None = None
     gas: str | None = None
-    vessel_id: str | None = None
+    vessel_id: str | None = None  # or that of a line
+    variant: str | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -155,7 +156,7 @@ def _matching(cases: Sequence[Case], choice: Choice) -> list[int]:
 
 def _words(case: Case, part: str) -> tuple[str, ...]:
     if part == "vessel_id":
-        return tuple(vessel.id for vessel in case.vessels)
+        return tuple(record.id for record in (*case.vessels, *case.lines))
     return (getattr(case, part),)
 
 

@@ -271,6 +271,7 @@ def case_document(case: Case) -> dict[str, Any]:
     document["vessels"] = [plain(vessel) for vessel in case.vessels]
     document["vessel_ids"] = [vessel.id for vessel in case.vessels]
     document["lines"] = [plain(line) for line in case.lines]
+    document["line_ids"] = [line.id for line in case.lines]
     document["marks"] = [_mark_document(mark) for mark in case.marks]
     document["fluid"] = case.fluids[0] if len(case.fluids) == 1 else None
     document["without_margins"] = dict(case.without_margins)

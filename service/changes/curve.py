@@ -22,7 +22,7 @@ from service.store.history import StoredAssessment
 
 _JUDGES: Final = "records, not the air"
 _NAMED: Final = 12  # words of what a room has, in the sentence of a problem
-_WORDS: Final = ("release", "airflow", "hazard", "gas")
+_WORDS: Final = ("release", "airflow", "hazard", "gas", "variant")
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,15 +84,17 @@ def _curve(room: RoomValues, assessment: StoredAssessment, choice: Choice, point
     """Compute what is asked for; where nothing is, the case that the status names."""
     at = assessment.assessed_at
     worst = orjson.loads(assessment.status)["worst"]
-    if choice != Choice() or worst is None:
+    # One that comes from another room has its course there.
+    if choice != Choice() or worst is None or worst.get("from_room") is not None:
         return curve_of(room, at=at, choice=choice, points=points)
-    vessels = worst["vessel_ids"]
+    vessels = [*worst["vessel_ids"], *worst.get("line_ids", ())]
     named = Choice(
         release=worst["release"],
         airflow=worst["airflow"],
         hazard=worst["hazard"],
         gas=worst["gas"],
         vessel_id=vessels[0] if vessels else None,
+        variant=worst.get("variant"),
     )
     try:
         return curve_of(room, at=at, choice=named, points=points)

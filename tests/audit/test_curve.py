@@ -60,6 +60,8 @@ def curve(room, points=200, **choice):
 
 def of_case(room, case, points=200):
     vessels = {"vessel_id": case.vessels[0].id} if case.vessels else {}
+    if case.variant is not None:
+        vessels["variant"] = case.variant
     return curve(
         room, points, release=case.release, airflow=case.airflow, hazard=case.hazard,
         gas=case.gas, **vessels,

@@ -23,6 +23,7 @@ from service.audit.air import AIRFLOWS, PROVEN
 from service.audit.curve import Choice
 from service.audit.hazards import HAZARDS
 from service.audit.inputs import RoomValues
+from service.audit.release_rows import VARIANTS
 from service.audit.releases import RELEASES
 from service.changes.answers import rendered
 from service.changes.curve import (
@@ -49,6 +50,7 @@ WORDS: Final[Mapping[str, tuple[str, ...]]] = {
     "airflow": tuple(airflow for airflow in AIRFLOWS if airflow != PROVEN),
     "hazard": tuple(dict.fromkeys(hazard.slug for hazard in HAZARDS)),
     "gas": tuple(dict.fromkeys(hazard.gas for hazard in HAZARDS)),
+    "variant": VARIANTS,
 }
 
 
@@ -66,8 +68,12 @@ Hazard = Annotated[str | None, _word("hazard", "What it is judged for.")]
 Gas = Annotated[str | None, _word("gas", "The gas judged.")]
 VesselId = Annotated[
     str | None,
-    Query(max_length=LONGEST_PARAMETER, description="The id of a vessel that is let go."),
+    Query(
+        max_length=LONGEST_PARAMETER,
+        description="The id of a vessel that is let go, or of a line that breaks.",
+    ),
 ]
+Variant = Annotated[str | None, _word("variant", "The form of a release that has several.")]
 Points = Annotated[
     int,
     Query(
@@ -110,6 +116,7 @@ async def get_curve(
     hazard: Hazard = None,
     gas: Gas = None,
     vessel_id: VesselId = None,
+    variant: Variant = None,
     points: Points = USUAL,
     format_: FormatText = None,
 ) -> Response:
@@ -122,7 +129,7 @@ async def get_curve(
     the room is back inside the first mark, at the latest after the sustained time of the basis.
     """
     form = form_of(request, format_)
-    choice = Choice(release, airflow, hazard, gas, vessel_id)
+    choice = Choice(release, airflow, hazard, gas, vessel_id, variant)
     _refuse_unknown(choice)
     now = read.service.clock.now()
     asked = await read(_asked_of, room_id, as_of, now)

@@ -44,6 +44,13 @@ class WorstRead(Growing):
     to_critical_s: float | None
     recovered_s: float | None
     mark: int = Field(description="The worst mark crossed: 0 none, 1 first, 2 second, 3 third.")
+    variant: str | None = Field(
+        description="expected, pipe-failed or jacket-open; null: the release has but one form."
+    )
+    line_ids: list[RecordIdText] = Field(description="Of supply lines that break.")
+    from_room: dict[str, Any] | None = Field(
+        description="The room that the gas comes from; null: the room itself."
+    )
 
 
 class DecidingRead(Growing):
@@ -90,6 +97,7 @@ class CaseRead(WorstRead):
     """One release of the room under one airflow, for one hazard."""
 
     counts: bool = Field(description="Towards the standing.")
+    lines: list[dict[str, Any]] = Field(description="Supply lines that break, in their revision.")
     vessels: list[dict[str, Any]] = Field(description="What is let go, in its revision.")
     marks: list[MarkRead]
     gas_m3: float = Field(description="Let go at the room's pressure and temperature.")
@@ -106,6 +114,77 @@ class CaseRead(WorstRead):
         description="The same with every stacked factor at 1, as by hand."
     )
     method: list[str]
+
+
+class ReachedRead(Growing):
+    """A room that gas can come to."""
+
+    room: dict[str, Any]
+    steps: int = Field(description="From the room that it comes from.")
+    through: dict[str, Any] = Field(description="The opening or the unit.")
+
+
+class CutRead(Growing):
+    """A way on which air passes, and which is followed no further."""
+
+    through: dict[str, Any]
+    room: dict[str, Any]
+    beyond_room_id: str
+
+
+class AssumedOpeningRead(Growing):
+    """An opening of which something was not recorded."""
+
+    opening: dict[str, Any]
+    fields: list[str]
+    exchange_flow_m3_h: float
+
+
+class NetworkRead(Growing):
+    """The rooms that a room's gas can reach, at most eleven others."""
+
+    rooms: list[ReachedRead]
+    cut: list[CutRead]
+    assumed: list[AssumedOpeningRead]
+
+
+class ZoneRead(Growing):
+    """A zone in which all the gas of a release is taken to stay."""
+
+    release: str
+    variant: str | None
+    oxygen_pct: float | None = Field(description="A bound, never a concentration.")
+    mixed_oxygen_pct: float | None = Field(description="The same gas mixed through the room.")
+    zone_m3: float | None
+
+
+class LayerRead(Growing):
+    """The depth of a layer that nothing mixes into."""
+
+    cold_m: float | None
+    warm_m: float | None
+
+
+class PitRead(Growing):
+    """A pit in the floor of the room."""
+
+    volume_m3: float
+    oxygen_pct: float | None
+    filled_by_l_cold: float | None
+    filled_by_l_warm: float | None
+    entered: bool | None
+
+
+class LayeringRead(Growing):
+    """Bounds for gas that stays where it goes."""
+
+    bound: bool
+    caution: str
+    breathing_zone: ZoneRead | None
+    kneeling_zone: ZoneRead | None
+    ceiling_zone: ZoneRead | None
+    layer: LayerRead | None
+    pit: PitRead | None
 
 
 class VentilationRead(Growing):
@@ -183,7 +262,17 @@ class AssessmentRead(StatusBasis):
     inputs: list[dict[str, Any]] = Field(description="The records read, in their revisions.")
     assumed: list[dict[str, Any]] = Field(description="What was missing, and what was taken.")
     figures: dict[str, Any]
-    cases: list[CaseRead]
+    cases: list[CaseRead] = Field(description="What is let go in the room itself.")
+    incoming: list[CaseRead] = Field(
+        description="What is let go in other rooms, as its gas comes to this one; what comes less "
+        "than a hundredth of the way to the first mark is left out."
+    )
+    network: NetworkRead | None = Field(
+        description="Where the gas of the room can go; null: to no other room."
+    )
+    layering: LayeringRead | None = Field(
+        description="Bounds for gas that does not mix; null: no accident lets any go."
+    )
     methods: list[str]
     findings: list[FindingRead]
     cautions: str

@@ -126,15 +126,14 @@ class CaseRule:
 
     def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
         """Say how far the worst case goes, and what would keep it inside."""
-        row = rows[0]
-        return Said(
-            statement=_statement(tables, row),
-            remedy=remedy(tables, row),
-            evidence={
-                **case_evidence(tables, row),
-                "cases": [case_evidence(tables, each) for each in rows[1:]],
-            },
-        )
+        statement, evidence = told_of_cases(tables, rows)
+        return Said(statement, remedy(tables, rows[0]), evidence)
+
+
+def told_of_cases(tables: Tables, rows: Sequence[int]) -> tuple[str, dict[str, Any]]:
+    """What there is to say of the worst of some cases, and the numbers of all."""
+    others = [case_evidence(tables, each) for each in rows[1:]]
+    return _statement(tables, rows[0]), {**case_evidence(tables, rows[0]), "cases": others}
 
 
 def _statement(tables: Tables, row: int) -> str:

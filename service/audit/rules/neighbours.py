@@ -10,7 +10,7 @@ import numpy as np
 
 from service.audit.assessment import SEVERITIES
 from service.audit.rules import enrichment, flammable, oxygen, toxic
-from service.audit.rules.case_rules import CaseRule
+from service.audit.rules.case_rules import CaseRule, told_of_cases
 from service.audit.rules.kinds import never
 from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables, family
 from service.audit.rules.words import as_record, at_least, number
@@ -73,7 +73,7 @@ class NeighbourRule:
 
     def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
         """Say which room the gas comes from and by which way, and what helps in either."""
-        said = self.case.say(tables.beside(), judged, rows)
+        statement, evidence = told_of_cases(tables.beside(), rows)
         came, row = tables.came, rows[0]
         network, place = int(came.network[row]), int(came.place[row])
         source = tables.room(int(came.table.network[row])).record
@@ -84,14 +84,14 @@ class NeighbourRule:
         severity = SEVERITIES[int(judged.consequence[row])]
         restore = float(came.results.restore[row]) * SECONDS_PER_HOUR
         return Said(
-            statement=f"From room {source.tag}, {far}{way}: {said.statement}",
+            statement=f"From room {source.tag}, {far}{way}: {statement}",
             remedy=(
                 f"Keep the gas from coming: a door that closes by itself, no shared return air, or "
                 f"what helps in room {source.tag}. To bring this room back in time takes "
                 f"{at_least(restore)} m3/h of outdoor air here."
             ),
             evidence={
-                **said.evidence,
+                **evidence,
                 "from_room": as_record(source),
                 "through": None if through is None else as_record(through),
                 "steps": steps,
