@@ -30,11 +30,15 @@ TAGS: Final = (
     ("Rooms", "Rooms and other spaces that people enter, with their status and assessment."),
     (
         "Openings",
-        "Doors, hatches and other openings between rooms. They recalculate nothing yet, and keep "
-        "their rooms from being removed.",
+        "Doors, hatches and other openings between rooms, through which gas that is let go in one "
+        "is followed to the others.",
     ),
     ("VentilationUnits", "Fans and air handling units, and the rooms that they serve."),
     ("Vessels", "Vessels of cryogenic liquid, gas or ice; without a room they stand outdoors."),
+    (
+        "SupplyLines",
+        "Lines that bring liquid or gas into rooms, with what feeds them and what shuts them.",
+    ),
     ("Detectors", "Gas detectors."),
     ("Controls", "Administrative measures of rooms and vessels, with the day of their last check."),
     ("Bases", "The values that rooms are judged by, each with its source."),

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable
 
 from sqlalchemy import ColumnElement, Connection, and_, or_, select
+from sqlalchemy import true as sql_true
 
 from service.store.parts import in_parts
 from service.store.scope import Scope, within
@@ -36,7 +37,8 @@ def _passes() -> ColumnElement[bool]:
     """Air passes what is not said to be shut, and what has a flow."""
     openings = TABLES["opening"]
     return or_(
-        openings.c["normally_open"].is_not(False),
+        openings.c["normally_open"].is_(None),
+        openings.c["normally_open"] == sql_true(),
         openings.c["exchange_flow_m3_h"] > 0.0,
         openings.c["net_flow_m3_h"] != 0.0,
     )

@@ -126,6 +126,21 @@ def an_opening(room, tag="DOOR-1", **fields):
     }
 
 
+def a_supply_line(room, tag="LINE-1", **fields):
+    return {
+        "tag": tag,
+        "rooms": [{"room_id": room["id"]}],
+        "fluid": "nitrogen",
+        "phase": "liquid",
+        "bore_mm": 10.0,
+        "source_pressure_kpa": 300.0,
+        "restrictor_kg_h": 60.0,
+        "shutoff": {"trigger": "excess-flow", "closes_in_s": 2.0, "fails_closed": True},
+        "segments": [{"volume_l": 0.4, "relief": {"fitted": True}}],
+        **fields,
+    }
+
+
 def a_control(room, tag="SIGN-1", **fields):
     return {
         "tag": tag,
@@ -148,6 +163,9 @@ class Site:
         self.vessel = ask.made("vessels", a_vessel(self.room, f"{tag}-DEW", external_id=f"{tag}-X"))
         self.detector = ask.made("detectors", a_detector(self.room, f"{tag}-OX"))
         self.opening = ask.made("openings", an_opening(self.room, f"{tag}-DOOR"))
+        # So little comes out of it that the other records decide what is said of the room.
+        line = a_supply_line(self.room, f"{tag}-LINE", restrictor_kg_h=0.001)
+        self.line = ask.made("supply-lines", line)
         self.control = ask.made("controls", a_control(self.room, f"{tag}-SIGN"))
         self.basis = ask.made(
             "bases",
@@ -177,7 +195,7 @@ class Site:
 
     def record(self, kind):
         """Give the record of a kind."""
-        return getattr(self, {"ventilation-unit": "unit"}.get(kind, kind))
+        return getattr(self, {"ventilation-unit": "unit", "supply-line": "line"}.get(kind, kind))
 
 
 class Estate:

@@ -69,7 +69,9 @@ def test_each_case_of_the_assessment_has_its_course_with_the_same_numbers(ask_on
     cases = ask_one.body(f"/v1/rooms/{mixed['id']}/assessment")["cases"]
     assert {case["hazard"] for case in cases} == {"oxygen-low", "toxic"}
     for case in cases[:: max(1, len(cases) // 12)]:
-        query = "&".join(f"{name}={case[name]}" for name in WAYS if case[name] is not None)
+        query = "&".join(
+            f"{name}={case[name]}" for name in (*WAYS, "variant") if case[name] is not None
+        )
         vessel = [*case["vessel_ids"], *case["line_ids"]][0]
         curve = ask_one.body(curve_path(mixed, f"?points=40&{query}&vessel_id={vessel}"))
         assert curve["case"] == case
@@ -168,7 +170,7 @@ def test_what_is_not_known_is_named_with_what_is_allowed(
 
 
 def test_a_case_that_the_room_has_not_is_told_with_those_it_has(ask_one, estate_of_one):
-    answer = ask_one("GET", curve_path(estate_of_one.north.room, "?release=spill"))
+    answer = ask_one("GET", curve_path(estate_of_one.north.room, "?release=quench"))
     assert answer.status_code == 404
     assert answer.json()["type"].endswith("#no-such-case")
     (error,) = answer.json()["errors"]
@@ -220,6 +222,7 @@ def test_a_removed_record_is_still_there_in_the_past(ask_one, estate_of_one):
     before = ask_one.body(curve_path(room))
     moment = moment_of(ask_one)
     ask_one("DELETE", f"/v1/controls/{estate_of_one.north.control['id']}")
+    ask_one("DELETE", f"/v1/supply-lines/{estate_of_one.north.line['id']}")
     assert ask_one("DELETE", f"/v1/vessels/{vessel['id']}").status_code == 200
     assert ask_one("GET", curve_path(room)).status_code == 404
     assert ask_one.body(curve_path(room, f"?as_of={moment}")) == before

@@ -92,6 +92,7 @@ def test_null_is_refused_for_what_no_vessel_is_without(ask_one, estate_of_one, f
 def test_moving_a_vessel_answers_what_it_did_to_both_rooms(ask, estate):
     other = ask.made("rooms", a_room(estate.north.site, "B-105"))
     vessel = estate.north.vessel
+    ask("DELETE", f"/v1/supply-lines/{estate.north.line['id']}")
     answer = ask("PATCH", f"/v1/vessels/{vessel['id']}", {"room": "B-105"}, key="recorder")
     assert answer.status_code == 200, answer.text
     effects = {effect["room_id"]: effect for effect in answer.json()["effects"]}

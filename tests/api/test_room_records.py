@@ -3,7 +3,15 @@
 import pytest
 
 from service.api.resources import RESOURCES
-from tests.api.estate import a_control, a_detector, a_room, a_unit, a_vessel, an_opening
+from tests.api.estate import (
+    a_control,
+    a_detector,
+    a_room,
+    a_supply_line,
+    a_unit,
+    a_vessel,
+    an_opening,
+)
 
 
 def test_an_object_is_answered_whole_and_patched_by_member(ask, estate):
@@ -63,12 +71,14 @@ def test_a_boost_is_sent_by_tag_and_answered_by_id(ask, estate):
     assert unit["tag"] in removal.json()["detail"]
 
 
-def test_an_opening_effects_nothing_and_its_rooms_stay(ask, estate):
+def test_an_opening_recalculates_the_rooms_on_both_its_sides_and_they_stay(ask, estate):
     other = ask.made("rooms", a_room(estate.north.site, "B-200"))
     opening = ask.made(
         "openings", an_opening(estate.north.room, "HATCH-1", other_room="B-200", kind="hatch")
     )
-    assert (opening["effects"], opening["other_room_id"]) == ([], other["id"])
+    assert opening["other_room_id"] == other["id"]
+    reached = {effect["room_id"] for effect in opening["effects"]}
+    assert reached == {estate.north.room["id"], other["id"]}
     assert opening["net_flow_m3_h"] == -40.0
     removal = ask("DELETE", f"/v1/rooms/{other['id']}")
     assert removal.status_code == 409
@@ -145,7 +155,13 @@ OUT_OF_RANGE = {
         {"relief": {"discharge_to": "corridor"}}, {"quench": {"duration_s": 0}},
         {"quench": {"share_to_room": 1.5}}, {"quench": {"pipe": {"bore_mm": 0}}},
         {"filling": {"flow_l_min": 0}}, {"filling": {"closes_in_s": -1}},
-        {"filling": {"supply_line_id": None}},
+        {"filling": {"supply_line_id": "nowhere"}}, {"quench": {"pipe": {"length_m": 0}}},
+    ),
+    "supply-lines": (
+        {"bore_mm": 0}, {"length_m": 0}, {"source_pressure_kpa": 0}, {"restrictor_kg_h": 0},
+        {"phase": "ice"}, {"rooms": []}, {"insulation": "straw"},
+        {"shutoff": {"closes_in_s": -1}}, {"shutoff": {"trigger": "nobody"}},
+        {"segments": [{"volume_l": 0}]}, {"segments": [{}]}, {"rooms": [{"room": "nowhere"}]},
     ),
     "detectors": ({"zeroed_at_kpa_abs": 29.9}, {"zeroed_at_kpa_abs": 120.1}),
     "openings": ({"width_m": 0}, {"exchange_flow_m3_h": -1}, {"kind": "chimney"}, {"area_m2": 0}),
@@ -168,6 +184,7 @@ def test_what_lies_out_of_range_is_refused_at_its_place_and_stores_nothing(ask_o
         "detectors": a_detector(north.room, "X"),
         "openings": an_opening(north.room, "X"),
         "controls": a_control(north.room, "X"),
+        "supply-lines": a_supply_line(north.room, "X"),
         "fluids": {name: north.fluid[name] for name in
                    ("site_id", "molar_mass_g_mol", "boiling_k", "condensed_density_kg_m3",
                     "oxygen_fraction", "solid", "hazards", "settles")} | {"tag": "X"},

@@ -21,7 +21,7 @@ from service.store.tables.registry import METADATA, TABLES
 from service.store.writer import Writer
 from tests.store.estate import AS_SERVICE, Estate, Shared
 
-REVISIONS = ("first_records", "complete_the_room")
+REVISIONS = ("first_records", "complete_the_room", "add_supply_lines")
 NEWEST = REVISIONS[-1]
 
 
@@ -57,8 +57,10 @@ def tables_in(url):
 def parts_of(sql):
     """Split a statement into its lines, whose order means nothing in a table.
 
-    SQLite puts the name of a table that was copied in quotes.
+    SQLite puts the name of a table that was copied in quotes, and a column that was added later
+    behind the last line.
     """
+    sql = sql.replace(", filling_line_id TEXT", ",\nfilling_line_id TEXT")
     sql = re.sub(r'^CREATE TABLE "(\w+)"', r"CREATE TABLE \1", sql)
     return sorted(line.strip().rstrip(",") for line in re.sub(r"\s*\n\s*", "\n", sql).split("\n"))
 
@@ -142,7 +144,7 @@ def test_records_of_the_first_revision_come_through_with_nothing_in_what_is_new(
     with Database(url) as database, database.reading() as connection:
         for record in estate.records:
             found = get_record(EVERYTHING, connection, record.kind, record.id)
-            if record.kind in ("opening", "control"):
+            if record.kind in ("opening", "control", "supply-line"):
                 assert found is None
             else:
                 unknown = dict.fromkeys(new & record.fields.keys())
@@ -171,7 +173,7 @@ def test_a_revision_leaves_the_triggers_that_it_found(empty_database_url):
     found = triggers_in(url)
     assert len(found) > 10
     upgrade(url)
-    assert triggers_in(url) == found
+    assert found.items() <= triggers_in(url).items()
 
 
 def triggers_in(url):

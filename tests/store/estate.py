@@ -21,6 +21,7 @@ DEFAULTS = {
         "fluid": "nitrogen", "kind": "open-dewar", "state": "in-service", "capacity_l": 50.0,
     },
     "opening": {"kind": "door"},
+    "supply-line": {"fluid": "nitrogen", "phase": "liquid", "rooms": []},
     "detector": {"gas": "oxygen", "state": "in-service", "alarms_pct": [19.5, 18.0]},
     "control": {"kind": "signage"},
     "basis": {"values": {"oxygen_deficient_pct": 19.5}, "sources": {"oxygen_deficient_pct": "—"}},
@@ -90,6 +91,16 @@ class Estate:
             name="Dewar Ä",
             notes="a\nb",
         )
+        self.line = a_record(
+            "supply-line",
+            site_id,
+            source_vessel_id=self.vessel.id,
+            fluid_id=shared.fluid.id,
+            rooms=[{"room_id": self.room.id}],
+            bore_mm=12.5,
+            shutoff={"trigger": self.detector.id, "closes_in_s": 2.0},
+            segments=[{"volume_l": 0.5, "relief": {"fitted": True}}],
+        )
         self.control = a_record(
             "control", site_id, vessel_id=self.vessel.id, kind="bund", area_m2=2.5
         )
@@ -101,8 +112,8 @@ class Estate:
     @property
     def records(self):
         return [
-            self.site, self.room, self.opening, self.detector, self.unit, self.vessel, self.control,
-            self.basis, self.fluid,
+            self.site, self.room, self.opening, self.detector, self.unit, self.vessel, self.line,
+            self.control, self.basis, self.fluid,
         ]  # fmt: skip
 
     @property

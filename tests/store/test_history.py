@@ -239,7 +239,7 @@ def test_assessments_come_back_to_the_byte_and_as_of_any_position(database, writ
         3, "ok", 20.5, True,
     )  # fmt: skip
     write(lambda s: [delete_record(s, record) for record in (
-        estate.control, estate.opening, estate.unit, estate.vessel, estate.detector,
+        estate.control, estate.opening, estate.unit, estate.line, estate.vessel, estate.detector,
         estate.room)])  # fmt: skip
     with database.reading() as connection:
         assert history.assessment_now(EVERYTHING, connection, room) is None
@@ -332,7 +332,9 @@ def test_a_finding_with_another_column_is_refused(write, estate):
 
 
 def test_findings_outlive_their_room(database, write, told):
-    rows = (told.control, told.opening, told.unit, told.vessel, told.detector, told.room)
+    rows = (
+        told.control, told.opening, told.unit, told.line, told.vessel, told.detector, told.room,
+    )  # fmt: skip
     write(lambda s: [delete_record(s, record) for record in rows])
     with database.reading() as connection:
         assert findings.get_finding(EVERYTHING, connection, "f1")["room_id"] == told.room.id

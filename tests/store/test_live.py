@@ -86,12 +86,14 @@ def test_a_number_that_is_not_finite_is_refused(estate, store):
     [("vessel", "room_id"), ("detector", "room_id"), ("vessel", "fluid_id"),
      ("room", "purge_fluid_id"), ("site", "basis_id"), ("basis", "derived_from_id"),
      ("opening", "room_id"), ("opening", "other_room_id"), ("control", "vessel_id"),
-     ("ventilation-unit", "boost_trigger")],
+     ("ventilation-unit", "boost_trigger"), ("supply-line", "source_vessel_id"),
+     ("supply-line", "fluid_id")],
 )  # fmt: skip
 def test_no_reference_crosses_sites(estate, other_estate, write, kind, reference):
     """Neither where a record is made nor where it is changed."""
     theirs = {"room_id": other_estate.room, "other_room_id": other_estate.room,
-              "vessel_id": other_estate.vessel, "boost_trigger": other_estate.detector,
+              "vessel_id": other_estate.vessel, "source_vessel_id": other_estate.vessel,
+              "boost_trigger": other_estate.detector,
               "fluid_id": other_estate.fluid,
               "purge_fluid_id": other_estate.fluid, "basis_id": other_estate.basis,
               "derived_from_id": other_estate.basis}[reference]  # fmt: skip
@@ -167,7 +169,8 @@ def test_equipment_is_what_stands_in_a_room_or_serves_it(database, estate, other
     store(outdoors, idle)
     with database.reading() as connection:
         assert equipment_of(EVERYTHING, connection, [estate.room.id]) == [
-            estate.detector, estate.unit, estate.vessel, estate.control,
+            estate.opening, estate.detector, estate.unit, estate.vessel, estate.line,
+            estate.control,
         ]  # fmt: skip
         assert rooms_of_site(EVERYTHING, connection, estate.site.id) == [estate.room.id]
 
@@ -226,14 +229,22 @@ def test_what_names_a_record_is_found(database, shared, estate):
         assert named_by("room", room) == [
             ("opening", estate.opening.id), ("detector", estate.detector.id),
             ("vessel", estate.vessel.id), ("ventilation-unit", estate.unit.id),
+            ("supply-line", estate.line.id),
         ]  # fmt: skip
-        assert named_by("detector", estate.detector) == [("ventilation-unit", estate.unit.id)]
-        assert named_by("fluid", shared.fluid) == [("room", room.id), ("vessel", estate.vessel.id)]
+        assert named_by("detector", estate.detector) == [
+            ("ventilation-unit", estate.unit.id), ("supply-line", estate.line.id),
+        ]  # fmt: skip
+        assert named_by("fluid", shared.fluid) == [
+            ("room", room.id), ("vessel", estate.vessel.id), ("supply-line", estate.line.id),
+        ]  # fmt: skip
         assert named_by("basis", shared.basis) == [("site", estate.site.id),
                                                    ("basis", estate.basis.id)]  # fmt: skip
-        assert len(named_by("site", estate.site)) == 8
+        assert len(named_by("site", estate.site)) == 9
         assert len(referrers_of(EVERYTHING, c, "site", estate.site.id, limit=2)) == 2
-        assert named_by("vessel", estate.vessel) == [("control", estate.control.id)]
+        assert set(named_by("vessel", estate.vessel)) == {
+            ("control", estate.control.id), ("supply-line", estate.line.id),
+        }  # fmt: skip
+        assert named_by("supply-line", estate.line) == []
         assert named_by("control", estate.control) == []
         assert rooms_with_fluid(EVERYTHING, c, shared.fluid.id) == [room.id]
         assert rooms_with_fluid(EVERYTHING, c, estate.fluid.id) == []

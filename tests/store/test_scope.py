@@ -15,7 +15,7 @@ from service.store.installation import ensure_installation
 from service.store.keys import Key, add_key
 from service.store.scope import EVERYTHING, Scope
 from service.store.session import WriteSession
-from tests.store.estate import MOMENT
+from tests.store.estate import MOMENT, a_record
 from tests.store.test_history import append, assessment, event, finding, version
 
 # What is below the queries and given a connection by them, and asked by no one else.
@@ -75,7 +75,7 @@ def test_what_writes_is_given_the_session_first(name):
 
 
 @pytest.fixture
-def full(database, write, estate):
+def full(database, write, store, estate):
     """A site that has something of everything."""
 
     def job(session):
@@ -92,6 +92,15 @@ def full(database, write, estate):
         add_key(session, Key("k", "p", "d", "Ada", "reader", frozenset({site}), MOMENT))
 
     write(job)
+    beside = a_record("room", estate.site.id)
+    filled = a_record(
+        "vessel",
+        estate.site.id,
+        fluid_id=estate.vessel.fields["fluid_id"],
+        filling={"supply_line_id": estate.line.id},
+    )
+    door = a_record("opening", estate.site.id, room_id=estate.room.id, other_room_id=beside.id)
+    store(beside, filled, door)
     return estate
 
 
