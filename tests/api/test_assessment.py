@@ -24,7 +24,6 @@ def test_every_release_airflow_and_hazard_of_a_mixed_room_is_told_as_described(a
     cases = assessment["cases"]
     assert {case["release"] for case in cases} == {
         "boil-off", "filling", "overfill", "largest-vessel", "all-vessels", "spill", "vacuum-loss",
-        "line-break",
     }  # fmt: skip
     assert {case["airflow"] for case in cases} == {"as-measured", "design", "lost", "boosted"}
     assert {(case["hazard"], case["gas"]) for case in cases} == {

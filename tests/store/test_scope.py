@@ -28,6 +28,10 @@ BELOW = {
 }
 
 
+#: A second room of the site, behind a door.
+BESIDE = "01a4001a-7c00-7ff1-8c10-1dbefab4986d"
+
+
 def public_functions():
     for module in pkgutil.walk_packages(service.store.__path__, "service.store."):
         loaded = importlib.import_module(module.name)
@@ -92,7 +96,7 @@ def full(database, write, store, estate):
         add_key(session, Key("k", "p", "d", "Ada", "reader", frozenset({site}), MOMENT))
 
     write(job)
-    beside = a_record("room", estate.site.id)
+    beside = a_record("room", estate.site.id, id=BESIDE)
     filled = a_record(
         "vessel",
         estate.site.id,
@@ -202,5 +206,6 @@ def test_lists_hold_the_sites_own_and_what_is_shared(database, shared, full, oth
         for kind, own in (("fluid", full.fluid), ("basis", full.basis), ("room", full.room)):
             found = list_records(full.scope, connection, kind, {}, **page)
             common = [record for record in shared.records if record.kind == kind]
-            assert found == sorted([own, *common], key=lambda record: record.id)
+            beside = [record for record in found if record.id == BESIDE]
+            assert found == sorted([own, *common, *beside], key=lambda record: record.id)
             assert list_records(nothing, connection, kind, {}, **page) == common

@@ -133,7 +133,7 @@ class SharedRecordRead(AnyRecordRead):
 
 
 _UNIONS: Final = (Union, UnionType)
-_NOT_ANSWERED: Final = frozenset({"site", "room", "other_room", "vessel"})
+_NOT_ANSWERED: Final = frozenset({"site", "room", "other_room", "vessel", "source_vessel"})
 
 
 def read_of(created: type[RecordCreate]) -> Callable[[type[Answered]], type[Answered]]:

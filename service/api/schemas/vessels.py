@@ -66,7 +66,7 @@ CapacityLitres = Annotated[float, Quantity(units.LITRES, gt=0.0, le=1e6)]
 CapacityKilograms = Annotated[float, Quantity(units.KILOGRAMS, gt=0.0, le=1e6)]
 
 
-class Filling(Edge):
+class FillingRead(Edge):
     """How the vessel is filled, and what ends it."""
 
     by: FilledBy | None = None
@@ -81,11 +81,16 @@ class Filling(Edge):
     supply_line_id: RecordIdText | None = Field(
         default=None, description="The line that fills it; not removed while this names it."
     )
+    tested_on: Day | None = Field(default=None, description="When that shut-off was last tested.")
+    test_every_days: EveryDays | None = None
+
+
+class Filling(FillingRead):
+    """How the vessel is filled, with the line that does it by its id or its tag."""
+
     supply_line: Tag | None = Field(
         default=None, description="The tag of the line, in place of its id."
     )
-    tested_on: Day | None = Field(default=None, description="When that shut-off was last tested.")
-    test_every_days: EveryDays | None = None
 
 
 class Relief(Edge):
@@ -196,6 +201,9 @@ class VesselPatch(RecordPatch):
 class VesselRead(RecordRead):
     """A vessel."""
 
+    filling: FillingRead | None = Field(
+        description="Not of a dry-ice box or a cylinder: these are exchanged."
+    )
     fluid_id: RecordIdText
     fluid: str
 
