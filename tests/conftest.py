@@ -2,7 +2,9 @@
 
 import os
 import shutil
+import sys
 from datetime import UTC, datetime
+from pathlib import Path
 
 import pytest
 from hypothesis import settings
@@ -18,9 +20,51 @@ MOMENT = datetime(2027, 3, 1, 8, tzinfo=UTC)
 
 # No example is timed: a busy machine is no fault of the code. In CI the examples are the same in
 # every run, so that a commit passes or fails for what it holds; elsewhere each run seeks new ones.
+# `pytest` alone tries fewer of them, deploy/test.sh the usual hundred.
 settings.register_profile("here", deadline=None)
 settings.register_profile("ci", deadline=None, derandomize=True, print_blob=True)
 settings.load_profile("ci" if os.environ.get("CI") else "here")
+settings.register_profile("quick", max_examples=20)
+
+MARKS_LEFT_OUT = ("slow", "long", "browser", "bench")
+
+
+def keep_bytecode(folder):
+    """Where Python is told to leave no bytecode beside the sources, keep it in a folder.
+
+    Without any, each worker compiles everything anew, and each process that a test starts too:
+    that is more work than most tests are.
+    """
+    if sys.dont_write_bytecode and sys.pycache_prefix is None:
+        sys.dont_write_bytecode = False
+        sys.pycache_prefix = os.environ["PYTHONPYCACHEPREFIX"] = str(folder)
+        os.environ.pop("PYTHONDONTWRITEBYTECODE", None)
+
+
+keep_bytecode(Path(__file__).parents[1] / ".pytest_cache" / "bytecode")
+
+
+def is_left_out(mark, config):
+    return f"not {mark}" in config.option.markexpr
+
+
+def pytest_configure(config):
+    if is_left_out("slow", config):
+        settings.load_profile("quick")
+
+
+def pytest_ignore_collect(collection_path, config):
+    """Import no module of which every test is left out: the libraries that it needs take long."""
+    if collection_path.suffix == ".py" and collection_path.name.startswith("test_"):
+        text = collection_path.read_text(encoding="utf-8")
+        return (
+            any(
+                f"\npytestmark = pytest.mark.{mark}" in text and is_left_out(mark, config)
+                for mark in MARKS_LEFT_OUT
+            )
+            or None
+        )
+    return None
 
 
 # What crosses the whole service is run on SQLite while one works, and on both in deploy/test.sh.
