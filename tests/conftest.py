@@ -55,16 +55,11 @@ def pytest_configure(config):
 
 def pytest_ignore_collect(collection_path, config):
     """Import no module of which every test is left out: the libraries that it needs take long."""
-    if collection_path.suffix == ".py" and collection_path.name.startswith("test_"):
-        text = collection_path.read_text(encoding="utf-8")
-        return (
-            any(
-                f"\npytestmark = pytest.mark.{mark}" in text and is_left_out(mark, config)
-                for mark in MARKS_LEFT_OUT
-            )
-            or None
-        )
-    return None
+    if collection_path.suffix != ".py" or not collection_path.name.startswith("test_"):
+        return None
+    text = collection_path.read_text(encoding="utf-8")
+    left_out = (mark for mark in MARKS_LEFT_OUT if is_left_out(mark, config))
+    return any(f"\npytestmark = pytest.mark.{mark}" in text for mark in left_out) or None
 
 
 # What crosses the whole service is run on SQLite while one works, and on both in deploy/test.sh.
