@@ -89,7 +89,7 @@ def boil_off(seen: Raising) -> Rows:
 
 
 def filling(seen: Raising) -> Rows:
-    """Transfer loss of everything filled in the room, one vessel after another.
+    """Transfer loss of everything filled in the room, one vessel after another; by line together.
 
     The order of a session is nobody's record: the smallest rates go first, so that the highest
     fraction comes out, and vessels of one rate are one segment. A session longer than the
@@ -99,11 +99,16 @@ def filling(seen: Raising) -> Rows:
     member = np.flatnonzero(seen.raises & (found.filling > 0.0) & (found.filled_in > 0.0))
     if not member.size:
         return no_rows(seen.hazard)
-    level = found.filling[member] * seen.weight[member]
-    order = member[np.lexsort((member, found.filling[member], level, found.room[member]))]
-    room, rate = found.room[order], found.filling[order]
+    # Vessels of one line fill together, and as long as one another: they are one of the session.
+    line = seen.given.vessels.line[found.vessel[member]]
+    apart = np.where(line == UNKNOWN, seen.given.lines.room.size + member, line)
+    _, leads, together = np.unique(apart, return_index=True, return_inverse=True)
+    together, first_of = together.reshape(-1), member[leads]
+    by_unit = sum_by_group(found.filling[member], together, leads.size)
+    by_level = sum_by_group(found.filling[member] * seen.weight[member], together, leads.size)
+    order = np.lexsort((first_of, by_unit, by_level, found.room[first_of]))
+    room, rate, level = found.room[first_of[order]], by_unit[order], by_level[order]
     new_room = np.diff(room, prepend=-1) != 0
-    level = rate * seen.weight[order]
     new_segment = new_room | (np.diff(rate, prepend=0.0) != 0.0)
     new_segment |= np.diff(level, prepend=0.0) != 0.0
     row = np.cumsum(new_room) - 1
@@ -113,13 +118,15 @@ def filling(seen: Raising) -> Rows:
     rooms, width = room[new_room], int(place.max()) + 1
     cell = (row[first], place[first])
     lengths = np.zeros((rooms.size, width + 1))
-    lengths[cell] = sum_by_group(found.filled_in[order], segment, first.size)
+    lengths[cell] = sum_by_group(found.filled_in[first_of[order]], segment, first.size)
     rates, rates_level = np.zeros_like(lengths), np.zeros_like(lengths)
     rates[cell], rates_level[cell] = rate[first], level[first]
     sustained = seen.given.bases.sustained[rooms]
     lengths = _last_of(lengths, sustained)
     lengths[:, -1] = np.maximum(sustained - lengths.sum(axis=1), 0.0)
-    members = (row, order, rate * found.filled_in[order])
+    row_of = np.empty(order.size, dtype=np.int64)
+    row_of[order] = row
+    members = (row_of[together], member, found.filling[member] * found.filled_in[member])
     return lasting_rows(seen, rooms, lengths, rates, rates_level, members)
 
 

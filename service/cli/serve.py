@@ -103,7 +103,7 @@ def _serve(settings: Settings, listener: socket.socket) -> int:
 
 
 def _load_properties(database: "Database") -> None:
-    """Load the property library, where a vessel needs it, before anybody has to wait for it.
+    """Load the property library, where a record needs it, before anybody has to wait for it.
 
     It takes seconds, in which the whole process stands still.
     """
@@ -113,7 +113,8 @@ def _load_properties(database: "Database") -> None:
 
     with database.reading() as connection:
         cylinders = count_records(EVERYTHING, connection, "vessel", {"kind": "cylinder"})
-    if cylinders:
+        lines = count_records(EVERYTHING, connection, "supply-line", {})
+    if cylinders or lines:
         critical_point("nitrogen")
 
 

@@ -2,33 +2,61 @@
 
 import csv
 import io
+import shutil
 import sqlite3
 from datetime import timedelta
 from xml.etree import ElementTree as Xml
 
 import pytest
+from starlette.testclient import TestClient
 
 import service.changes.curve as asked
 from service.api.schemas.curve import CurveRead
+from service.app import create_app
 from service.audit.assessment import METHOD_VERSION
 from service.changes.cautions import CAUTIONS
-from tests.api.estate import a_detector, a_room, a_unit, a_vessel
+from service.clock import FixedClock
+from tests.api.conftest import settings_for
+from tests.api.estate import Asker, a_detector, a_room, a_unit, a_vessel
+from tests.conftest import MOMENT
 
 SVG = "{http://www.w3.org/2000/svg}"
 WAYS = {"release", "airflow", "hazard", "gas"}
 
 
+@pytest.fixture(scope="module")
+def file_with_mixed(estate_on_sqlite, tmp_path_factory):
+    """A file with the estate and a room of two fluids more, guarded; what is in it.
+
+    The tag of that room would be markup and a formula.
+    """
+    file, made = estate_on_sqlite
+    copy = tmp_path_factory.mktemp("mixed") / "mixed.sqlite"
+    shutil.copy(file, copy)
+    app = create_app(settings_for(f"sqlite:///{copy}"), clock=FixedClock(MOMENT))
+    with TestClient(app) as client:
+        ask = Asker(client, app, made.ask.keys)
+        room = ask.made("rooms", a_room(made.north.site, '=<b>"A&B"</b>'))
+        ask.made("vessels", a_vessel(room, "N", capacity_l=80.0))
+        ask.made("vessels", a_vessel(room, "AR", fluid="argon", capacity_l=30.0))
+        box = {"fluid": "carbon-dioxide", "kind": "dry-ice-box", "capacity_kg": 60.0}
+        ask.made("vessels", {"tag": "ICE", "room_id": room["id"], **box})
+        ask.made("ventilation-units", a_unit(room, "MIXED-AHU"))
+        ask.made("detectors", a_detector(room, "MIXED-OX"))
+    return copy, made, room
+
+
 @pytest.fixture
-def mixed(ask_one, estate_of_one):
-    """A room with two fluids, guarded; its tag would be markup and a formula."""
-    room = ask_one.made("rooms", a_room(estate_of_one.north.site, '=<b>"A&B"</b>'))
-    ask_one.made("vessels", a_vessel(room, "N", capacity_l=80.0))
-    ask_one.made("vessels", a_vessel(room, "AR", fluid="argon", capacity_l=30.0))
-    box = {"fluid": "carbon-dioxide", "kind": "dry-ice-box", "capacity_kg": 60.0}
-    ask_one.made("vessels", {"tag": "ICE", "room_id": room["id"], **box})
-    ask_one.made("ventilation-units", a_unit(room, "MIXED-AHU"))
-    ask_one.made("detectors", a_detector(room, "MIXED-OX"))
-    return room
+def estate_in_a_file(file_with_mixed, tmp_path):
+    """The estate with the room of two fluids in it; ``ask_one`` is started on it."""
+    file, made, _ = file_with_mixed
+    shutil.copy(file, tmp_path / "copy.sqlite")
+    return f"sqlite:///{tmp_path / 'copy.sqlite'}", made
+
+
+@pytest.fixture
+def mixed(file_with_mixed):
+    return file_with_mixed[2]
 
 
 def curve_path(room, query=""):

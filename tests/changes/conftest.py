@@ -1,13 +1,20 @@
 """Databases with shipped records, and changes carried out as the service itself does."""
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from functools import partial
 
 import pytest
 
 from service.changes.records import change_record, create_record, remove_record
 from service.changes.shipped import ship
+from service.clock import FixedClock
+from service.store.engine import Database
+from service.store.memory import StatusMemory
 from service.store.scope import EVERYTHING
 from service.store.session import WriteContext
+from service.store.writer import Writer
+from tests.conftest import MOMENT
 
 ITSELF = WriteContext(key_id=None, scope=EVERYTHING)
 
@@ -54,11 +61,19 @@ def line(writer, database, clock):
     return Line(writer, database, clock)
 
 
+@contextmanager
+def line_on(file) -> Iterator[Line]:
+    """Open the line on a migrated SQLite file, for a block."""
+    clock = FixedClock(MOMENT)
+    with (
+        Database(f"sqlite:///{file}") as database,
+        Writer(database, clock, StatusMemory(1_000_000)) as writer,
+    ):
+        yield Line(writer, database, clock)
+
+
 @pytest.fixture
 def sqlite_line(sqlite_url, clock, memory):
     """The line on one kind of database, where both would show the same."""
-    from service.store.engine import Database
-    from service.store.writer import Writer
-
     with Database(sqlite_url) as database, Writer(database, clock, memory) as writer:
         yield Line(writer, database, clock)

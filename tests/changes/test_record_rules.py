@@ -8,13 +8,9 @@ import pytest
 
 from service.changes.records import change_several
 from service.changes.requested import RecordChange
-from service.clock import FixedClock
 from service.errors import FieldsRefused, StillReferred
-from service.store.engine import Database
 from service.store.live import get_record
-from service.store.memory import StatusMemory
-from service.store.writer import Writer
-from tests.changes.conftest import Line
+from tests.changes.conftest import line_on
 from tests.conftest import MOMENT
 
 MORNING, NOON = "2027-04-01T06:00:00Z", "2027-04-01T12:00:00Z"
@@ -42,17 +38,22 @@ STOCK = {
 }  # fmt: skip
 
 
+def stocked(line):
+    """Make a site with two rooms and one of everything; the records by their names."""
+    line.a_site()
+    changes = [
+        RecordChange("create", kind, None, {"site": "S", "tag": kind, **fields})
+        for kind, fields in STOCK.values()
+    ]
+    made = line.run(partial(change_several, changes=changes)).items
+    return {name: item.record for name, item in zip(STOCK, made, strict=True)}
+
+
 class Stock:
-    def __init__(self, line):
+    def __init__(self, line, records):
         self.line = line
-        line.a_site()
-        changes = [
-            RecordChange("create", kind, None, {"site": "S", "tag": kind, **fields})
-            for kind, fields in STOCK.values()
-        ]
-        made = line.run(partial(change_several, changes=changes)).items
-        for name, item in zip(STOCK, made, strict=True):
-            setattr(self, name, item.record)
+        for name, record in records.items():
+            setattr(self, name, record)
 
     def made(self, record_kind, **fields):
         return self.line.create(record_kind, **{"site": "S", "tag": record_kind, **fields}).record
@@ -70,23 +71,30 @@ class Stock:
         return {bad.pointer for bad in refused.value.errors}
 
 
+@pytest.fixture(scope="module")
+def stock_file(migrated_sqlite_file, tmp_path_factory):
+    """A file with a site with two rooms and one of everything, each as it may be; its records."""
+    file = tmp_path_factory.mktemp("stock") / "stock.sqlite"
+    shutil.copy(migrated_sqlite_file, file)
+    with line_on(file) as line:
+        records = stocked(line)
+    return file, records
+
+
 @pytest.fixture
-def stock(sqlite_line):
-    """A site with two rooms and one of everything, each as it may be."""
-    return Stock(sqlite_line)
+def stock(stock_file, tmp_path):
+    """A copy of it to change."""
+    file, records = stock_file
+    with line_on(shutil.copy(file, tmp_path / "stock.sqlite")) as line:
+        yield Stock(line, records)
 
 
 @pytest.fixture(scope="module")
-def untouched_stock(migrated_sqlite_file, tmp_path_factory):
+def untouched_stock(stock_file):
     """The same for all tests that change nothing of it."""
-    file = tmp_path_factory.mktemp("stock") / "stock.sqlite"
-    shutil.copy(migrated_sqlite_file, file)
-    clock = FixedClock(MOMENT)
-    with (
-        Database(f"sqlite:///{file}") as database,
-        Writer(database, clock, StatusMemory(1000)) as writer,
-    ):
-        yield Stock(Line(writer, database, clock))
+    file, records = stock_file
+    with line_on(shutil.copy(file, file.with_name("untouched.sqlite"))) as line:
+        yield Stock(line, records)
 
 
 PIPE = {"inspected_on": DAY_AFTER_TOMORROW}

@@ -1,5 +1,6 @@
 """Whatever is altered in a database file is found, and where."""
 
+import shutil
 import sqlite3
 import zlib
 
@@ -9,6 +10,7 @@ from service.changes.verify import differences, verify
 from service.store.heads import INSTALLATION
 from service.store.history import version_of, versions_of
 from service.store.records import body
+from tests.changes.conftest import line_on
 
 ADDED = {
     "lfl_pct", "pit", "door", "leakage_area_m2", "relief_opening_m2", "floor_rating_kpa",
@@ -18,16 +20,26 @@ ADDED = {
 }  # fmt: skip
 
 
+@pytest.fixture(scope="module")
+def kept_file(migrated_sqlite_file, tmp_path_factory):
+    """A file with a site that has some history."""
+    file = tmp_path_factory.mktemp("kept") / "kept.sqlite"
+    shutil.copy(migrated_sqlite_file, file)
+    with line_on(file) as line:
+        line.a_site()
+        room = line.a_room(volume_m3=40.0)
+        vessel = line.a_vessel(room)
+        line.change(vessel, contents_l=12.0)
+        line.change(vessel, contents_l=14.0)
+        assert verify(line.database).sound
+    return file
+
+
 @pytest.fixture
-def kept(sqlite_line):
-    """A site with some history."""
-    sqlite_line.a_site()
-    room = sqlite_line.a_room(volume_m3=40.0)
-    vessel = sqlite_line.a_vessel(room)
-    sqlite_line.change(vessel, contents_l=12.0)
-    sqlite_line.change(vessel, contents_l=14.0)
-    assert verify(sqlite_line.database).sound
-    return sqlite_line
+def kept(kept_file, tmp_path):
+    """A copy of it to alter."""
+    with line_on(shutil.copy(kept_file, tmp_path / "kept.sqlite")) as line:
+        yield line
 
 
 def altered(line, *statements):
