@@ -18,10 +18,11 @@ from service.audit.incoming import incoming, same_incoming
 from service.audit.inputs import Reference, RoomValues
 from service.audit.layering import layering
 from service.audit.margins import without_margins
-from service.audit.networks import NO_ROOM, networks
+from service.audit.networks import NO_ROOM, Networks, networks
 from service.audit.rules.case_records import case_records
 from service.audit.rules.registry import RULES
 from service.audit.rules.rule import (
+    Came,
     Direction,
     Judged,
     Rule,
@@ -92,7 +93,9 @@ def _told(tables: Tables, judged: Sequence[tuple[Rule, Judged]], moment: np.date
     return Told(
         tables=tables,
         without=bare,
-        incoming_without=same_incoming(bare, tables.networks, tables.came),
+        incoming_without=None
+        if tables.came is None
+        else same_incoming(bare, tables.networks, tables.came.rows),
         leading=_leading(tables, judged),
     )
 
@@ -103,7 +106,6 @@ def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) ->
     assumed = assumptions(table)
     sound = _sound(table)
     found = networks(rooms, sound, table.given, table.conditions, table.air, np.unique(table.room))
-    came = incoming(table, found)
     return Tables(
         rooms=rooms,
         failed=table.failed,
@@ -114,9 +116,25 @@ def _tables(rooms: Sequence[RoomValues], at: datetime, moment: np.datetime64) ->
         records=case_records(rooms, sound, table),
         layering=layering(table, cases.results),
         networks=found,
-        came=came,
-        incoming=evaluate_incoming(came, cases, moment),
-        incoming_records=case_records(rooms, sound, came.table),
+        came=_came(rooms, sound, cases, found, moment),
+    )
+
+
+def _came(
+    rooms: Sequence[RoomValues],
+    sound: Integers,
+    cases: Evaluation,
+    found: Networks,
+    moment: np.datetime64,
+) -> Came | None:
+    """What comes into rooms from others; most rooms are joined to none."""
+    if not found.count:
+        return None
+    rows = incoming(cases.table, found)
+    return Came(
+        rows=rows,
+        cases=evaluate_incoming(rows, cases, moment),
+        records=case_records(rooms, sound, rows.table),
     )
 
 
@@ -144,8 +162,10 @@ def _leading(tables: Tables, judged: Sequence[tuple[Rule, Judged]]) -> Leading:
             answer.consequence[answer.broken],
         )
     own, own_rank = _nearest(tables.cases, worst[tables.sound], _broken(judged, Subject.CASES))
+    if tables.came is None:
+        return Leading(own=own, incoming=np.full(own.size, UNKNOWN))
     came, came_rank = _nearest(
-        tables.incoming, worst[tables.sound], _broken(judged, Subject.INCOMING)
+        tables.came.cases, worst[tables.sound], _broken(judged, Subject.INCOMING)
     )
     return Leading(own=own, incoming=np.where(came_rank > own_rank, came, UNKNOWN))
 

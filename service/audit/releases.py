@@ -164,24 +164,24 @@ def overfill(seen: Raising) -> Rows:
     source = member[first[in_record_order]]
     members = (row_of[alike.reshape(-1)], member)
     rows = steady_rows(seen, source, found.overfill[source], found.overfill_lasts[source], members)
-    return _slowed_by_bunds(seen, rows, source)
+    return _slowed_by_bund(seen, rows, source)
 
 
 def _bund_area(seen: Raising, source: Integers) -> Floats:
     """Floor inside the bund of the vessel of a source, or of its room; 0 where there is none."""
     controls = seen.given.controls
-    bunds = np.flatnonzero((controls.kind == _BUND) & (controls.area > 0.0))
+    held = np.flatnonzero((controls.kind == _BUND) & (controls.area > 0.0))
     # The largest wets the most floor.
     of_vessel = np.zeros(seen.given.vessels.room.size)
     of_room = np.zeros(seen.given.count)
-    named = controls.vessel[bunds] != UNKNOWN
-    np.maximum.at(of_vessel, controls.vessel[bunds[named]], controls.area[bunds[named]])
-    np.maximum.at(of_room, controls.room[bunds[~named]], controls.area[bunds[~named]])
+    named = controls.vessel[held] != UNKNOWN
+    np.maximum.at(of_vessel, controls.vessel[held[named]], controls.area[held[named]])
+    np.maximum.at(of_room, controls.room[held[~named]], controls.area[held[~named]])
     own = of_vessel[seen.found.vessel[source]]
     return np.where(own > 0.0, own, of_room[seen.found.room[source]])
 
 
-def _slowed_by_bunds(seen: Raising, rows: Rows, source: Integers) -> Rows:
+def _slowed_by_bund(seen: Raising, rows: Rows, source: Integers) -> Rows:
     """The same rows, with what runs into a bund evaporating no faster than its floor allows."""
     area = _bund_area(seen, source)
     held = np.flatnonzero(area > 0.0)

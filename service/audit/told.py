@@ -41,7 +41,7 @@ class Told:
 
     tables: Tables
     without: CaseTable  # the same cases with every stacked factor at 1
-    incoming_without: Incoming
+    incoming_without: Incoming | None
     leading: Leading
     _all_cases: Sequence[Case] = field(init=False)  # by row, whether shown or not
     _all_incoming: Sequence[Case] = field(init=False)
@@ -57,7 +57,7 @@ class Told:
             ("_all_cases", told_cases(self.tables, self.without, solve(self.without))),
             ("_all_incoming", told_incoming(self.tables, self.incoming_without)),
             ("_cases", _rows_by_room(self.tables)),
-            ("_incoming", _rows_by_room(self.tables.beside())),
+            ("_incoming", _incoming_by_room(self.tables)),
             ("_assumed", _by_room(self.tables.assumed.room, self.tables)),
             ("_ventilation", _ventilation(self.tables)),
             ("_figures", _figures(self.tables)),
@@ -153,6 +153,12 @@ def _rows_by_room(tables: Tables) -> tuple[Integers, ...]:
     rows = shown[order]
     ends = np.searchsorted(table.room[rows], np.arange(1, tables.sound.size))
     return tuple(np.split(rows, ends)) if tables.sound.size else ()
+
+
+def _incoming_by_room(tables: Tables) -> tuple[Integers, ...]:
+    if tables.came is None:
+        return (np.empty(0, dtype=np.int64),) * tables.sound.size
+    return _rows_by_room(tables.beside(tables.came))
 
 
 def _ventilation(tables: Tables) -> Mapping[str, Floats]:

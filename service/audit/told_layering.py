@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from math import isfinite
 from typing import Any, Final
 
 import numpy as np
@@ -11,8 +12,6 @@ from service.audit.layering import NO_CASE, Zone
 from service.audit.release_rows import NO_VARIANT, VARIANTS
 from service.audit.releases import RELEASES
 from service.audit.rules.rule import Tables
-from service.audit.rules.words import number
-from service.physics.arrays import rounded
 
 _LITRES: Final = 1000.0
 _CAUTION: Final = (
@@ -70,4 +69,5 @@ def _pit(tables: Tables, row: int) -> dict[str, Any] | None:
 
 
 def _told(value: float) -> float | None:
-    return number(float(rounded(np.float64(value)))) if np.isfinite(value) else None
+    # To ten figures, as all that the solver hands on; one number needs no array for it.
+    return float(f"{value:.10g}") if isfinite(value) else None

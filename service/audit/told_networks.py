@@ -20,10 +20,12 @@ _ELSEWHERE: Final = "It comes from another room, where less must be let go."
 METHOD: Final = "neighbours/network"
 
 
-def told_incoming(tables: Tables, without: Incoming) -> Sequence[Case]:
+def told_incoming(tables: Tables, without: Incoming | None) -> Sequence[Case]:
     """Tell the cases of other rooms; those without margins are row by row."""
-    told = told_cases(tables.beside(), without.table, without.results)
-    sources = [tables.room(row).record for row in tables.came.table.network.tolist()]
+    if tables.came is None or without is None:
+        return ()
+    told = told_cases(tables.beside(tables.came), without.table, without.results)
+    sources = [tables.room(row).record for row in tables.came.rows.table.network.tolist()]
     return [
         replace(case, from_room=source, required_reason=_ELSEWHERE, method=(*case.method, METHOD))
         for case, source in zip(told, sources, strict=True)

@@ -1,4 +1,4 @@
-"""Broken lines, lost vacuum, quenches, bunds and filling by a line (judging 1, methods G)."""
+"""Broken lines, lost vacuum, quenches, bund and filling by a line (judging 1, methods G)."""
 
 from dataclasses import replace
 

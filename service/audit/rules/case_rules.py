@@ -133,7 +133,8 @@ class CaseRule:
 def told_of_cases(tables: Tables, rows: Sequence[int]) -> tuple[str, dict[str, Any]]:
     """What there is to say of the worst of some cases, and the numbers of all."""
     others = [case_evidence(tables, each) for each in rows[1:]]
-    return _statement(tables, rows[0]), {**case_evidence(tables, rows[0]), "cases": others}
+    worst = {**case_evidence(tables, rows[0]), **_pool(tables, rows[0])}
+    return _statement(tables, rows[0]), {**worst, "cases": others}
 
 
 def _statement(tables: Tables, row: int) -> str:
@@ -287,9 +288,7 @@ def _of_release(tables: Tables, row: int) -> dict[str, Any]:
     vessel, line = int(table.sources.vessel[source]), int(table.sources.line[source])
     variant = int(table.variant[row])
     told: dict[str, Any] = {} if variant == NO_VARIANT else {"variant": VARIANTS[variant]}
-    if release == SPILL and table.instant[row] > 0.0:
-        told |= _pool(tables, row, vessel)
-    elif release == VACUUM_LOSS:
+    if release == VACUUM_LOSS:
         flux = JACKET_OPEN_FLUX if variant == JACKET_OPEN else float(table.stock.heat_flux[vessel])
         told |= {
             "cold_area_m2": number(float(table.stock.cold_area[vessel])),
@@ -330,9 +329,12 @@ def _flows(tables: Tables, row: int) -> float | None:
     return number(float(table.durations[row][table.rates[row] > 0.0].sum()))
 
 
-def _pool(tables: Tables, row: int, vessel: int) -> dict[str, Any]:
-    """How large a pool is, and how soon it is gone."""
+def _pool(tables: Tables, row: int) -> dict[str, Any]:
+    """How large the pool of a spill is, and how soon it is gone."""
     table = tables.cases.table
+    if RELEASES[int(table.release[row])].slug != SPILL or not table.instant[row] > 0.0:
+        return {}
+    vessel = int(table.sources.vessel[tables.records.sources[row][0]])
     given, room = table.given, int(table.network[row])
     fluid = int(given.vessels.fluid[vessel])
     mass = float(table.stock.held_mass[vessel])

@@ -12,7 +12,7 @@ from service.audit.assessment import SEVERITIES
 from service.audit.rules import enrichment, flammable, oxygen, toxic
 from service.audit.rules.case_rules import CaseRule, told_of_cases
 from service.audit.rules.kinds import never
-from service.audit.rules.rule import Direction, Judged, Said, Subject, Tables, family
+from service.audit.rules.rule import Came, Direction, Judged, Said, Subject, Tables, family
 from service.audit.rules.words import as_record, at_least, number
 from service.physics.constants import SECONDS_PER_HOUR
 
@@ -60,7 +60,7 @@ class NeighbourRule:
 
     def judge(self, tables: Tables, at: np.datetime64) -> Judged:
         """Broken where gas of the release comes in beyond a mark."""
-        if not tables.came.table.size:
+        if tables.came is None or not tables.came.rows.table.size:
             nothing = np.empty(0)
             return Judged(
                 broken=np.empty(0, dtype=np.bool_),
@@ -69,12 +69,14 @@ class NeighbourRule:
                 consequence=np.empty(0, dtype=np.int64),
                 turns_at=never(0),
             )
-        return self.case.judge(tables.beside(), at)
+        return self.case.judge(tables.beside(tables.came), at)
 
     def say(self, tables: Tables, judged: Judged, rows: Sequence[int]) -> Said:
         """Say which room the gas comes from and by which way, and what helps in either."""
-        statement, evidence = told_of_cases(tables.beside(), rows)
-        came, row = tables.came, rows[0]
+        if tables.came is None:
+            raise ValueError("No gas comes from another room.")
+        statement, evidence = told_of_cases(tables.beside(tables.came), rows)
+        came, row = tables.came.rows, rows[0]
         network, place = int(came.network[row]), int(came.place[row])
         source = tables.room(int(came.table.network[row])).record
         through = tables.networks.by[network][place]
@@ -97,24 +99,24 @@ class NeighbourRule:
                 "steps": steps,
                 "severity_here": severity,
                 "restore_m3_h": number(restore),
-                "others": self._others(tables, rows),
+                "others": _others(tables, tables.came, rows),
             },
         )
 
-    def _others(self, tables: Tables, rows: Sequence[int]) -> list[dict[str, object]]:
-        """The other rooms that the same gas comes from, the worst case of each."""
-        came = tables.came
-        worst: dict[int, int] = {}
-        for row in rows:
-            worst.setdefault(int(came.table.network[row]), row)
-        return [
-            {
-                "from_room": as_record(tables.room(source).record),
-                "oxygen_pct": number(100.0 * float(came.results.oxygen[row])),
-                "value_pct": number(float(tables.incoming.decisive_value[row])),
-            }
-            for source, row in list(worst.items())[1:]
-        ]
+
+def _others(tables: Tables, came: Came, rows: Sequence[int]) -> list[dict[str, object]]:
+    """The other rooms that the same gas comes from, the worst case of each."""
+    worst: dict[int, int] = {}
+    for row in rows:
+        worst.setdefault(int(came.rows.table.network[row]), row)
+    return [
+        {
+            "from_room": as_record(tables.room(source).record),
+            "oxygen_pct": number(100.0 * float(came.rows.results.oxygen[row])),
+            "value_pct": number(float(came.cases.decisive_value[row])),
+        }
+        for source, row in list(worst.items())[1:]
+    ]
 
 
 def _rules() -> tuple[NeighbourRule, ...]:

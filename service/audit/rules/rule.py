@@ -19,6 +19,8 @@ from service.audit.networks import Networks
 from service.audit.rules.case_records import CaseRecords
 from service.physics.arrays import Floats, Integers, Mask
 
+_NO_ROWS: Final = np.empty(0, dtype=np.int64)
+
 
 class Subject(StrEnum):
     """Which table a rule judges, row by row."""
@@ -63,6 +65,15 @@ class Said:
 
 
 @dataclass(frozen=True, slots=True)
+class Came:
+    """The cases whose gas comes from another room, judged where it comes to."""
+
+    rows: Incoming
+    cases: Evaluation
+    records: CaseRecords
+
+
+@dataclass(frozen=True, slots=True)
 class Tables:
     """Everything that rules look at; ``sound`` are the rooms that are rows of the cases."""
 
@@ -75,13 +86,11 @@ class Tables:
     records: CaseRecords
     layering: Layering
     networks: Networks
-    came: Incoming
-    incoming: Evaluation  # of the cases that came
-    incoming_records: CaseRecords
+    came: Came | None  # None: no room is joined to another
 
-    def beside(self) -> Tables:
+    def beside(self, came: Came) -> Tables:
         """The same with the cases that came from other rooms in place of the rooms' own."""
-        return replace(self, cases=self.incoming, records=self.incoming_records)
+        return replace(self, cases=came.cases, records=came.records)
 
     def room(self, row: int) -> RoomValues:
         """The room of a row of the columns."""
@@ -135,7 +144,7 @@ def rooms_of(tables: Tables, subject: Subject) -> Integers:
     given = table.given
     rows = {
         Subject.CASES: table.room,
-        Subject.INCOMING: tables.incoming.table.room,
+        Subject.INCOMING: _NO_ROWS if tables.came is None else tables.came.rows.table.room,
         Subject.ROOMS: np.arange(given.count),
         Subject.DETECTORS: given.detectors.room,
         Subject.VESSELS: given.vessels.room,
@@ -155,8 +164,8 @@ def record_of(tables: Tables, subject: Subject, row: int) -> Reference:
         return tables.rooms[row].record
     if subject in _EQUIPMENT:
         return _EQUIPMENT[subject](tables, row)
-    if subject is Subject.INCOMING:
-        return tables.room(int(tables.incoming.table.room[row])).record
+    if subject is Subject.INCOMING and tables.came is not None:
+        return tables.room(int(tables.came.rows.table.room[row])).record
     return tables.room(int(table.room[row]) if subject is Subject.CASES else row).record
 
 
