@@ -51,6 +51,12 @@ class Asker:
         assert answer.status_code == 201, answer.text
         return answer.json()
 
+    def made_at_once(self, records):
+        """Create records of some kinds in one request, which is judged once."""
+        changes = [{"op": "create", "kind": kind, "fields": fields} for kind, fields in records]
+        answer = self("POST", "/v1/changes", {"changes": changes})
+        assert answer.status_code == 200, answer.text
+
     def body(self, path, **options):
         """Read something and return its body."""
         answer = self("GET", path, **options)
@@ -97,6 +103,13 @@ def a_vessel(room, tag="DEW-014", **fields):
         "capacity_l": 50.0,
         **fields,
     }
+
+
+def a_vessel_in(site, room_tag, tag, **fields):
+    """A vessel in a room that is made with it, and is known by its tag only."""
+    vessel = a_vessel({"id": None}, tag, **fields)
+    del vessel["room_id"]
+    return {**vessel, "room": room_tag, "site_id": site["id"]}
 
 
 def a_detector(room, tag="OX-1", **fields):

@@ -1,9 +1,12 @@
 """The assessment over HTTP: whole, and as it is described."""
 
+import pytest
+
 from service.api.schemas.status import AssessmentRead, StatusRead
 from tests.api.estate import a_detector, a_room, a_unit, a_vessel
 
 
+@pytest.mark.slow
 def test_every_release_airflow_and_hazard_of_a_mixed_room_is_told_as_described(ask, estate):
     room = ask.made("rooms", a_room(estate.north.site, "MIXED", height_m=3, floor_area_m2=40))
     detector = ask.made("detectors", a_detector(room, "OX-MIXED"))

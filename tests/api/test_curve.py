@@ -93,6 +93,7 @@ def test_without_a_choice_it_is_the_case_of_the_status(ask, estate):
     assert "screening calculations" in curve["cautions"]
 
 
+@pytest.mark.slow
 def test_each_case_of_the_assessment_has_its_course_with_the_same_numbers(ask_one, mixed):
     cases = ask_one.body(f"/v1/rooms/{mixed['id']}/assessment")["cases"]
     assert {case["hazard"] for case in cases} == {"oxygen-low", "toxic"}
@@ -291,6 +292,7 @@ def test_a_course_past_its_turn_says_that_it_is_behind(ask_one, estate_of_one):
     assert "fallen due" in ask_one("GET", curve_path(room, "?format=svg")).text
 
 
+@pytest.mark.slow
 def test_nothing_is_stored_by_asking(ask_one, mixed):
     moment = moment_of(ask_one)
     before = content_of(ask_one)

@@ -6,17 +6,20 @@ from itertools import combinations
 import pytest
 
 from service.api.schemas.findings import FindingRead
-from tests.api.estate import a_room, a_vessel
+from tests.api.estate import a_room, a_vessel, a_vessel_in
 
 
 @pytest.fixture
 def crowded(ask, estate):
     """Rooms with more findings than one page holds."""
     for number in range(4):
-        room = ask.made(
-            "rooms", a_room(estate.north.site, f"F-{number}", labels={"ward": str(number % 2)})
+        site, tag = estate.north.site, f"F-{number}"
+        ask.made_at_once(
+            [
+                ("room", a_room(site, tag, labels={"ward": str(number % 2)})),
+                ("vessel", a_vessel_in(site, tag, tag, capacity_l=120)),
+            ]
         )
-        ask.made("vessels", a_vessel(room, f"F-{number}", capacity_l=120))
         ask.clock.advance(timedelta(days=2))
     return estate
 
@@ -119,6 +122,7 @@ def test_a_filter_that_means_nothing_is_named(ask_one, query, parameter):
     assert answer.json()["errors"][0]["parameter"] == parameter
 
 
+@pytest.mark.slow
 def test_each_finding_is_on_one_page_now_and_in_the_past(ask, crowded):
     moment = ask.clock.now().isoformat().replace("+00:00", "Z")
     ask.clock.advance(timedelta(minutes=1))

@@ -237,6 +237,7 @@ def test_the_description_carries_the_cautions_and_a_relative_server(described):
     assert described["openapi"].startswith("3.1")
 
 
+@pytest.mark.slow
 def test_examples_of_the_description_are_as_their_schemas_say(described):
     seen = 0
     for name, schema in described["components"]["schemas"].items():

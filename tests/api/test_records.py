@@ -240,7 +240,14 @@ def test_a_query_that_means_nothing_is_refused_by_name(ask_one, query, parameter
     assert answer.json()["errors"][0]["parameter"] == parameter
 
 
-@pytest.mark.parametrize("sort", ["-id", "-egress_m", "building"])
+@pytest.mark.parametrize(
+    "sort",
+    [
+        pytest.param("-id", marks=pytest.mark.slow),
+        "-egress_m",
+        pytest.param("building", marks=pytest.mark.slow),
+    ],
+)
 def test_records_that_live_throughout_appear_once_while_others_come_and_go(ask, estate, sort):
     site = estate.north.site
     made = [

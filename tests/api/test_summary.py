@@ -8,19 +8,24 @@ from service.api.kept import KeptBodies
 from service.api.routes import summary as route
 from service.api.schemas.summary import SummaryRead
 from service.clock import moment_of
-from tests.api.estate import a_room, a_vessel
+from tests.api.estate import a_room, a_vessel_in
 
 
 @pytest.fixture
 def crowded(ask, estate):
     """A small room with a large dewar, a guarded one, and one that is only planned."""
-    for tag, litres, fields in (
-        ("BAD", 200, {}),
-        ("MILD", 1, {}),
-        ("LATER", 200, {"state": "planned"}),
-    ):
-        room = ask.made("rooms", a_room(estate.north.site, tag, **fields))
-        ask.made("vessels", a_vessel(room, f"V-{tag}", capacity_l=litres))
+    ask.made_at_once(
+        change
+        for tag, litres, fields in (
+            ("BAD", 200, {}),
+            ("MILD", 1, {}),
+            ("LATER", 200, {"state": "planned"}),
+        )
+        for change in (
+            ("room", a_room(estate.north.site, tag, **fields)),
+            ("vessel", a_vessel_in(estate.north.site, tag, f"V-{tag}", capacity_l=litres)),
+        )
+    )
     return estate
 
 

@@ -72,7 +72,10 @@ def at_event(found, what):
     return next((point for point in found.points if what in point.events), None)
 
 
-@pytest.mark.parametrize("name", ROOMS)
+@pytest.mark.parametrize(
+    "name",
+    [pytest.param(name, marks=() if name == "hydrogen" else pytest.mark.slow) for name in ROOMS],
+)
 def test_each_case_has_the_extreme_and_the_times_of_the_assessment_exactly(name):
     room = ROOMS[name]
     cases = assessed(room)[0].cases
@@ -143,7 +146,9 @@ def test_oxygen_before_a_release_at_once_and_after_it_is_told_apart():
     assert found.points[0].oxygen_pct == pytest.approx(FRESH * (1.0 - gas / 100.0), rel=1e-9)
 
 
-@pytest.mark.parametrize("points", [2, 3, 5, 11, 200, 2000])
+@pytest.mark.parametrize(
+    "points", [2, 3, *(pytest.param(many, marks=pytest.mark.slow) for many in (5, 11, 2000)), 200]
+)
 @pytest.mark.parametrize("release", ["boil-off", "overfill", "largest-vessel"])
 def test_there_are_never_more_points_than_asked_for_and_they_rise(release, points):
     for airflow in ("as-measured", "boosted"):

@@ -568,6 +568,7 @@ def test_the_air_required_just_holds_and_a_little_less_does_not(held, arrangemen
         assert (enough, short > 0) == (0, True)
 
 
+@pytest.mark.slow
 @quick
 @given(rooms)
 def test_what_is_said_of_a_case_is_what_it_is(room):

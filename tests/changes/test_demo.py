@@ -188,6 +188,7 @@ def test_what_investigations_tell_of_is_found(estate, tag, rule):
     assert standings(estate)[tag] in ("action", "stop")
 
 
+@pytest.mark.slow
 def test_what_was_loaded_follows_from_its_records(estate):
     assert verify(estate.database).sound
 

@@ -310,6 +310,7 @@ FANS = [
 ]
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(("hold", "fan", "other"), FANS)
 def test_the_smallest_flow_is_the_root_of_the_highest_fraction(hold, fan, other):
     """Outside: scipy 1.17.1, brentq on the highest fraction of each room."""
