@@ -63,7 +63,7 @@ def pytest_ignore_collect(collection_path, config):
 
 
 # What crosses the whole service is run on SQLite while one works, and on both in deploy/test.sh.
-QUICK_ON_BOTH = {"store", "migrations"}
+QUICK_ON_BOTH = {"migrations"}
 
 
 @pytest.hookimpl(tryfirst=True)

@@ -52,6 +52,7 @@ def filled(path):
     return path.replace("{external_id}", "NONE")
 
 
+@pytest.mark.slow
 def test_every_path_lets_through_the_roles_of_the_table_and_nobody_else(ask_one):
     seen = 0
     for method, template in operations(ask_one.app.openapi()):

@@ -339,6 +339,7 @@ class TestOverfillAndFilling:
         assert full == pytest.approx(10 * counted, rel=1e-6)
 
 
+@pytest.mark.slow
 @settings(max_examples=20, deadline=None)
 @given(
     st.floats(1.0, 500.0), st.floats(0.0, 500.0), st.floats(20.0, 500.0),

@@ -359,6 +359,7 @@ BY_GAS = {
 NEIGHBOURS = [rule for rule in RULES if rule.subject is Subject.INCOMING]
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("rule", NEIGHBOURS, ids=lambda rule: f"{rule.slug}-{rule.gas}")
 def test_each_rule_is_broken_beyond_an_open_door_and_not_beyond_a_shut_one(rule):
     release = rule.slug.split("/")[1].removeprefix("enriched-")

@@ -99,6 +99,7 @@ def test_a_fan_of_the_neighbour_is_felt_in_the_network_of_the_source(line, site)
     assert tags(fan) == {"R0", "R1", "R2"}
 
 
+@pytest.mark.slow
 def test_a_detector_is_felt_where_it_hangs(line, site):
     chain(line, 3)
     a_dewar(line, "R0")
@@ -107,6 +108,7 @@ def test_a_detector_is_felt_where_it_hangs(line, site):
     assert verify(line.database).sound
 
 
+@pytest.mark.slow
 def test_the_same_change_twice_leaves_other_rooms_alone(line, site):
     chain(line, 3)
     made = a_dewar(line, "R0")

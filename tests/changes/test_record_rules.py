@@ -285,6 +285,7 @@ def test_a_detector_and_the_unit_it_boosts_are_made_and_go_together(stock):
     assert [item.removed for item in removed] == [True, True]
 
 
+@pytest.mark.slow
 def test_objects_are_merged_member_by_member(stock):
     first = {"fitted": True, "set_pressure_kpa": 150.0, "inspected_on": "2027-01-05"}
     stock.line.change(stock.vessel, relief=first, filling={"by": "automatic"})

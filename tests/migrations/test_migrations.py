@@ -95,6 +95,7 @@ def writer_of(database):
     return Writer(database, SystemClock(), StatusMemory(1000))
 
 
+@pytest.mark.slow
 def test_a_database_goes_up_down_and_up_with_data_in_it(empty_database_url):
     url = empty_database_url
     assert schema_state(url) == "empty"

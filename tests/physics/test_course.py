@@ -84,6 +84,7 @@ def test_a_release_in_steps_leaves_the_oxygen_of_the_balance(supply, exhaust, ox
     assert run.last == run.ends[0, 3]
 
 
+@pytest.mark.slow
 def test_two_hundred_random_rooms_agree_with_an_ode_solver():
     """Outside: scipy 1.17.1, DOP853, rtol 1e-11, segment by segment."""
     inputs = random_rooms(1)

@@ -176,6 +176,7 @@ def test_no_gas_is_lost_and_no_fraction_leaves_its_bounds(seed, rooms):
     assert_allclose(held + run.left, had + let_go, rtol=1e-9)
 
 
+@pytest.mark.slow
 @given(st.integers(0, 10_000), st.floats(0.05, 0.95))
 def test_splitting_a_segment_changes_nothing(seed, share):
     network = random_networks(seed, 2, 5, segments=2)

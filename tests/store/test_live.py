@@ -340,6 +340,7 @@ SORTS = ("capacity_l", "manifold", "tag", "mobile", "counted_at", "id", "use_l_d
 MOMENTS = ("2027-01-01T00:00:00.000000Z", "2027-01-01T00:00:00.000001Z", None)
 
 
+@pytest.mark.slow
 @settings(
     max_examples=12, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
 )
