@@ -538,6 +538,16 @@ _METHODS: Final = (
         True,
     ),
     Method(
+        "layering/cold-cloud",
+        "F4, F5",
+        "How cold and how heavy a mixture of released gas and air is: fog ends where it is warm, "
+        "not where its oxygen is safe. Told for reading; no finding rests on it.",
+        "y M_g (h_g(T) - h_0) + (1 - y) M_a (h_a(T) - h_a(T_a)) = 0; rho = p M / (R T)",
+        ("property-library", "ideal-gas"),
+        "dry air at 101 325 Pa, above the dew point of air (81.7 K), without heat from walls",
+        False,
+    ),
+    Method(
         "neighbours/network",
         "L1 to L4",
         "Gas that goes from room to room: by open doors and openings, by the air that a release "

@@ -47,6 +47,7 @@ WANTED = {
     "line-break/gas": "G6",
     "vacuum-loss/heat-flux": "G3",
     "quench/mean-and-peak": "G7",
+    "layering/cold-cloud": "F4, F5",
     "neighbours/network": "L1 to L4",
     "neighbours/door-exchange": "L5",
 }
