@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Final
 
@@ -9,12 +10,16 @@ import numpy as np
 
 from service.audit.air import AIRFLOWS, AS_MEASURED
 from service.audit.cases import CaseTable
-from service.audit.columns import SETTLES, UNKNOWN, is_one_of
+from service.audit.columns import PHASES
 from service.audit.conditions import known
 from service.audit.hazards import HAZARDS, OXYGEN_LOW
+from service.audit.inventory import CYLINDER
+from service.audit.safeguards import gas_heights
 from service.audit.solve import Results
+from service.audit.sources import NO_LINE, NO_VESSEL
 from service.physics.arrays import Floats, Integers, Mask, quotient, sum_by_group
-from service.physics.constants import GAS_CONSTANT, OXYGEN_IN_AIR
+from service.physics.constants import OXYGEN_IN_AIR
+from service.physics.gas import gas_density
 from service.physics.layering import (
     breathing_zone_volume,
     depth_of_cold_layer,
@@ -26,7 +31,7 @@ NO_CASE: Final = -1
 # Height of somebody who kneels or has collapsed. [m]  Methods F1.
 KNEELING: Final = 0.5
 
-_LOW, _HIGH, _METHANE = range(len(SETTLES))
+_GAS: Final = PHASES.index("gas")
 _OXYGEN_LOW: Final = [hazard.slug for hazard in HAZARDS].index(OXYGEN_LOW)
 _AS_MEASURED: Final = AIRFLOWS.index(AS_MEASURED)
 
@@ -65,7 +70,8 @@ def layering(table: CaseTable, results: Results) -> Layering:
     height = known(conditions.height, np.cbrt(rooms.gross_volume))
     floor = known(rooms.floor_area, rooms.gross_volume / height)
     free = quotient(conditions.volume, rooms.gross_volume, where_zero=1.0)
-    sinks, rises = _gas_by_way(table)
+    low_member, high_member = gas_heights(table.given, table.sources.fluid[table.member_source])
+    sinks, rises = _gas_of(table, low_member), _gas_of(table, high_member)
     accident = table.counts & ~table.sustained & (table.hazard == _OXYGEN_LOW)
     accident &= table.airflow == _AS_MEASURED
     kneeling = np.minimum(
@@ -73,45 +79,48 @@ def layering(table: CaseTable, results: Results) -> Layering:
         conditions.volume,
     )
     low, gas = _worst(table, accident, sinks, count)
-    mass, vapour, liquid = _of_worst(table, low)
+    found = _substance(table, low, low_member)
     pit = rooms.pit_area * rooms.pit_depth
     dug = ~np.isnan(pit)
-    cold = depth_of_cold_layer(mass, known(vapour, 1.0), floor)
-    to_fill = [
-        np.where(
-            dug & (low != NO_CASE) & (density > 0.0),
-            liquid_to_fill_pit(known(pit, 0.0), liquid, np.where(density > 0.0, density, 1.0)),
-            np.nan,
-        )
-        for density in (vapour, quotient(mass, gas, where_zero=np.nan))
-    ]
     return Layering(
         breathing=_zone(table, results, accident, sinks, conditions.floor_zone),
         kneeling=_zone(table, results, accident, sinks, kneeling),
         ceiling=_zone(table, results, accident, rises, conditions.ceiling_zone),
-        cold_depth=np.where((low != NO_CASE) & ~np.isnan(vapour), cold, np.nan),
+        cold_depth=_where_known(
+            depth_of_cold_layer, found.mass, found.cold_density, floor, of=found.cold_density
+        ),
         warm_depth=np.where(low == NO_CASE, np.nan, depth_of_warm_layer(gas, floor)),
         pit_volume=pit,
         pit_gas=gas,
         pit_case=np.where(dug, low, NO_CASE),
         pit_oxygen=OXYGEN_IN_AIR * np.clip(1.0 - gas / np.where(dug, pit, np.inf), 0.0, 1.0),
-        pit_liquid_cold=to_fill[0],
-        pit_liquid_warm=to_fill[1],
+        pit_liquid_cold=_where_known(
+            liquid_to_fill_pit,
+            pit,
+            found.liquid_density,
+            found.cold_density,
+            of=pit + found.liquid_density + found.cold_density,
+        ),
+        pit_liquid_warm=_where_known(
+            liquid_to_fill_pit,
+            pit,
+            found.liquid_density,
+            found.warm_density,
+            of=pit + found.liquid_density + found.warm_density,
+        ),
     )
 
 
-def _gas_by_way(table: CaseTable) -> tuple[Floats, Floats]:
-    """Gas of each case that sinks, and that rises; methane does either, by how cold it is."""
-    fluid = table.sources.fluid[table.member_source]
-    settles = np.full(fluid.shape, _LOW)
-    named = fluid != UNKNOWN
-    settles[named] = table.given.fluids.settles[fluid[named]]
+def _gas_of(table: CaseTable, chosen: Mask) -> Floats:
+    """Gas of the chosen members of each case."""
+    return sum_by_group(np.where(chosen, table.member_gas, 0.0), table.member_row, table.size)
 
-    def total(kinds: tuple[int, ...]) -> Floats:
-        gas = np.where(is_one_of(settles, kinds), table.member_gas, 0.0)
-        return sum_by_group(gas, table.member_row, table.size)
 
-    return total((_LOW, _METHANE)), total((_HIGH, _METHANE))
+def _where_known(formula: Callable[..., Floats], *inputs: Floats, of: Floats) -> Floats:
+    """What a formula gives for the rooms of which something is known; else not-a-number."""
+    found, rows = np.full(of.size, np.nan), np.flatnonzero(~np.isnan(of))
+    found[rows] = formula(*(values[rows] for values in inputs))
+    return found
 
 
 def _worst(table: CaseTable, chosen: Mask, gas: Floats, count: int) -> tuple[Integers, Floats]:
@@ -136,20 +145,52 @@ def _zone(table: CaseTable, results: Results, chosen: Mask, gas: Floats, volume:
     return Zone(case, np.where(there, bound, np.nan), mixed, volume)
 
 
-def _of_worst(table: CaseTable, case: Integers) -> tuple[Floats, Floats, Floats]:
-    """Mass that sinks, densities of its cold vapour and its liquid: by the first of its sources."""
+@dataclass(frozen=True, slots=True)
+class _Substance:
+    """One row a room: the gas of a case that sinks, of all of its sources together."""
+
+    mass: Floats  # [kg]
+    liquid_density: Floats  # not-a-number where there is none
+    cold_density: Floats  # of its vapour at the boiling point; not-a-number of what comes out warm
+    warm_density: Floats
+
+
+def _substance(table: CaseTable, case: Integers, chosen: Mask) -> _Substance:
+    """Mass and densities of the chosen members of one case a room."""
     there = np.flatnonzero(case != NO_CASE)
-    source = table.member_source[table.member_start[case[there]]]
+    room_of = np.full(table.size, NO_CASE)
+    room_of[case[there]] = there
+    member = np.flatnonzero(chosen & (room_of[table.member_row] != NO_CASE))
+    room, source = room_of[table.member_row[member]], table.member_source[member]
     fluid, fluids = table.sources.fluid[source], table.given.fluids
-    gas = sum_by_group(table.member_gas, table.member_row, table.size)[case[there]]
-    molar = fluids.molar_mass[fluid]
-    density = (
-        molar
-        * table.conditions.pressure[there]
-        / (GAS_CONSTANT * table.conditions.temperature[there])
+    warm = gas_density(
+        fluids.molar_mass[fluid],
+        pressure=table.conditions.pressure[room],
+        temperature=table.conditions.temperature[room],
     )
-    mass, vapour = np.zeros(case.size), np.full(case.size, np.nan)
-    liquid = np.ones(case.size)
-    mass[there], vapour[there] = gas * density, fluids.vapour_density[fluid]
-    liquid[there] = fluids.condensed_density[fluid]
-    return mass, vapour, liquid
+    mass = table.member_gas[member] * warm
+    vapour = np.where(_comes_warm(table, source), np.nan, fluids.vapour_density[fluid])
+
+    def density(of_each: Floats) -> Floats:
+        volume = sum_by_group(known(mass / of_each, 0.0), room, case.size)
+        # One part of which nothing is known leaves the whole unknown.
+        volume[room[np.isnan(of_each)]] = 0.0
+        return quotient(whole, volume, where_zero=np.nan)
+
+    whole = sum_by_group(mass, room, case.size)
+    return _Substance(
+        mass=whole,
+        liquid_density=density(fluids.condensed_density[fluid]),
+        cold_density=density(vapour),
+        warm_density=density(warm),
+    )
+
+
+def _comes_warm(table: CaseTable, source: Integers) -> Mask:
+    """Tell which sources let gas go that was never cold: cylinders, and lines of gas."""
+    vessel, line = table.sources.vessel[source], table.sources.line[source]
+    warm = np.zeros(source.size, dtype=np.bool_)
+    bottled, piped = np.flatnonzero(vessel != NO_VESSEL), np.flatnonzero(line != NO_LINE)
+    warm[bottled] = table.given.vessels.kind[vessel[bottled]] == CYLINDER
+    warm[piped] = table.given.lines.phase[line[piped]] == _GAS
+    return warm

@@ -24,10 +24,10 @@ from service.errors import FieldsRefused
 from service.store.ids import new_record_id
 from service.store.live import get_record, record_by_external_id, record_by_tag
 from service.store.records import Record
+from service.store.rows import triggering_detector
 from service.store.session import WriteSession
 
-#: Kinds of record that say nothing of what passes from room to room.
-_FELT_HERE: Final = frozenset({"detector", "control"})
+_BUND: Final = "bund"
 
 
 @dataclass(frozen=True, slots=True)
@@ -137,7 +137,19 @@ def carry_out(
 
 def _passes_on(after: Applied) -> bool:
     """Tell whether a change can be felt in other rooms than those it is made in."""
-    return any(pair.changed and pair.record.kind not in _FELT_HERE for pair in after.pairs)
+    return any(pair.changed and not _is_felt_here_alone(pair, after) for pair in after.pairs)
+
+
+def _is_felt_here_alone(pair: Pair, after: Applied) -> bool:
+    """Tell of a detector that shuts no line, and of a measure that slows no gas."""
+    record = pair.record
+    if record.kind == "control":
+        forms = [form for form in (pair.before, pair.after) if form is not None]
+        return all(form.fields["kind"] != _BUND for form in forms)
+    if record.kind == "detector":
+        lines = [each for each in after.records.values() if each.kind == "supply-line"]
+        return all(triggering_detector(line) != record.id for line in lines)
+    return False
 
 
 def _one(session: WriteSession, change: RecordChange) -> Written:

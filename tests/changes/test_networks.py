@@ -109,6 +109,22 @@ def test_a_detector_is_felt_where_it_hangs(line, site):
 
 
 @pytest.mark.slow
+def test_a_bund_and_a_detector_that_shuts_a_line_are_felt_next_door(line, site):
+    chain(line, 2)
+    a_dewar(line, "R0")
+    bund = line.create("control", tag="B", site="S", room="R0", kind="bund", area_m2=2.0)
+    assert tags(bund) == {"R0", "R1"}
+    assert tags(line.remove(bund.record)) == {"R0", "R1"}
+    line.create("detector", tag="D", site="S", room="R0", gas="oxygen", height_m=0.5)
+    line.create(
+        "supply-line", tag="L", site="S", fluid="nitrogen", phase="liquid",
+        rooms=[{"room": "R0"}], shutoff={"trigger": "D"},
+    )  # fmt: skip
+    moved = line.change(find(line, site, "detector", "D"), state="fault")
+    assert tags(moved) == {"R0", "R1"}
+
+
+@pytest.mark.slow
 def test_the_same_change_twice_leaves_other_rooms_alone(line, site):
     chain(line, 3)
     made = a_dewar(line, "R0")

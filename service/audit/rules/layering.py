@@ -12,6 +12,7 @@ from service.audit.columns import (
     ARRANGEMENTS,
     ROOM_KINDS,
     TERMINALS,
+    UNKNOWN,
 )
 from service.audit.layering import NO_CASE, Zone
 from service.audit.releases import RELEASES
@@ -19,6 +20,7 @@ from service.audit.rules.kinds import Missing, Threshold
 from service.audit.rules.rooms import any_of_room
 from service.audit.rules.rule import Direction, Subject, Tables
 from service.audit.rules.words import at_least, number, oxygen_text
+from service.audit.safeguards import OXYGEN_GAS, gas_heights
 from service.audit.severity import CRITICAL, MAJOR, MINOR, OBSERVATION
 from service.physics.arrays import Floats, Integers, Mask
 
@@ -28,17 +30,23 @@ _SUPPLY: Final = ARRANGEMENTS.index("supply")
 # A detector of the room that stands in its pit is recorded at the floor. [m]  Ours.
 IN_PIT: Final = 0.0
 _LITRES: Final = 1000.0
+_SINKS, _RISES = range(2)  # of what gas_heights tells
 _SOURCE: Final = (
     "published investigations of gas that filled a pit, in general terms; two-zone bound of "
     "methods F, " + COMMON_PRACTICE
 )
 
 
+def _is_itself(tables: Tables) -> Mask:
+    """Rooms that are a pit, and have no other in their floor."""
+    pit: Mask = tables.cases.table.given.rooms.kind == _PIT
+    return pit & np.isnan(tables.layering.pit_volume)
+
+
 def _pit_fills(tables: Tables) -> Mask:
     """A pit that the gas can fill, with neither extract at its floor nor a detector in it."""
     table, layers = tables.cases.table, tables.layering
-    rooms = table.given.rooms
-    itself = rooms.kind == _PIT
+    itself = _is_itself(tables)
     volume = np.where(itself, table.conditions.volume, layers.pit_volume)
     fills = (layers.pit_gas > 0.0) & (layers.pit_gas >= volume)
     return fills & ~_extracted(tables) & ~_watched_pit(tables, itself)
@@ -58,32 +66,55 @@ def _watched_pit(tables: Tables, itself: Mask) -> Mask:
     table, found = tables.cases.table, tables.cases.guards.detectors
     detectors = table.given.detectors
     inside = np.where(itself[detectors.room], found.is_low, detectors.height <= IN_PIT)
-    return any_of_room(tables, detectors.room, found.works & inside)
+    senses = _senses(tables, tables.layering.breathing.case, _SINKS)
+    return any_of_room(tables, detectors.room, found.works & inside & senses)
+
+
+def _senses(tables: Tables, case: Integers, way: int) -> Mask:
+    """Detectors of oxygen, or of a gas that goes that way in the case of their room."""
+    table = tables.cases.table
+    given, gases = table.given, len(table.given.gases)
+    in_case = case[table.room[table.member_row]] == table.member_row
+    fluid = table.sources.fluid[table.member_source]
+    member = np.flatnonzero(in_case & gas_heights(given, fluid)[way])
+    let_go = table.room[table.member_row[member]] * gases + given.fluids.gas[fluid[member]]
+    own = np.isin(given.detectors.room * gases + given.detectors.gas, let_go)
+    senses: Mask = own | (given.detectors.gas == OXYGEN_GAS)
+    return senses
+
+
+def _recorded_entry(tables: Tables) -> Integers:
+    """Whether people enter the pit: 0 no, 1 yes, else nobody says.
+
+    Of a room that is one, that nobody usually works there does not keep people out.
+    """
+    rooms = tables.cases.table.given.rooms
+    alone = np.where(rooms.unaccompanied < 0, UNKNOWN, 1 - rooms.unaccompanied)
+    return np.where(_is_itself(tables), alone, rooms.pit_entered)
 
 
 def _entered(tables: Tables) -> Integers:
     """Critical where people enter it; one that nobody says they do not is entered."""
-    rooms = tables.cases.table.given.rooms
-    kept_out = np.where(rooms.kind == _PIT, rooms.attended == 0, rooms.pit_entered == 0)
-    return np.where(kept_out, MAJOR, CRITICAL)
+    return np.where(_recorded_entry(tables) == 0, MAJOR, CRITICAL)
 
 
 def _say_pit(tables: Tables, row: int) -> tuple[str, str, Mapping[str, Any]]:
     table, layers = tables.cases.table, tables.layering
     room = tables.room(row).record
-    itself = bool(table.given.rooms.kind[row] == _PIT)
+    itself = bool(_is_itself(tables)[row])
     volume = float(table.conditions.volume[row] if itself else layers.pit_volume[row])
     gas = float(layers.pit_gas[row])
     release = _release(tables, _pit_case(tables, row))
-    recorded = table.given.rooms.attended if itself else table.given.rooms.pit_entered
+    recorded = _recorded_entry(tables)
     liquid = float(layers.pit_liquid_warm[row]) * _LITRES
     enough = "" if np.isnan(liquid) else f"; {at_least(liquid)} L of liquid are enough"
     return (
         f"{'The pit' if itself else 'The pit in'} {room.tag} of {volume:.4g} m3 can fill with gas "
         f"without oxygen: {release} lets {at_least(gas)} m3 go{enough}, and neither extract at its "
         "floor nor a detector in it is recorded to hold.",
-        "Draw air off at the floor of the pit and measure it, put a detector into it, or keep what "
-        "can run into it away; let nobody enter it without a measurement.",
+        "Draw air off at the floor of the pit and measure it, put a detector of oxygen into it and "
+        "record it at the floor (0 m), or keep away what can run into it; let "
+        "nobody enter it without a measurement.",
         {
             "pit_m3": number(volume),
             "gas_m3": number(gas),
@@ -110,10 +141,11 @@ def _passes_in_zone(tables: Tables, zone: Zone) -> Mask:
     return passes
 
 
-def _by_detector(tables: Tables, holds: Mask) -> Integers:
-    """Minor without a detector at that height."""
+def _by_detector(tables: Tables, holds: Mask, zone: Zone, way: int) -> Integers:
+    """Minor without a detector at that height of what is let go, or of oxygen."""
     table, found = tables.cases.table, tables.cases.guards.detectors
-    watched = any_of_room(tables, table.given.detectors.room, found.works & holds)
+    holds = found.works & holds & _senses(tables, zone.case, way)
+    watched = any_of_room(tables, table.given.detectors.room, holds)
     return np.where(watched, OBSERVATION, MINOR)
 
 
@@ -166,7 +198,9 @@ RULES: Final = (
         applies=lambda tables: _passes_in_zone(tables, tables.layering.breathing),
         measure=lambda tables: _percent(tables.layering.breathing.oxygen),
         limit=_deficient,
-        consequence=lambda tables: _by_detector(tables, tables.cases.guards.detectors.is_low),
+        consequence=lambda tables: _by_detector(
+            tables, tables.cases.guards.detectors.is_low, tables.layering.breathing, _SINKS
+        ),
         words=_words(
             "below the height that people breathe at",
             "Hang a detector low, where cold gas lies first, and draw air off there.",
@@ -183,7 +217,9 @@ RULES: Final = (
         applies=lambda tables: _passes_in_zone(tables, tables.layering.ceiling),
         measure=lambda tables: _percent(tables.layering.ceiling.oxygen),
         limit=_deficient,
-        consequence=lambda tables: _by_detector(tables, tables.cases.guards.detectors.is_high),
+        consequence=lambda tables: _by_detector(
+            tables, tables.cases.guards.detectors.is_high, tables.layering.ceiling, _RISES
+        ),
         words=_words(
             "under the ceiling",
             "Hang a detector under the ceiling, where light gas gathers, and draw air off there.",

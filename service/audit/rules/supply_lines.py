@@ -73,7 +73,11 @@ def _trigger_fails(tables: Tables) -> Mask:
 
 def _say_trigger(tables: Tables, row: int) -> _Words:
     elsewhere = bool(tables.cases.table.given.lines.detector[row] == UNKNOWN)
-    why = "stands in another room" if elsewhere else "is not in service, in calibration or heard"
+    why = (
+        "stands in another room"
+        if elsewhere
+        else "is not in service inside the room, is out of calibration, or is silenced"
+    )
     return (
         f"The detector that shuts {line_record(tables, row).tag} {why}: here it ends no break.",
         "Let a working detector of this room shut the line as well.",
