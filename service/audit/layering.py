@@ -86,27 +86,17 @@ def layering(table: CaseTable, results: Results) -> Layering:
         breathing=_zone(table, results, accident, sinks, conditions.floor_zone),
         kneeling=_zone(table, results, accident, sinks, kneeling),
         ceiling=_zone(table, results, accident, rises, conditions.ceiling_zone),
-        cold_depth=_where_known(
-            depth_of_cold_layer, found.mass, found.cold_density, floor, of=found.cold_density
-        ),
+        cold_depth=_where_known(depth_of_cold_layer, found.mass, found.cold_density, floor),
         warm_depth=np.where(low == NO_CASE, np.nan, depth_of_warm_layer(gas, floor)),
         pit_volume=pit,
         pit_gas=gas,
         pit_case=np.where(dug, low, NO_CASE),
         pit_oxygen=OXYGEN_IN_AIR * np.clip(1.0 - gas / np.where(dug, pit, np.inf), 0.0, 1.0),
         pit_liquid_cold=_where_known(
-            liquid_to_fill_pit,
-            pit,
-            found.liquid_density,
-            found.cold_density,
-            of=pit + found.liquid_density + found.cold_density,
+            liquid_to_fill_pit, pit, found.liquid_density, found.cold_density
         ),
         pit_liquid_warm=_where_known(
-            liquid_to_fill_pit,
-            pit,
-            found.liquid_density,
-            found.warm_density,
-            of=pit + found.liquid_density + found.warm_density,
+            liquid_to_fill_pit, pit, found.liquid_density, found.warm_density
         ),
     )
 
@@ -116,9 +106,10 @@ def _gas_of(table: CaseTable, chosen: Mask) -> Floats:
     return sum_by_group(np.where(chosen, table.member_gas, 0.0), table.member_row, table.size)
 
 
-def _where_known(formula: Callable[..., Floats], *inputs: Floats, of: Floats) -> Floats:
-    """What a formula gives for the rooms of which something is known; else not-a-number."""
-    found, rows = np.full(of.size, np.nan), np.flatnonzero(~np.isnan(of))
+def _where_known(formula: Callable[..., Floats], *inputs: Floats) -> Floats:
+    """What a formula gives for the rooms of which every input is known; else not-a-number."""
+    unknown = np.isnan(np.stack(inputs)).any(axis=0)
+    found, rows = np.full(unknown.size, np.nan), np.flatnonzero(~unknown)
     found[rows] = formula(*(values[rows] for values in inputs))
     return found
 

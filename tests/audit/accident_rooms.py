@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from datetime import timedelta
 from typing import Any
 
 from service.audit.inputs import FluidValues, PitValues, RoomValues
@@ -13,6 +14,7 @@ from tests.audit.builders import (
     METHANE,
     NITROGEN,
     NITROUS_OXIDE,
+    NOW,
     OXYGEN,
     a_detector,
     a_line,
@@ -23,6 +25,7 @@ from tests.audit.builders import (
 )
 from tests.audit.pairs import Pair
 
+SECOND = timedelta(seconds=1)
 TOXIC = (("carbon-dioxide", CARBON_DIOXIDE), ("nitrous-oxide", NITROUS_OXIDE))
 
 
@@ -151,8 +154,8 @@ LINES = (
     ),
     Pair(
         "supply-lines/shut-off-untested",
-        with_line(),
-        with_line(shut_off_tested=False, shut_off_test_due=None),
+        with_line(shut_off_test_due=NOW + SECOND),
+        with_line(shut_off_test_due=NOW),
         "minor",
     ),
     Pair(
@@ -192,8 +195,8 @@ MAGNETS = (
     ),
     Pair(
         "vessels/quench-pipe-inspection-overdue",
-        with_magnet(),
-        with_magnet(pipe_inspected=False, pipe_inspection_due=None),
+        with_magnet(pipe_inspection_due=NOW + SECOND),
+        with_magnet(pipe_inspection_due=NOW),
         "minor",
     ),
     Pair(

@@ -45,8 +45,8 @@ def test_a_lone_worker_with_the_fan_off_and_the_detector_silenced():
     found = rules(room)
     assert found["oxygen/largest-vessel"] == "critical"
     assert found["detectors/silenced"] == "major"
-    assert "ventilation/stopped" in found
-    assert "controls/missing" in found
+    assert found["ventilation/stopped"] == "observation"
+    assert found["controls/missing"] == "minor"
 
 
 def test_gas_from_a_line_left_open_into_a_pit():
@@ -65,12 +65,11 @@ def test_gas_from_a_line_left_open_into_a_pit():
 
 def test_a_closed_damper_behind_a_running_fan():
     room = a_room(30, vessels=(a_vessel(20),), units=(a_unit(600, flow_proved=False),))
-    assert "ventilation/flow-not-proved" in rules(room)
+    assert rules(room)["ventilation/flow-not-proved"] == "minor"
 
 
-@pytest.mark.parametrize("neck", ["sealed"])
-def test_an_iced_or_sealed_neck(neck):
-    vessel = a_vessel(25, kind="open-dewar", neck_plug=neck, relief_fitted=None)
+def test_an_iced_or_sealed_neck():
+    vessel = a_vessel(25, kind="open-dewar", neck_plug="sealed", relief_fitted=None)
     assert rules(a_room(vessels=(vessel,)))["vessels/neck-sealed"] == "critical"
 
 

@@ -3,7 +3,17 @@
 import pytest
 
 from service.audit.inputs import PitValues
-from tests.audit.builders import HELIUM, NITROGEN, a_detector, a_room, a_vessel, assessed, judged
+from tests.audit.builders import (
+    ARGON,
+    CARBON_DIOXIDE,
+    HELIUM,
+    LITRE,
+    NITROGEN,
+    a_line,
+    a_room,
+    a_vessel,
+    assessed,
+)
 
 
 def layers(room):
@@ -67,12 +77,33 @@ def test_what_evaporates_for_days_makes_no_layer():
     assert layers(room) is None
 
 
-def test_a_detector_at_that_height_makes_it_an_observation():
-    vessel = a_vessel(16, measured_evaporation=0.0)
-    bare = a_room(500, floor_area=100.0, height=5.0, vessels=(vessel,))
-    assert judged(bare, "layering/floor").severity == "minor"
-    watched = a_room(
-        500, floor_area=100.0, height=5.0, vessels=(vessel,), detectors=(a_detector(height=0.5),)
+def test_only_what_sinks_of_several_gases_lies_on_the_floor():
+    """Methods F-2 for the nitrogen of a manifold, whatever helium is joined to it."""
+    nitrogen = a_vessel(10, measured_evaporation=0.0, manifold="M")
+    helium = a_vessel(30, HELIUM, measured_evaporation=0.0, manifold="M")
+    for vessels in ((nitrogen, helium), (helium, nitrogen)):
+        found = layers(a_room(50, floor_area=20.0, height=2.5, vessels=vessels))
+        assert found["layer"]["cold_m"] == pytest.approx(0.0874, rel=5e-3)
+        assert found["layer"]["warm_m"] == pytest.approx(0.3460, rel=5e-3)
+
+
+def test_a_layer_of_two_gases_is_as_deep_as_both():
+    """Methods F2, by the densities of CoolProp 8: nitrogen 4.6121, argon 5.7736 kg/m3 as vapour."""
+    nitrogen = a_vessel(5, NITROGEN, measured_evaporation=0.0, manifold="M")
+    argon = a_vessel(5, ARGON, measured_evaporation=0.0, manifold="M")
+    found = layers(a_room(50, floor_area=20.0, height=2.5, vessels=(nitrogen, argon)))
+    by_hand = (5 * LITRE * 806.08 / 4.6121 + 5 * LITRE * 1395.40 / 5.7736) / 20.0
+    assert found["layer"]["cold_m"] == pytest.approx(by_hand, rel=5e-3)
+
+
+def test_gas_that_was_never_cold_makes_no_cold_layer():
+    pit = PitValues(2.0, 1.5)
+    bottle = a_vessel(
+        fluid=CARBON_DIOXIDE, kind="cylinder", capacity_volume=None, capacity_mass=20.0
     )
-    assert judged(watched, "layering/floor").severity == "observation"
-    assert "a bound, not a concentration" in judged(bare, "layering/floor").statement
+    piped = a_line(phase="gas", bore=0.006, source_pressure=6e5)
+    for room in (a_room(pit=pit, vessels=(bottle,)), a_room(pit=pit, lines=(piped,))):
+        found = layers(room)
+        assert found["layer"]["cold_m"] is None
+        assert found["layer"]["warm_m"] > 0.0
+        assert found["pit"]["filled_by_l_cold"] is None
