@@ -8,12 +8,14 @@ from numpy.typing import ArrayLike
 
 from service.physics.arrays import Floats, non_negative, positive
 from service.physics.constants import GRAVITY
+from service.physics.errors import OutOfRange
 
 # Depth at which a pool stops spreading on smooth concrete. [m]  Methods G5.
 FILM: Final = 0.005
 # Flux that boiling can take up at most: the order of the critical heat flux of nitrogen. [W/m2]
 CRITICAL_FLUX: Final = 200_000.0
-# Pieces that the slowing evaporation of a bund is laid out in.
+# Straight pieces that the slowing evaporation of a bund is laid out in. Where the last of it goes
+# ten million times as late as the floor keeps up, eight lie less than a sixth above the curve.
 _PIECES: Final = 8
 
 
@@ -32,9 +34,14 @@ class Floor:
     conductivity: float
     diffusivity: float
 
+    def __post_init__(self) -> None:
+        """Refuse what no floor can be made of."""
+        positive("conductivity", self.conductivity)
+        positive("diffusivity", self.diffusivity)
+
     @property
     def effusivity(self) -> float:
-        """Heat that it gives to a colder surface [W s^0.5/(m2 K)]."""
+        """How readily it gives heat to a colder surface [W s^0.5/(m2 K)]."""
         return float(self.conductivity / np.sqrt(self.diffusivity))
 
 
@@ -90,11 +97,58 @@ def floor_heat(
     drop = non_negative("temperature_difference", temperature_difference)
     strength = floor.effusivity * drop / np.sqrt(np.pi)
     without: Floats = 2.0 * strength * np.sqrt(since)
-    if not np.isfinite(highest_flux):
+    most = _highest(highest_flux)
+    if np.isinf(most):
         return without
-    most = positive("highest_flux", highest_flux)
     until = (strength / most) ** 2
     return np.where(since <= until, most * since, without - most * until)
+
+
+def floor_heat_flux(
+    time: ArrayLike,
+    temperature_difference: ArrayLike,
+    *,
+    floor: Floor = CONCRETE,
+    highest_flux: float = np.inf,
+) -> Floats:
+    r"""Heat flux from a floor into a cold pool at a time.
+
+    Parameters
+    ----------
+    time : array_like, shape (...)
+        Since the liquid met the floor; above zero. [s]
+    temperature_difference : array_like, shape (...)
+        Floor before, less boiling point; zero or more. [K]
+    floor : Floor, default concrete
+        What it is made of.
+    highest_flux : float, default none
+        What boiling can take up at most. [W/m2]
+
+    Returns
+    -------
+    ndarray, shape (...)
+        Heat flux. [W/m2]
+
+    Raises
+    ------
+    OutOfRange
+        An input is outside its range or not a number.
+
+    Notes
+    -----
+    .. math:: q = \min\left(q_m, \; \frac{k \, \Delta T}{\sqrt{\pi \alpha t}}\right)
+
+    The rate of change of `floor_heat`, [carslaw-jaeger]_.
+
+    Examples
+    --------
+    >>> floor_heat_flux([0.1, 1.0], 215.8, highest_flux=200_000.0).round(-3)
+    array([200000., 200000.])
+    """
+    drop = non_negative("temperature_difference", temperature_difference)
+    flux = floor.effusivity * drop / np.sqrt(np.pi * positive("time", time))
+    lower: Floats = np.minimum(flux, _highest(highest_flux))
+    return lower
 
 
 def evaporation_rate(
@@ -144,10 +198,8 @@ def evaporation_rate(
     >>> evaporation_rate(10.0, 5.0, 215.8, 199_180.0).round(3)
     np.float64(1.627)
     """
-    drop = non_negative("temperature_difference", temperature_difference)
-    flux = floor.effusivity * drop / np.sqrt(np.pi * positive("time", time))
-    wetted = non_negative("area", area) / positive("latent_heat", latent_heat)
-    flow: Floats = wetted * np.minimum(flux, highest_flux)
+    flux = floor_heat_flux(time, temperature_difference, floor=floor, highest_flux=highest_flux)
+    flow: Floats = non_negative("area", area) / positive("latent_heat", latent_heat) * flux
     return flow
 
 
@@ -158,6 +210,7 @@ def time_to_evaporate(
     latent_heat: ArrayLike,
     *,
     floor: Floor = CONCRETE,
+    highest_flux: float = np.inf,
 ) -> Floats:
     r"""Time until a pool of steady area is gone.
 
@@ -173,6 +226,8 @@ def time_to_evaporate(
         Of evaporation; above zero. [J/kg]
     floor : Floor, default concrete
         What it is made of.
+    highest_flux : float, default none
+        What boiling can take up at most. [W/m2]
 
     Returns
     -------
@@ -188,18 +243,23 @@ def time_to_evaporate(
     -----
     .. math:: t = \pi \alpha \left(\frac{m L}{2 A k \, \Delta T}\right)^2
 
-    The inverse of `floor_heat`, [carslaw-jaeger]_.
+    The inverse of `floor_heat`, [carslaw-jaeger]_. With a highest flux :math:`q_m` a pool that
+    lasts beyond :math:`t_m` needs :math:`q_m t_m` more heat than that for its mass, one that does
+    not is gone after :math:`m L / (A q_m)`: the uncapped time is the shorter, and so the cautious.
 
     Examples
     --------
     >>> time_to_evaporate(40.304, 5.0, 215.795, 199_180.0).round(2)
     np.float64(15.34)
     """
-    heat = non_negative("mass", mass) * positive("latent_heat", latent_heat)
+    mass_heat = non_negative("mass", mass) * positive("latent_heat", latent_heat)
+    heat = mass_heat / positive("area", area)
     drop = positive("temperature_difference", temperature_difference)
-    gives = 2.0 * positive("area", area) * floor.effusivity * drop
-    time: Floats = np.pi * (heat / gives) ** 2
-    return time
+    strength = floor.effusivity * drop / np.sqrt(np.pi)
+    most = _highest(highest_flux)
+    spared = strength**2 / most
+    at_most = np.divide(heat, most)
+    return np.where(heat <= spared, at_most, ((heat + spared) / (2.0 * strength)) ** 2)
 
 
 def growing_pool_rate(
@@ -370,8 +430,9 @@ def bund_segments(
     .. math:: m(t) = \min\bigl(f \min(t, \tau),\; A \, Q(t) / L\bigr)
 
     with the heat :math:`Q` of `floor_heat`: by no time can more have evaporated than has run in, or
-    than a floor that was wet from the start has given, [carslaw-jaeger]_. In each piece the rate is
-    its mean, so that no gas is lost.
+    than a floor that was wet from the start has given, [carslaw-jaeger]_. The curve is laid out in
+    tangents, which lie above it: chords would lie below and let a pool evaporate later than it may.
+    They end when all that has run in is gas, so that none is lost.
 
     Examples
     --------
@@ -392,15 +453,39 @@ def bund_segments(
     keeps_up = np.divide(strength, flow, out=np.full(flow.shape, np.inf), where=flow > 0.0) ** 2
     first = np.minimum(keeps_up, until)
     dry = np.maximum((whole / strength) ** 2, first)
-    growth = np.divide(dry, first, out=np.ones_like(dry), where=first > 0.0)
-    steps = np.arange(_PIECES + 1) / _PIECES
-    times = first[:, np.newaxis] * growth[:, np.newaxis] ** steps
-    mass = np.minimum(strength[:, np.newaxis] * np.sqrt(times), whole[:, np.newaxis])
-    mass[:, 0] = flow * first
-    mass[:, -1] = whole
-    begins = np.concatenate([np.zeros((first.size, 1)), times], axis=1)
+    ends, mass = _tangents(flow * first, first, whole, dry)
+    begins = np.concatenate([np.zeros((first.size, 1)), ends], axis=1)
     gains = np.diff(np.concatenate([np.zeros((first.size, 1)), mass], axis=1), axis=1)
     lengths = np.diff(begins, axis=1)
     rates = np.divide(gains, lengths, out=np.zeros_like(gains), where=lengths > 0.0)
     cut = np.minimum(begins, end[:, np.newaxis])
     return np.diff(cut, axis=1), np.maximum(rates, 0.0)
+
+
+def _tangents(begun: Floats, first: Floats, whole: Floats, dry: Floats) -> tuple[Floats, Floats]:
+    """Ends of straight pieces above a root of time, and the mass by then: arrays (rows, 9).
+
+    The curve goes by the square root of time from `begun` at `first` to `whole` at `dry`. Where
+    those are one the pieces have no length.
+    """
+    growth = np.divide(dry, first, out=np.ones_like(dry), where=first > 0.0)[:, np.newaxis]
+    # Touching points over the first time; two tangents of a root meet at their geometric mean. From
+    # the last one it is half a step to the end, where the tangent meets a level line.
+    touches = growth ** (np.arange(_PIECES) / (_PIECES - 0.5))
+    roots = np.sqrt(touches)
+    meets = roots[:, :-1] * roots[:, 1:]
+    last = roots[:, -1:]
+    over = 2.0 * last * np.sqrt(growth) - touches[:, -1:]
+    times = first[:, np.newaxis] * np.concatenate([np.ones_like(last), meets, over], axis=1)
+    # Touching points a rounding apart must not end before they begin.
+    times = np.maximum.accumulate(times, axis=1)
+    risen = begun[:, np.newaxis] * 0.5 * (roots[:, :-1] + roots[:, 1:])
+    mass = np.concatenate([begun[:, np.newaxis], risen, whole[:, np.newaxis]], axis=1)
+    return times, np.minimum(mass, whole[:, np.newaxis])
+
+
+def _highest(flux: float) -> float:
+    # Infinite is no cap; asked for what must hold, so that not-a-number is refused.
+    if not flux > 0.0:
+        raise OutOfRange("highest_flux", "above 0")
+    return float(flux)
