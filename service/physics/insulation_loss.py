@@ -5,7 +5,7 @@ from typing import Final
 import numpy as np
 from numpy.typing import ArrayLike
 
-from service.physics.arrays import Floats, non_negative, positive
+from service.physics.arrays import Floats, fraction, non_negative, positive
 from service.physics.constants import GRAVITY, STEFAN_BOLTZMANN
 
 # Air that rushes in onto surfaces below about 60 K. [W/m2]  Lehmann and Zahn, ICEC 7 (1978).
@@ -156,7 +156,7 @@ def heat_flux_in_open_air(
     viscosity, diffusivity : array_like, shape (...)
         Kinematic viscosity and thermal diffusivity of air there; above zero. [m2/s]
     emissivity : array_like, shape (...), default 0.9
-        Of the wall. [1]
+        Of the wall, 0 to 1. [1]
 
     Returns
     -------
@@ -198,7 +198,7 @@ def heat_flux_in_open_air(
     prandtl = slow / spread
     shape = (1.0 + (0.492 / prandtl) ** (9.0 / 16.0)) ** (8.0 / 27.0)
     nusselt = (0.825 + 0.387 * rayleigh ** (1.0 / 6.0) / shape) ** 2
-    radiated = non_negative("emissivity", emissivity) * STEFAN_BOLTZMANN * (warm**4 - cold**4)
+    radiated = fraction("emissivity", emissivity) * STEFAN_BOLTZMANN * (warm**4 - cold**4)
     flux: Floats = carried * nusselt / tall * (warm - cold) + radiated
     return flux
 
@@ -242,6 +242,7 @@ def heat_flux_condensing(
         q = 0.943 \left(\frac{g \rho^2 L k^3}{\mu H \Delta T}\right)^{1/4} \Delta T
 
     The film of [nusselt-film]_, the density of the vapour left out; the high end of the bracket.
+    What condenses first is half oxygen, which conducts better than air does.
 
     Examples
     --------
@@ -250,11 +251,11 @@ def heat_flux_condensing(
     ...     81.72,
     ...     height=1.0,
     ...     latent_heat=204_810.0,
-    ...     conductivity=0.1467,
-    ...     density=868.0,
-    ...     viscosity=1.79e-4,
+    ...     conductivity=0.1542,
+    ...     density=1008.4,
+    ...     viscosity=2.105e-4,
     ... ).round(-2)
-    np.float64(6500.0)
+    np.float64(6900.0)
     """
     drop = np.maximum(positive("dew_point", dew_point) - positive("wall", wall), 0.0)
     carried, dense = positive("conductivity", conductivity), positive("density", density)
