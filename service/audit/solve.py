@@ -255,8 +255,23 @@ def _required(table: CaseTable, start: Floats) -> Floats:
     other were not there: the cautious side. Not-a-number for a case at once, and for one that
     starts beyond its mark.
     """
+    asked = (table.measured == np.arange(table.size)) & ~table.at_once
+    required = _to_hold(table, start, np.flatnonzero(asked))
+    # A short burst may pass a later mark, of a shorter mean, and not the first.
+    for place in (1, 2):
+        further = HAS_MEANS[table.hazard] & np.isfinite(table.marks[:, place])
+        rows = np.flatnonzero(asked & further & (table.first < place))
+        if rows.size:
+            mark = np.where(further, table.marks[:, place], table.first_mark)
+            moved = replace(table, first=np.where(further, place, table.first), first_mark=mark)
+            required[rows] = np.maximum(required[rows], _to_hold(moved, start, rows)[rows])
+    moved_air = required * table.air.mixing_factor[_AS_MEASURED, table.room]
+    return rounded(moved_air[table.measured])
+
+
+def _to_hold(table: CaseTable, start: Floats, rows: Integers) -> Floats:
+    """Smallest flow that counts and keeps some cases inside the mark that is their first."""
     required = np.full(table.size, np.nan)
-    rows = np.flatnonzero((table.measured == np.arange(table.size)) & ~table.at_once)
     on = table.measured_on[rows, table.first[rows]]
     supply, exhaust = table.supply[rows, 0], table.exhaust[rows, 0]
     blows = (supply >= exhaust) & (supply > 0.0)
@@ -272,8 +287,7 @@ def _required(table: CaseTable, start: Floats) -> Floats:
                 required[some] = _smallest_for_mean(
                     table, some, start[some], required[some], WINDOWS[window], by_supply=by_supply
                 )
-    moved = required * table.air.mixing_factor[_AS_MEASURED, table.room]
-    return rounded(moved[table.measured])
+    return required
 
 
 def _smallest(table: CaseTable, rows: Integers, start: Floats, *, by_supply: bool) -> Floats:

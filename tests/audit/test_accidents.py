@@ -340,7 +340,7 @@ class TestOverfillAndFilling:
 
 
 @pytest.mark.slow
-@settings(max_examples=20, deadline=None)
+@settings(max_examples=10, deadline=None)
 @given(
     st.floats(1.0, 500.0), st.floats(0.0, 500.0), st.floats(20.0, 500.0),
     st.sampled_from(["line-break", "vacuum-loss", "spill", "quench"]),

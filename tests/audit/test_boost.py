@@ -205,7 +205,7 @@ def test_helium_is_boosted_by_the_detector_at_the_ceiling():
 
 
 @pytest.mark.slow
-@settings(max_examples=40)
+@settings(max_examples=15)
 @given(
     st.floats(5.0, 400.0),
     st.floats(0.0, 3000.0),

@@ -154,7 +154,7 @@ def peak_of_session(rates, volume, supply, exhaust):
 
 
 @pytest.mark.slow
-@settings(max_examples=50)
+@settings(max_examples=20)
 @given(sessions, st.sampled_from(["supply", "exhaust"]), st.sampled_from([0.0, 30.0, 500.0]))
 def test_no_order_of_a_session_is_worse_than_the_one_taken(session, arrangement, moved):
     vessels = tuple(

@@ -228,7 +228,7 @@ rooms = st.builds(
     units=st.lists(units, max_size=3).map(tuple),
     detectors=st.lists(detectors, max_size=3).map(tuple),
 )
-thorough = settings(max_examples=25, deadline=None)
+thorough = settings(max_examples=10, deadline=None)
 
 CASE_RULES = (
     "oxygen/largest-vessel",

@@ -385,7 +385,7 @@ def test_each_rule_is_broken_beyond_an_open_door_and_not_beyond_a_shut_one(rule)
 
 
 @pytest.mark.slow
-@settings(max_examples=15, deadline=None)
+@settings(max_examples=8, deadline=None)
 @given(
     st.floats(5.0, 400.0),
     st.floats(20.0, 300.0),
@@ -414,7 +414,7 @@ def test_no_fraction_leaves_its_bounds_and_more_outdoor_air_never_lowers_the_low
 
 
 @pytest.mark.slow
-@settings(max_examples=15, deadline=None)
+@settings(max_examples=8, deadline=None)
 @given(st.floats(1.0, 300.0), st.floats(1.0, 300.0))
 def test_more_contents_never_raise_the_lowest_oxygen_next_door(litres, more):
     def lowest(amount):

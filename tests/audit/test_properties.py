@@ -131,8 +131,8 @@ rooms = st.builds(
     units=st.lists(some_units(), max_size=3).map(tuple),
     detectors=st.lists(some_detectors(), max_size=3).map(tuple),
 )
-thorough = settings(max_examples=5)
-quick = settings(max_examples=10)
+thorough = settings(max_examples=2)
+quick = settings(max_examples=5)
 
 CASE_RULES = tuple((rule.slug, rule.gas) for rule in RULES if isinstance(rule, CaseRule))
 
@@ -500,7 +500,8 @@ def test_without_margins_no_number_is_worse(room):
         bare = case.without_margins
         sign = 1.0 if case.hazard == "oxygen-high" else -1.0
         pairs = [(sign * bare["oxygen_pct"], sign * case.oxygen_pct)]
-        for name in ("peak_pct", "mean_15min_pct", "mean_8h_pct", "lower_limit_pct", "gas_m3"):
+        # Not the means: a larger room is cleared more slowly, of what was there before as well.
+        for name in ("peak_pct", "lower_limit_pct", "gas_m3"):
             pairs.append((bare[name], getattr(case, name)))
         if case.airflow == "boosted":
             continue  # milder air, a later alarm, a later boost

@@ -9,7 +9,7 @@ import numpy as np
 
 from service.audit.bases import COMMON_PRACTICE
 from service.audit.columns import Moments, all_of
-from service.audit.inventory import MAGNET
+from service.audit.inventory import MAGNET, QUENCH_DURATION
 from service.audit.rules.kinds import Missing, Overdue
 from service.audit.rules.rule import Subject, Tables, vessel_record
 from service.audit.severity import MAJOR, MINOR, OBSERVATION
@@ -99,9 +99,9 @@ def _without_duration(tables: Tables) -> Mask:
 def _say_duration(tables: Tables, row: int) -> _Words:
     return (
         f"How long a quench of {vessel_record(tables, row).tag} lasts is not recorded: a quick one "
-        "of 20 s is assumed for its peak.",
+        f"of {QUENCH_DURATION:.0f} s is assumed for its peak.",
         "Record the duration that its maker gives.",
-        {"duration_s": None, "assumed_s": 20.0},
+        {"duration_s": None, "assumed_s": QUENCH_DURATION},
     )
 
 
