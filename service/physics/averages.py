@@ -9,6 +9,9 @@ from service.physics.errors import OutOfRange
 from service.physics.relaxation import gained_share, kept_share, relaxed
 from service.physics.roots import smallest_enough
 
+# Up to so many, comparing all times with all segments is quicker than seeking row by row.
+_FEW_SEGMENTS = 40
+
 
 def fraction_at(run: Course, times: ArrayLike) -> Floats:
     r"""Released-gas fraction of each row of a course at times of its own.
@@ -113,6 +116,13 @@ def _times(run: Course, times: ArrayLike) -> Floats:
 def _segment_at(run: Course, times: Floats) -> Integers:
     """Index of the segment that holds each time; the last one holds all that is later."""
     begins = run.times[:, 1:-1]
+    if begins.shape[1] > _FEW_SEGMENTS:
+        # Courses of networks have hundreds: all against all would take gigabytes.
+        found = [
+            np.searchsorted(row, wanted, side="right")
+            for row, wanted in zip(begins, times, strict=True)
+        ]
+        return np.array(found, dtype=np.int64).reshape(times.shape)
     passed = begins[:, :, np.newaxis] <= times[:, np.newaxis, :]
     segment: Integers = passed.sum(axis=1, dtype=np.int64)
     return segment
@@ -179,14 +189,17 @@ def _falls_through_zero(run: Course, joints: Floats, widths: Floats) -> Floats:
     trailing, leading = _segment_at(run, middle), _segment_at(run, middle + widths)
     row_of, column_of = np.indices(left.shape)
 
+    def fraction(row: Integers, segment: Integers, time: Floats) -> Floats:
+        begin, end = run.times[row, segment], run.times[row, segment + 1]
+        elapsed = np.clip(time, begin, end) - begin
+        turnovers = run.rates[row, segment] * elapsed
+        return relaxed(run.ends[row, segment], run.steady[row, segment], turnovers)
+
     def difference(chosen: Integers, later: Floats) -> Floats:
         row, column = row_of.flat[chosen], column_of.flat[chosen]
-        rows = Course(run.times[row], run.ends[row], run.steady[row], run.rates[row])
-        begin = (left[row, column] + later)[:, np.newaxis]
-        ahead = _fraction_in(rows, leading[row, column][:, np.newaxis], begin + widths[row])
-        behind = _fraction_in(rows, trailing[row, column][:, np.newaxis], begin)
-        difference: Floats = (ahead - behind)[:, 0]
-        return difference
+        begin = left[row, column] + later
+        ahead = fraction(row, leading[row, column], begin + widths[row, 0])
+        return ahead - fraction(row, trailing[row, column], begin)
 
     every = np.arange(left.size)
     lengths = (right - left).ravel()

@@ -3,6 +3,7 @@ import pytest
 from numpy.testing import assert_allclose
 
 from service.physics.averages import fraction_at, highest_mean
+from service.physics.course import Course
 from service.physics.errors import OutOfRange
 from service.physics.ventilation import course, mean_fraction
 
@@ -110,3 +111,18 @@ def test_means_refuse_what_is_none(wrong):
         fraction_at(run, np.full((ROOMS, 1), wrong if wrong != 0.0 else -0.1))
     with pytest.raises(OutOfRange, match=r"^times must be of shape"):
         fraction_at(run, [0.0, 1.0])
+
+
+def test_a_course_of_hundreds_of_segments_has_the_mean_of_the_same_in_few():
+    """Steps of no length change nothing, whichever way the segment of a time is sought."""
+    run = course(
+        [[300.0, 900.0, 4000.0]], release=[[0.2, 0.02, 0.0]], supply=0.1, exhaust=0.0, volume=90.0
+    )
+    many = Course(
+        times=np.pad(run.times, ((0, 0), (0, 200)), mode="edge"),
+        ends=np.pad(run.ends, ((0, 0), (0, 200)), mode="edge"),
+        steady=np.pad(run.steady, ((0, 0), (0, 200)), mode="edge"),
+        rates=np.pad(run.rates, ((0, 0), (0, 200))),
+    )
+    for window in (60.0, 900.0, 28_800.0):
+        assert_allclose(highest_mean(many, window), highest_mean(run, window), rtol=1e-12)
