@@ -199,6 +199,7 @@ def test_what_lies_out_of_range_is_refused_at_its_place_and_stores_nothing(ask_o
         assert ask_one.body(f"/v1/{path}?tag=X")["items"] == []
 
 
+@pytest.mark.slow
 def test_a_null_takes_away_whatever_a_record_may_be_without(ask_one, estate_of_one):
     """Every new field can be said and unsaid."""
     north = estate_of_one.north

@@ -64,6 +64,7 @@ def test_a_basement_with_a_dewar_no_fan_and_no_detector_needs_action_or_worse():
     assert STANDINGS.index(standing_of(basement)) >= STANDINGS.index("action")
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("tag", ["baseline", "us", "uk-eu"])
 def test_clean_air_at_three_thousand_metres_raises_nothing(tag):
     room = a_room(

@@ -69,6 +69,7 @@ def test_a_vessel_is_felt_in_the_rooms_its_gas_can_reach_and_no_further(line, si
     assert verify(line.database).sound
 
 
+@pytest.mark.slow
 def test_shutting_a_door_clears_what_came_through_it(line, site):
     chain(line, 2)
     a_dewar(line, "R0")
@@ -84,6 +85,7 @@ def test_shutting_a_door_clears_what_came_through_it(line, site):
     assert verify(line.database).sound
 
 
+@pytest.mark.slow
 def test_a_fan_of_the_neighbour_is_felt_in_the_network_of_the_source(line, site):
     chain(line, 3)
     a_dewar(line, "R0")
@@ -134,6 +136,7 @@ def test_the_same_change_twice_leaves_other_rooms_alone(line, site):
     assert same.effects == ()
 
 
+@pytest.mark.slow
 def test_a_line_and_what_feeds_it_are_felt_where_it_runs(line, site):
     room = line.a_room(tag="A", floor_area_m2=10.0, height_m=2.5)
     line.a_room(tag="B")
@@ -162,6 +165,7 @@ def test_a_line_and_what_feeds_it_are_felt_where_it_runs(line, site):
     assert verify(line.database).sound
 
 
+@pytest.mark.slow
 def test_what_names_a_line_or_is_named_by_one_stays(line, site):
     line.a_room(tag="A")
     tank = a_dewar(line, None, kind="tank", tag="TANK").record

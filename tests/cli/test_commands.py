@@ -106,6 +106,7 @@ def test_commands_on_a_database_without_tables_name_the_command_that_makes_them(
     assert "rimeward migrate" in capsys.readouterr().err
 
 
+@pytest.mark.slow
 def test_the_description_is_printed_and_compared(environment, capsys, tmp_path):
     assert main(["openapi"]) == 0
     printed = capsys.readouterr().out

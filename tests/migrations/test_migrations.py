@@ -65,6 +65,7 @@ def parts_of(sql):
     return sorted(line.strip().rstrip(",") for line in re.sub(r"\s*\n\s*", "\n", sql).split("\n"))
 
 
+@pytest.mark.slow
 def test_migrating_makes_the_tables_that_the_code_describes(empty_database_url):
     """Reflected, with the text of every CHECK, which Alembic does not compare."""
     url = empty_database_url
@@ -134,6 +135,7 @@ def in_first_form(url):
     return estate
 
 
+@pytest.mark.slow
 def test_records_of_the_first_revision_come_through_with_nothing_in_what_is_new(
     empty_database_url,
 ):
@@ -152,6 +154,7 @@ def test_records_of_the_first_revision_come_through_with_nothing_in_what_is_new(
                 assert found == replace(record, fields={**record.fields, **unknown})
 
 
+@pytest.mark.slow
 def test_each_revision_goes_down_and_up_again_with_data_in_it(empty_database_url):
     url = empty_database_url
     upgrade(url)

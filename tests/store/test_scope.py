@@ -183,6 +183,7 @@ def answer(read, scope, connection, arguments):
     return read(scope, connection, *arguments, **keywords)
 
 
+@pytest.mark.slow
 def test_no_read_tells_anything_of_another_site(database, full, other_estate):
     asked = asked_of(full)
     assert {f"service.store.{name}" for name in asked} == set(READS)
